@@ -1,0 +1,56 @@
+"""The modelled sector as arrays: a mesh and the values on its points and cells."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass, field
+from pathlib import Path
+
+import numpy as np
+from numpy.typing import NDArray
+
+
+@dataclass(frozen=True)
+class Mesh:
+    """An unstructured mesh in VTK's cell types and node orders.
+
+    Attributes
+    ----------
+    points : (n, 3) float32 or float64, in the model's length unit.
+    connectivity : (L,) int64, node numbers of all cells, one cell after the other.
+    offsets : (m + 1,) int64; cell ``c`` has nodes ``connectivity[offsets[c]:offsets[c + 1]]``.
+    types : (m,) uint8, VTK cell types.
+    """
+
+    points: NDArray[np.floating]
+    connectivity: NDArray[np.int64]
+    offsets: NDArray[np.int64]
+    types: NDArray[np.uint8]
+
+    @property
+    def point_count(self) -> int:
+        return len(self.points)
+
+    @property
+    def cell_count(self) -> int:
+        return len(self.types)
+
+
+@dataclass(frozen=True)
+class Model:
+    """A sector as read from a file, before anything is said about what its arrays mean.
+
+    Attributes
+    ----------
+    mesh : the sector's mesh.
+    point_data, cell_data : arrays by name, first axis over points or cells, at most one
+        further axis (components); the number type is that of the file.
+    source : the file it came from.
+    notes : what the reader assumed or left out, each a sentence for the user.
+    """
+
+    mesh: Mesh
+    point_data: Mapping[str, NDArray[np.generic]]
+    cell_data: Mapping[str, NDArray[np.generic]]
+    source: Path
+    notes: tuple[str, ...] = field(default=())

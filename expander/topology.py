@@ -1,0 +1,152 @@
+"""What can be told from the cells alone: local edge lengths, boundary nodes, connected pieces.
+
+All of it works on whole blocks of cells of one type; nothing loops over cells or nodes.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+
+import numpy as np
+from numpy.typing import NDArray
+
+from expander.cells import CELL_TYPES, dimensions
+from expander.model import Mesh
+from expander.placements import Floats
+
+Ints = NDArray[np.int64]
+
+
+def cell_sizes(mesh: Mesh) -> Ints:
+    """Number of nodes of each cell, (m,)."""
+    return np.diff(mesh.offsets)
+
+
+def blocks(mesh: Mesh, cells: Ints | None = None) -> Iterator[tuple[int, Ints, Ints]]:
+    """Cells of one type and size at a time: type, cell numbers (k,), nodes (k, size)."""
+    types = mesh.types if cells is None else mesh.types[cells]
+    sizes = cell_sizes(mesh) if cells is None else cell_sizes(mesh)[cells]
+    if len(types) and (types == types[0]).all() and (sizes == sizes[0]).all():
+        keys, which = np.array([types[0] + 256 * sizes[0]]), None  # the usual case, no sorting
+    else:
+        keys, which = np.unique(types.astype(np.int64) + 256 * sizes, return_inverse=True)
+    for number, key in enumerate(keys.tolist()):
+        picked = np.arange(len(types)) if which is None else np.flatnonzero(which == number)
+        numbers = picked if cells is None else cells[picked]
+        vtk_id, size = key % 256, key // 256
+        if which is None and cells is None:
+            nodes = mesh.connectivity.reshape(-1, size)
+        else:
+            nodes = mesh.connectivity[mesh.offsets[numbers][:, None] + np.arange(size)]
+        yield vtk_id, numbers, nodes
+
+
+def _edges(vtk_id: int, size: int) -> Ints:
+    """Pairs of corner columns, (e, 2)."""
+    if vtk_id in CELL_TYPES:
+        return np.array(CELL_TYPES[vtk_id].shape.edges, dtype=np.int64).reshape(-1, 2)
+    corners = size // 2 if vtk_id == 36 else size
+    around = np.arange(corners)
+    return np.stack([around, (around + 1) % corners], axis=1)
+
+
+def cells_touching(mesh: Mesh, marked: NDArray[np.bool_]) -> Ints:
+    """Cells with at least one marked node; `marked` is (n,)."""
+    hit = marked[mesh.connectivity]
+    if not hit.any():
+        return np.empty(0, dtype=np.int64)
+    positions = np.flatnonzero(hit)
+    return np.unique(np.searchsorted(mesh.offsets, positions, side="right") - 1)
+
+
+def local_edges(mesh: Mesh, nodes: Ints) -> Floats:
+    """Shortest straight edge of the cells at each of `nodes`, (k,); infinite where none has one."""
+    marked = np.zeros(mesh.point_count, dtype=bool)
+    marked[nodes] = True
+    shortest = np.full(mesh.point_count, np.inf)
+    for vtk_id, _, block in blocks(mesh, cells_touching(mesh, marked)):
+        pairs = _edges(vtk_id, block.shape[1])
+        if not len(pairs):
+            continue
+        points = mesh.points[block].astype(float)
+        steps = points[:, pairs[:, 0]] - points[:, pairs[:, 1]]
+        length = np.sqrt(np.einsum("cei,cei->ce", steps, steps))
+        length[length == 0.0] = np.inf  # a collapsed edge says nothing about the mesh's size
+        least = length.min(axis=1)
+        for column in range(block.shape[1]):
+            np.minimum.at(shortest, block[:, column], least)
+    return shortest[nodes]
+
+
+def boundary_nodes(mesh: Mesh) -> Ints:
+    """Nodes on faces that belong to one solid cell only, and all nodes of other cells, sorted.
+
+    A face is known by the sum of random numbers given to its corners: one sort of 64-bit keys,
+    instead of sorting rows of node numbers. Two different faces share a key with a probability
+    of about (number of faces)^2 / 2^64.
+    """
+    token = np.random.default_rng(20).integers(
+        0, 2**64, size=mesh.point_count, dtype=np.uint64, endpoint=False
+    )
+    marked = np.zeros(mesh.point_count, dtype=bool)
+    keys, owners = [], []
+    for vtk_id, _, nodes in blocks(mesh):
+        kind = CELL_TYPES.get(vtk_id)
+        if kind is None or kind.dimension < 3:
+            marked[nodes] = True
+            continue
+        for face in kind.shape.faces:
+            corners = nodes[:, face]
+            keys.append(token[corners].sum(axis=1, dtype=np.uint64))
+            on_face = [i for i, c in enumerate(kind.nodes) if set(c) <= set(face)]
+            owners.append((nodes, on_face))
+    if keys:
+        flat = np.concatenate(keys)
+        order = np.argsort(flat, kind="stable")
+        ranked = flat[order]
+        single = np.ones(len(flat), dtype=bool)
+        same = ranked[1:] == ranked[:-1]
+        single[1:][same] = False
+        single[:-1][same] = False
+        alone = np.zeros(len(flat), dtype=bool)
+        alone[order[single]] = True
+        start = 0
+        for (nodes, on_face), key in zip(owners, keys, strict=True):
+            picked = alone[start : start + len(key)]
+            marked[nodes[picked][:, on_face]] = True
+            start += len(key)
+    return np.flatnonzero(marked)
+
+
+def pieces(mesh: Mesh) -> NDArray[np.int32]:
+    """Number of the connected piece that each node belongs to, (n,)."""
+    from scipy.sparse import coo_matrix
+    from scipy.sparse.csgraph import connected_components
+
+    first = np.repeat(mesh.connectivity[mesh.offsets[:-1]], cell_sizes(mesh))
+    ones = np.ones(len(first), dtype=np.int8)
+    n = mesh.point_count
+    graph = coo_matrix((ones, (first, mesh.connectivity)), shape=(n, n))
+    return np.asarray(connected_components(graph, directed=False)[1], dtype=np.int32)
+
+
+def cells_at_nodes(mesh: Mesh, nodes: Ints) -> Ints:
+    """Number of cells at each of `nodes`, (k,), counting only those of the highest dimension there.
+
+    These are the cells whose stress a nodal mean of recovered values is taken over: a vertex or a
+    beam on a solid does not count.
+    """
+    marked = np.zeros(mesh.point_count, dtype=bool)
+    marked[nodes] = True
+    touching = cells_touching(mesh, marked)
+    counts = np.zeros((4, mesh.point_count), dtype=np.int64)
+    if len(touching):
+        sizes = cell_sizes(mesh)[touching]
+        rows = np.repeat(dimensions(mesh.types)[touching], sizes)
+        total = int(sizes.sum())
+        inside = np.arange(total) - np.repeat(np.cumsum(sizes) - sizes, sizes)
+        columns = mesh.connectivity[np.repeat(mesh.offsets[:-1][touching], sizes) + inside]
+        np.add.at(counts, (rows, columns), 1)
+    counts = counts[:, nodes]
+    highest = 3 - np.argmax(counts[::-1] > 0, axis=0)
+    return np.asarray(np.maximum(1, counts[highest, np.arange(len(nodes))]))
