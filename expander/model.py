@@ -10,7 +10,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False)
 class Mesh:
     """An unstructured mesh in VTK's cell types and node orders.
 
@@ -36,7 +36,7 @@ class Mesh:
         return len(self.types)
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False)
 class Model:
     """A sector as read from a file, before anything is said about what its arrays mean.
 

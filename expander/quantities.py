@@ -103,7 +103,7 @@ class Quantity:
         return len(self.components)
 
     @cached_property
-    def _spread(self) -> Floats:
+    def spread(self) -> Floats:
         """(3^rank, size): stored components to the full array."""
         if self.kind.rank == 0:
             return np.eye(self.size)
@@ -119,10 +119,10 @@ class Quantity:
         return full.reshape(-1, self.size)
 
     @cached_property
-    def _gather(self) -> Floats:
-        """(size, 3^rank): the full array to stored components; left inverse of `_spread`."""
-        picked = (self._spread != 0.0).T / np.maximum(1, (self._spread != 0).sum(axis=0))[:, None]
-        return np.asarray(np.linalg.inv(picked @ self._spread) @ picked)
+    def gather(self) -> Floats:
+        """(size, 3^rank): the full array to stored components; left inverse of `spread`."""
+        picked = (self.spread != 0.0).T / np.maximum(1, (self.spread != 0).sum(axis=0))[:, None]
+        return np.asarray(np.linalg.inv(picked @ self.spread) @ picked)
 
     def matrix(self, Q: Floats) -> Floats:
         """``A(Q)``, (size, size), acting on stored components.
@@ -135,9 +135,9 @@ class Quantity:
         action: Floats = np.ones((1, 1)) if self.kind.rank else np.eye(self.size)
         for _ in range(self.kind.rank):
             action = np.asarray(np.kron(action, Q))
-        moved = action @ self._spread
-        A = self._gather @ moved
-        if np.abs(self._spread @ A - moved).max(initial=0.0) > 1e-9:
+        moved = action @ self.spread
+        A = self.gather @ moved
+        if np.abs(self.spread @ A - moved).max(initial=0.0) > 1e-9:
             raise InputError(
                 f"components = {' '.join(self.components)!r} cannot hold a {self.kind.name} on "
                 "every copy: a plane or turn of the group moves components out of the stored ones.",

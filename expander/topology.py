@@ -22,6 +22,12 @@ def cell_sizes(mesh: Mesh) -> Ints:
     return np.diff(mesh.offsets)
 
 
+def cell_centres(mesh: Mesh) -> Floats:
+    """Mean position of the nodes of each cell, (m, 3)."""
+    sums = np.add.reduceat(mesh.points[mesh.connectivity].astype(float), mesh.offsets[:-1], axis=0)
+    return np.asarray(sums / cell_sizes(mesh)[:, None])
+
+
 def blocks(mesh: Mesh, cells: Ints | None = None) -> Iterator[tuple[int, Ints, Ints]]:
     """Cells of one type and size at a time: type, cell numbers (k,), nodes (k, size)."""
     types = mesh.types if cells is None else mesh.types[cells]

@@ -23,19 +23,26 @@ from vtkmodules.vtkIOXML import vtkXMLPolyDataReader, vtkXMLUnstructuredGridRead
 
 from expander.errors import InputError
 from expander.model import Mesh, Model
-from expander.readers import assemble
+from expander.readers import assemble, vtk_xml_guard
 
 Array = NDArray[np.generic]
 
 
 def read_vtu(path: Path) -> Model:
     """The model in an XML file of an unstructured grid."""
-    return _grid_model(path, _output(vtkXMLUnstructuredGridReader(), path))
+    return _grid_model(path, _xml_output(vtkXMLUnstructuredGridReader(), path, "UnstructuredGrid"))
 
 
 def read_vtp(path: Path) -> Model:
     """The model in an XML file of polygons, lines and vertices."""
-    return _polydata_model(path, _output(vtkXMLPolyDataReader(), path))
+    return _polydata_model(path, _xml_output(vtkXMLPolyDataReader(), path, "PolyData"))
+
+
+def _xml_output(reader: Any, path: Path, kind: str) -> Any:
+    with _silence():
+        declared = vtk_xml_guard.check(path, kind)
+    output = _output(reader, path, declared)
+    return output
 
 
 def read_legacy(path: Path) -> Model:
@@ -75,10 +82,15 @@ def _silence() -> Iterator[Any]:
         vtkOutputWindow.SetInstance(before)
 
 
-def _output(reader: Any, path: Path) -> Any:
+def _output(reader: Any, path: Path, declared: Any=None) -> Any:
     """The data set that a VTK reader makes of the file; any complaint of VTK is an error."""
     with _silence() as window:
         reader.SetFileName(str(path))
+        if declared is not None:
+            reader.UpdateInformation()
+            for section in ("Point", "Cell"):
+                for name in declared.texts[section+"Data"]:
+                    getattr(reader, f"Get{section}DataArraySelection")().DisableArray(name)
         reader.Update()
         output = reader.GetOutput()
         complaint = window.GetOutput()

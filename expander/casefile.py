@@ -1,0 +1,369 @@
+"""The case file: its tables as validated data, and one clear message for what is wrong in it."""
+
+from __future__ import annotations
+
+import difflib
+import re
+import tomllib
+from collections.abc import Mapping
+from pathlib import Path
+from typing import Annotated, Any, Literal
+
+from pydantic import BaseModel, BeforeValidator, ConfigDict, Field, ValidationError
+
+from expander.errors import InputError, NotYetError
+from expander.quantities import KINDS
+
+Vector = Annotated[list[float], Field(min_length=3, max_length=3)]
+Direction = Literal["x", "y", "z"] | Vector
+LoadWord = Literal["symmetric", "antisymmetric"]
+SeamRule = Literal["agree", "sum", "recovered"]
+
+
+def _one_or_many(value: Any) -> Any:
+    return [value] if isinstance(value, str) else value
+
+
+Names = Annotated[list[str], BeforeValidator(_one_or_many)]
+
+
+class Table(BaseModel):
+    """A table of the case file: no unknown keys, no conversion of types but int to float."""
+
+    model_config = ConfigDict(extra="forbid", strict=True, frozen=True, allow_inf_nan=False)
+
+
+class ModelTable(Table):
+    file: str | None = None
+    linear: bool = True
+    results: Names = []
+    unit: str | None = None
+
+
+class MirrorTable(Table):
+    name: str | None = None
+    normal: Direction
+    point: Vector = [0.0, 0.0, 0.0]
+    load: LoadWord = "symmetric"
+
+
+class CyclicTable(Table):
+    sectors: int = Field(ge=2)
+    axis: Direction = "z"
+    point: Vector = [0.0, 0.0, 0.0]
+    nodal_diameters: int = Field(default=0, ge=0)
+    phase: Literal["auto", "+", "-"] = "auto"
+
+
+class FieldTable(Table):
+    kind: str
+    components: str | None = None
+    shear: Literal["tensor", "engineering"] | None = None
+    seam: SeamRule | None = None
+    follows: Literal["load", "body"] | None = None
+    frame: str = "global"
+    arrays: Names | None = None
+    columns: list[int] | None = None
+    on: Literal["points", "cells"] | None = None
+    unit: str | None = None
+
+
+class FrameTable(Table):
+    type: Literal["global", "cylindrical"]
+    axis: Direction = "z"
+    point: Vector = [0.0, 0.0, 0.0]
+
+
+class CaseTable(Table):
+    name: str
+    file: str | None = None
+    results: Names | None = None
+    load: LoadWord | dict[str, LoadWord] = {}
+    nodal_diameters: int | None = Field(default=None, ge=0)
+    phase: Literal["auto", "+", "-"] | None = None
+    factor: float = 1.0
+
+
+class SumTable(Table):
+    name: str
+    terms: dict[str, float] = Field(min_length=1)
+
+
+class SeamTable(Table):
+    tolerance: float | None = Field(default=None, gt=0.0)
+    limit: float = Field(default=1e-4, gt=0.0)
+    open: Literal["refuse", "keep apart"] = "refuse"
+
+
+class OutputTable(Table):
+    file: str | None = None
+    results: Names | None = None
+    copies: list[int] | None = None
+    merge: bool = True
+    encoding: Literal["raw"] = "raw"
+    derived: list[Literal["von mises", "principal stresses", "magnitude"]] = []
+
+
+class CaseFile(Table):
+    """The whole contract of a case.
+
+    Attributes
+    ----------
+    folder : folder that file names in the case are relative to.
+    source : the case file, or None when the case was given as options.
+    """
+
+    model: ModelTable = ModelTable()
+    mirror: list[MirrorTable] = []
+    cyclic: CyclicTable | None = None
+    fields: dict[str, FieldTable] = {}
+    frames: dict[str, FrameTable] = {}
+    case: list[CaseTable] = []
+    sum: list[SumTable] = []
+    seam: SeamTable = SeamTable()
+    output: OutputTable = OutputTable()
+    folder: Path = Path()
+    source: Path | None = None
+
+
+# Keys of the contract that later versions serve; patterns over dotted paths.
+_LATER = {
+    r"model\.(step|once)": "Steps and parts modelled whole",
+    r"case\[\d+\]\.step": "Steps",
+    r"fields\..+\.(real|imaginary|amplitude|phase_degrees)": "Complex results",
+    r"expect(\..*)?": "Totals expected of the whole body",
+    r"output\.phases": "Phases of complex results",
+}
+_LATER_VALUES = {
+    (r"output\.encoding", "compressed"): "Compressed files",
+    (r"fields\..+\.on", "corners"): "Values at element corners",
+}
+
+
+def read_case(path: Path, overrides: Mapping[str, Any] | None = None) -> CaseFile:
+    """Read and validate a case file.
+
+    Raises
+    ------
+    InputError
+        Naming file, key and allowed values.
+    """
+    try:
+        raw = tomllib.loads(path.read_text(encoding="utf-8"))
+    except FileNotFoundError:
+        raise InputError(f"{path}: there is no such case file.", "Check the path.") from None
+    except IsADirectoryError:
+        raise InputError(f"{path} is a folder.", "Expected a case file (.toml).") from None
+    except UnicodeDecodeError:
+        raise InputError(f"{path} is not a text file.", "Expected TOML in UTF-8.") from None
+    except tomllib.TOMLDecodeError as error:
+        raise InputError(
+            f"{path} is not valid TOML: {error}.",
+            'Text goes in double quotes (normal = "x"), lists in brackets, tables in [..].',
+        ) from None
+    except OSError as error:
+        raise InputError(f"{path} cannot be read: {error.strerror}.") from None
+    for dotted, value in (overrides or {}).items():
+        assign(raw, dotted, value)
+    return validate_case(raw, path.parent, path)
+
+
+def validate_case(raw: Mapping[str, Any], folder: Path, source: Path | None = None) -> CaseFile:
+    """Turn raw tables into a `CaseFile`.
+
+    Examples
+    --------
+    >>> case = validate_case({"model": {"file": "half.vtu"}, "mirror": [{"normal": "x"}]}, Path())
+    >>> case.mirror[0].load, case.seam.limit
+    ('symmetric', 0.0001)
+    """
+    where = str(source) if source else "the options"
+    reserved = {"folder", "source"} & set(raw)
+    if reserved:
+        raise InputError(f"{where}: unknown table {reserved.pop()!r}.", _allowed(CaseFile))
+    for path, value in _walk(raw):
+        for pattern, what in _LATER.items():
+            if re.fullmatch(pattern, path):
+                raise NotYetError(
+                    f"{where}: {path} belongs to the contract, but not yet to this version.",
+                    f"{what} come with a later version; remove the key to go on without.",
+                )
+        for (pattern, word), what in _LATER_VALUES.items():
+            if value == word and re.fullmatch(pattern, path):
+                raise NotYetError(
+                    f"{where}: {path} = {word!r} is not yet served by this version.",
+                    f"{what} come with a later version.",
+                )
+        if (
+            re.fullmatch(r"sum\[\d+\]\.terms\..+\[0\]", path)
+            and isinstance(value, int | float)
+            and not isinstance(value, bool)
+        ):
+            raise NotYetError(
+                f"{where}: {path[:-3]} is a complex factor, which this version does not serve yet.",
+                "Complex results come with a later version; give a real factor.",
+            )
+    try:
+        case = CaseFile.model_validate({**raw, "folder": folder, "source": source})
+    except ValidationError as error:
+        raise _explained(error, where) from None
+    for name, table in case.fields.items():
+        if table.kind not in KINDS and table.kind not in ("stiffness", "compliance"):
+            raise InputError(
+                f"{where}: fields.{name}.kind = {table.kind!r} is unknown.",
+                _suggest(table.kind, list(KINDS)) + "Expected one of: " + ", ".join(KINDS) + ".",
+            )
+    _check_names(case, where)
+    return case
+
+
+def _check_names(case: CaseFile, where: str) -> None:
+    """Names must be unique and refer to something."""
+    planes = plane_names(case)
+    _unique(planes, f"{where}: two planes are named", "Give each [[mirror]] its own name.")
+    cases = [c.name for c in case.case]
+    sums = [s.name for s in case.sum]
+    _unique(cases + sums, f"{where}: two results are named", "Give each [[case]] and [[sum]] "
+            "its own name.")  # fmt: skip
+    for entry in case.case:
+        if isinstance(entry.load, dict):
+            for plane in entry.load:
+                if plane not in planes:
+                    raise InputError(
+                        f"{where}: case {entry.name!r} gives a load word to plane {plane!r}, "
+                        "which is not declared.",
+                        _suggest(plane, planes)
+                        + f"Declared planes: {', '.join(planes) or 'none'}.",
+                    )
+        if entry.nodal_diameters is not None and case.cyclic is None:
+            raise InputError(
+                f"{where}: case {entry.name!r} has nodal_diameters, but there is no [cyclic] "
+                "table.",
+                "Add a [cyclic] table with sectors = N, or remove the key.",
+            )
+    if case.sum and not case.case:
+        raise InputError(
+            f"{where}: [[sum]] needs [[case]] tables to add up.",
+            "Add a [[case]] with a name and a file for each result that is summed.",
+        )
+    for entry_sum in case.sum:
+        for term in entry_sum.terms:
+            if term not in cases:
+                raise InputError(
+                    f"{where}: sum {entry_sum.name!r} adds case {term!r}, which is not declared.",
+                    _suggest(term, cases) + f"Declared cases: {', '.join(cases)}.",
+                )
+    results = cases + sums
+    for result in case.output.results or []:
+        if result not in results:
+            raise InputError(
+                f"{where}: output.results names {result!r}, which is neither a case nor a sum.",
+                _suggest(result, results) + f"Declared: {', '.join(results) or 'none'}.",
+            )
+    for name, table in case.fields.items():
+        if table.frame != "global" and table.frame not in case.frames:
+            raise InputError(
+                f"{where}: fields.{name}.frame = {table.frame!r} is not declared.",
+                _suggest(table.frame, list(case.frames))
+                + f'Add [frames.{table.frame}] with type = "cylindrical", axis and point.',
+            )
+
+
+def plane_names(case: CaseFile) -> list[str]:
+    """Names of the cut planes, "plane 1", "plane 2", .. where none is given."""
+    return [m.name or f"plane {k + 1}" for k, m in enumerate(case.mirror)]
+
+
+def _unique(names: list[str], found: str, remedy: str) -> None:
+    for name in names:
+        if names.count(name) > 1:
+            raise InputError(f"{found} {name!r}.", remedy)
+
+
+def assign(raw: dict[str, Any], dotted: str, value: Any) -> None:
+    """Set ``raw["a"]["b"]`` for the key ``a.b``; ``mirror.0.load`` reaches into a list."""
+    keys = dotted.split(".")
+    target: Any = raw
+    try:
+        for key in keys[:-1]:
+            target = target[int(key)] if isinstance(target, list) else target.setdefault(key, {})
+        if isinstance(target, list):
+            target[int(keys[-1])] = value
+        else:
+            target[keys[-1]] = value
+    except (ValueError, IndexError, AttributeError, TypeError):
+        raise InputError(
+            f"--set {dotted}: there is no such place in the case.",
+            "Expected dotted keys of the case file, lists counted from 0: mirror.0.load=...",
+        ) from None
+
+
+def _walk(value: Any, path: str = "") -> list[tuple[str, Any]]:
+    found: list[tuple[str, Any]] = [(path, value)] if path else []
+    if isinstance(value, Mapping):
+        for key, inner in value.items():
+            found += _walk(inner, f"{path}.{key}" if path else str(key))
+    elif isinstance(value, list):
+        for k, inner in enumerate(value):
+            found += _walk(inner, f"{path}[{k}]")
+    return found
+
+
+def _suggest(word: str, known: list[str]) -> str:
+    close = difflib.get_close_matches(word, known, n=1)
+    return f"Did you mean {close[0]!r}? " if close else ""
+
+
+def _allowed(table: type[Table]) -> str:
+    keys = [k for k in table.model_fields if k not in ("folder", "source")]
+    return "Allowed: " + ", ".join(keys) + "."
+
+
+_TABLES: dict[str, type[Table]] = {
+    "model": ModelTable, "mirror": MirrorTable, "cyclic": CyclicTable, "fields": FieldTable,
+    "frames": FrameTable, "case": CaseTable, "sum": SumTable, "seam": SeamTable,
+    "output": OutputTable,
+}  # fmt: skip
+
+
+def _explained(error: ValidationError, where: str) -> InputError:
+    """The first problem as one message: key, what was found, what is allowed."""
+    problems = error.errors(include_url=False)
+    first = next((p for p in problems if p["type"] == "extra_forbidden"), problems[0])
+    named = [
+        part
+        for part in first["loc"]
+        if not (isinstance(part, str) and (part in _UNION_PARTS or "[" in part))
+    ]
+    path = ""
+    for part in named:
+        path += f"[{part}]" if isinstance(part, int) else (f".{part}" if path else str(part))
+    table = _TABLES.get(str(named[0]), CaseFile) if named else CaseFile
+    if first["type"] == "extra_forbidden":
+        owner = CaseFile if len(named) == 1 else table
+        known = list(owner.model_fields)
+        return InputError(
+            f"{where}: unknown key {path}.", _suggest(str(named[-1]), known) + _allowed(owner)
+        )
+    if first["type"] == "missing":
+        return InputError(f"{where}: {path} is missing.", _example(str(named[-1])))
+    same = [p["msg"] for p in problems if p["loc"][: len(named)] == first["loc"][: len(named)]]
+    reasons = list(dict.fromkeys(m.replace("Input should be", "expected") for m in same))
+    value = first["input"]
+    shown = repr(value) if len(repr(value)) < 80 else f"a {type(value).__name__}"
+    return InputError(f"{where}: {path} = {shown} is not valid.", "; or ".join(reasons) + ".")
+
+
+_UNION_PARTS = {"list", "literal", "dict", "str", "function-before"}
+
+
+def _example(key: str) -> str:
+    lines = {
+        "normal": 'Add normal = "x" (or "y", "z", or three numbers).',
+        "sectors": "Add sectors = 12, the number of sectors of the whole ring.",
+        "kind": "Add kind = one of: " + ", ".join(KINDS) + ".",
+        "name": 'Add name = "...".',
+        "terms": "Add terms = { even = 1.0, odd = 0.5 }.",
+        "type": 'Add type = "cylindrical".',
+    }
+    return lines.get(key, f"Add {key}.")

@@ -1,0 +1,114 @@
+"""Closing: do the two sides of a seam agree, before they are merged?"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+from expander.errors import CheckFailed
+from expander.fields import Field
+from expander.groups import Group
+from expander.model import Mesh
+from expander.resolve import Resolved
+from expander.seams import Classes
+
+if TYPE_CHECKING:
+    from expander.body import LoadCase
+
+
+@dataclass(frozen=True)
+class Opening:
+    """A field that does not close at some nodes, in one case."""
+
+    field: str
+    case: str
+    nodes: tuple[int, ...]
+    worst: float
+
+
+def check_closing(
+    mesh: Mesh,
+    group: Group,
+    fields: list[Field],
+    cases: tuple[LoadCase, ...],
+    classes: Classes,
+    resolved: dict[tuple[str, int], Resolved],
+    limit: float,
+    keep_apart: bool,
+) -> list[Opening]:
+    """Fields that must agree at a seam but do not.
+
+    Parameters
+    ----------
+    limit : largest jump that counts as closed, as part of the field's largest value.
+
+    Raises
+    ------
+    CheckFailed
+        With the worst node and both values, unless `keep_apart`.
+    """
+    openings = []
+    for k, case in enumerate(cases):
+        for f in fields:
+            if f.on != "points" or f.seam != "agree" or f.quantity.kind.name == "label":
+                continue
+            found = resolved[f.name, k]
+            if not len(found.jumps):
+                continue
+            values = f.values(case.model)
+            largest = float(np.nanmax(np.linalg.norm(values.astype(float), axis=1), initial=0.0))
+            open_ = found.jumps > limit * largest
+            if not open_.any():
+                continue
+            worst = int(np.argmax(found.jumps))
+            if not keep_apart:
+                raise _open(mesh, group, f, case, classes, found, worst, largest, limit,
+                            int(open_.sum()))  # fmt: skip
+            openings.append(
+                Opening(f.name, case.name, tuple(classes.items[open_].tolist()),
+                        float(found.jumps[worst]) / largest)
+            )  # fmt: skip
+    return openings
+
+
+def _open(
+    mesh: Mesh,
+    group: Group,
+    f: Field,
+    case: LoadCase,
+    classes: Classes,
+    found: Resolved,
+    worst: int,
+    largest: float,
+    limit: float,
+    count: int,
+) -> CheckFailed:
+    node = int(classes.items[worst])
+    copy = int(found.through[worst])
+    at = ", ".join(f"{c:.6g}" for c in mesh.points[node])
+    turned_over = np.linalg.norm(found.own + found.other_side, axis=1)  # with the other sign
+    through = found.through == copy
+    hint = ""
+    if f.follows == "load" and (turned_over[through] <= limit * largest).all():
+        hint = (
+            " With the opposite sign it closes: the load of this case looks "
+            + ("symmetric" if case.chi[copy] < 0 else "antisymmetric")
+            + " there, change the load word."
+        )
+    return CheckFailed(
+        f"Field {f.name!r} does not close along the seam of the copy {group.words(copy)} "
+        f"(case {case.name!r}, {case.behaviour.words()}): at node {node} ({at}) the model has "
+        f"{_numbers(found.own[worst])}, the copy {_numbers(found.other_side[worst])}: "
+        f"{100 * found.jumps[worst] / largest:.3g} % of the field's largest value {largest:.6g}, "
+        f"limit {100 * limit:.3g} %; {count} of {len(classes.items)} seam nodes are open.",
+        "Check the load word of the plane, the support on the seam, kind and components of the "
+        f"field.{hint} If the values were recovered from elements, write seam = \"recovered\"; if "
+        "they add up (forces), seam = \"sum\"; to keep open nodes apart, seam.open = "
+        "\"keep apart\" under [seam].",
+    )  # fmt: skip
+
+
+def _numbers(values: np.ndarray) -> str:
+    return "(" + ", ".join(f"{v:.6g}" for v in values) + ")"

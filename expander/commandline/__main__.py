@@ -1,0 +1,3 @@
+from expander.commandline.main import main
+
+main()

@@ -1,0 +1,117 @@
+"""Tables and progress bars on the terminal."""
+
+from __future__ import annotations
+
+from types import TracebackType
+from typing import Any
+
+from rich import box
+from rich.console import Console
+from rich.markup import escape
+from rich.progress import BarColumn, DownloadColumn, TaskID, TextColumn, TimeElapsedColumn
+from rich.progress import Progress as Bar
+from rich.table import Table
+
+
+class Progress:
+    """A progress bar on the error stream; quiet when that is no terminal."""
+
+    def __init__(self) -> None:
+        console = Console(stderr=True)
+        self._bar = Bar(
+            TextColumn("{task.description}"), BarColumn(), DownloadColumn(), TimeElapsedColumn(),
+            console=console, transient=True, disable=not console.is_terminal,
+        )  # fmt: skip
+        self._task: TaskID | None = None
+
+    def __enter__(self) -> Progress:
+        self._bar.start()
+        return self
+
+    def __exit__(
+        self,
+        kind: type[BaseException] | None,
+        error: BaseException | None,
+        trace: TracebackType | None,
+    ) -> None:
+        self._bar.stop()
+
+    def step(self, words: str) -> None:
+        """A part without a known length begins."""
+        self.start(words, None)
+
+    def start(self, words: str, total: int | None) -> None:
+        """A part of `total` bytes begins."""
+        if self._task is not None:
+            self._bar.remove_task(self._task)
+        self._task = self._bar.add_task(escape(words), total=total)
+
+    def advance(self, done: int) -> None:
+        """So many bytes more are written."""
+        if self._task is not None:
+            self._bar.advance(self._task, done)
+
+
+def print_summary(found: dict[str, Any]) -> None:
+    """The short table of an expansion."""
+    console = Console(highlight=False, soft_wrap=False)
+    points, cells = found["points"], found["cells"]
+    facts = Table.grid(padding=(0, 2))
+    facts.add_column(style="bold")
+    facts.add_column()
+    copies = len(found["copies"])
+    of = "" if copies == found["whole_body_copies"] else f" of {found['whole_body_copies']}"
+    made = ", ".join(c["made"] for c in found["copies"][:4]) + (", .." if copies > 4 else "")
+    facts.add_row("copies", escape(f"{copies}{of}: {made}"))
+    for case in found["cases"]:
+        facts.add_row("case", escape(f"{case['name']}: {case['behaviour']}"))
+    searched = [s for s in found["seams"] if s["nodes"]]
+    seams = ", ".join(f"{s['made']} ({s['nodes']} nodes)" for s in searched[:4])
+    facts.add_row("seams", escape(seams + (", .." if len(searched) > 4 else "")) or "none")
+    if found["seam_nodes"]:
+        low, high = found["tolerance"]
+        facts.add_row(
+            "stitched",
+            f"{points['merged']:,} nodes and {cells['merged']:,} cells merged; partners at most "
+            f"{found['worst_distance']:.3g} apart (tolerance {low:.3g}"
+            + (f" to {high:.3g})" if high > low else ")"),
+        )
+    facts.add_row(
+        "body",
+        f"{points['body']:,} nodes, {cells['body']:,} cells (sector: {points['sector']:,} nodes, "
+        f"{cells['sector']:,} cells)",
+    )
+    console.print(facts)
+    console.print(_field_table(found))
+    for result in found["results"]:
+        terms = " + ".join(f"{a:g} {name}" for name, a in result["terms"].items())
+        mark = "wrote" if found["written"] else "would write"
+        left = f"; left out: {', '.join(result['left_out'])}" if result["left_out"] else ""
+        console.print(escape(f"{mark} {result['file']}  ({result['name']} = {terms}{left})"))
+    if found["index"]:
+        console.print(escape(f"index {found['index']}"))
+    for name, count in found["not_finite"].items():
+        console.print(escape(f"note: {name} holds {count} values that are not finite numbers"))
+    for note in found["notes"]:
+        console.print(escape(f"note: {note}"))
+    console.print("[dim]" + escape("caution: " + " ".join(found["cautions"])) + "[/dim]")
+
+
+def _field_table(found: dict[str, Any]) -> Table:
+    planes = [p["name"] for p in found["planes"]]
+    table = Table(box=box.SIMPLE_HEAD, pad_edge=False)
+    for heading in ("field", "on", "kind", "decided", "follows", "seam"):
+        table.add_column(heading, overflow="fold")
+    several = len(found["cases"]) > 1
+    for plane in planes:
+        table.add_column(f"changes sign across {plane}", overflow="fold")
+    for f in found["fields"]:
+        row = [f["name"], f["on"], f["kind"], f["decided"], f["follows"], f["seam"]]
+        for plane in planes:
+            words = {case: signs[plane] for case, signs in f["changes_sign"].items()}
+            if len(set(words.values())) == 1 or not several:
+                row.append(next(iter(words.values())))
+            else:
+                row.append("; ".join(f"{case}: {w}" for case, w in words.items()))
+        table.add_row(*(escape(cell) for cell in row))
+    return table

@@ -1,0 +1,232 @@
+"""Expansion: from a case to files, or to a grid in memory."""
+
+from __future__ import annotations
+
+import hashlib
+import re
+from collections.abc import Callable
+from concurrent.futures import Future, ThreadPoolExecutor
+from dataclasses import dataclass
+from importlib.metadata import PackageNotFoundError, version
+from pathlib import Path
+from typing import TYPE_CHECKING, Any
+
+import numpy as np
+
+from expander.body import Result, Step, WholeBody, prepare
+from expander.casefile import CaseFile, CaseTable, read_case
+from expander.errors import InputError, NotYetError
+from expander.images import arrays_of
+from expander.summary import CAUTIONS, summary
+
+if TYPE_CHECKING:
+    import pyvista
+
+Advance = Callable[[int], None]
+
+
+@dataclass(frozen=True)
+class Target:
+    """A result and the file that it goes to."""
+
+    result: Result
+    file: Path
+
+
+def program_version() -> str:
+    """Version of the installed program."""
+    try:
+        return version("seamfold")
+    except PackageNotFoundError:
+        return "not installed"
+
+
+def input_files(case: CaseFile) -> list[Path]:
+    """Every file that the case reads, each once, in order."""
+    names: list[str] = []
+    for table in case.case or [CaseTable(name="result")]:
+        names.append(table.file or case.model.file or "")
+        names += table.results if table.results is not None else case.model.results
+    files = [case.folder / n for n in dict.fromkeys(names) if n]
+    return files + ([case.source] if case.source else [])
+
+
+def digests(files: list[Path]) -> dict[str, str]:
+    """SHA-256 of each file by name."""
+    found = {}
+    for file in files:
+        with file.open("rb") as stream:
+            found[file.name] = hashlib.file_digest(stream, "sha256").hexdigest()
+    return found
+
+
+def targets(case: CaseFile, results: tuple[Result, ...]) -> tuple[list[Target], Path | None]:
+    """The file of each result, and the index if there is one.
+
+    One result goes to exactly `output.file`; several to one file each beside an index.
+    """
+    name = case.output.file or _default_name(case)
+    path = case.folder / name
+    suffix = path.suffix.lower()
+    if suffix == ".vtkhdf":
+        raise NotYetError(
+            f"output.file = {name!r}: .vtkhdf is not yet written by this version.",
+            "Write .vtu, or .pvd for several results.",
+        )
+    if suffix not in (".vtu", ".pvd"):
+        raise InputError(
+            f"output.file = {name!r}: files of type {suffix or 'without extension'!r} are not "
+            "written.",
+            "Expected .vtu, or .pvd for several results.",
+        )
+    if len(results) == 1 and suffix == ".vtu":
+        chosen = [Target(results[0], path)]
+        index = None
+    else:
+        index = path.with_suffix(".pvd")
+        slugs: list[str] = []
+        for result in results:
+            slug = re.sub(r"[^A-Za-z0-9.-]+", "_", result.name).strip("_") or "result"
+            slugs.append(slug if slug not in slugs else f"{slug}_{len(slugs)}")
+        chosen = [
+            Target(r, path.with_name(f"{path.stem}_{s}.vtu"))
+            for r, s in zip(results, slugs, strict=True)
+        ]
+    inputs = {f.resolve() for f in input_files(case)}
+    for file in [t.file for t in chosen] + ([index] if index else []):
+        if file.resolve() in inputs:
+            raise InputError(
+                f"{file} is read by this case and would be overwritten.",
+                "Choose another output.file.",
+            )
+    return chosen, index
+
+
+def _default_name(case: CaseFile) -> str:
+    source = case.source or Path(case.model.file or "model")
+    return f"{source.stem}_full.vtu"
+
+
+def field_data(body: WholeBody, result: Result, hashes: dict[str, str]) -> dict[str, Any]:
+    """What is recorded in the file: how the body was made and what was assumed."""
+    placements = np.stack([_matrix(body, g) for g in body.copies])
+    terms = [(body.cases[k], a) for k, a in result.terms]
+    chi = np.stack([a * c.chi[list(body.copies)] for c, a in terms], axis=1)
+    return {
+        "result": [result.name],
+        "terms": [f"{a:.17g} * {c.name}: {c.behaviour.words()}" for c, a in terms],
+        "copies": np.array(body.copies, dtype=np.int32),
+        "copy_words": [body.group.words(g) for g in body.copies],
+        "placements": placements,
+        "factors": chi,
+        "fields": [
+            f"{f.name}: {f.kind} on {f.on} ({f.decided}), follows {f.follows}, seam {f.seam}, "
+            f"frame {f.frame.name}" + (f", {f.unit}" if f.unit else "")
+            for f in body.fields
+        ],
+        "assumptions": list(body.notes) or ["none"],
+        "cautions": list(CAUTIONS),
+        "program": [f"seamfold {program_version()}"],
+        "input_sha256": [f"{name} {digest}" for name, digest in hashes.items()],
+    }
+
+
+def _matrix(body: WholeBody, copy: int) -> np.ndarray:
+    matrix = np.eye(4)
+    placement = body.group.placements[copy]
+    matrix[:3, :3], matrix[:3, 3] = placement.Q, placement.t
+    return matrix.ravel()
+
+
+@dataclass(eq=False)
+class Expansion:
+    """A prepared case with its files: `size` is known, nothing is written yet."""
+
+    body: WholeBody
+    targets: list[Target]
+    index: Path | None
+    _hashes: Future[dict[str, str]]
+
+    def size(self) -> int:
+        """Bytes of all arrays of all results."""
+        return sum(a.nbytes for t in self.targets for a in arrays_of(self.body, t.result))
+
+    def write(self, advance: Advance = lambda done: None) -> None:
+        """Write all results; each file appears only when all are whole."""
+        from expander.writers.newfiles import NewFiles
+        from expander.writers.pvd import write_pvd
+        from expander.writers.vtu import write_vtu
+
+        hashes = self._hashes.result()
+        with NewFiles() as files:
+            for target in self.targets:
+                write_vtu(
+                    files,
+                    target.file,
+                    arrays_of(self.body, target.result),
+                    field_data(self.body, target.result, hashes),
+                    advance,
+                )
+            if self.index is not None:
+                write_pvd(files, self.index, [(t.result.name, t.file) for t in self.targets])
+
+    def summary(self) -> dict[str, Any]:
+        """What was done, as plain data for the table and for JSON."""
+        return summary(self.body, [(t.result, t.file) for t in self.targets], self.index,
+                       program_version())  # fmt: skip
+
+
+def plan(
+    case: CaseFile,
+    skip_undeclared: bool = False,
+    allow_nan: bool = False,
+    step: Step = lambda words: None,
+) -> Expansion:
+    """Read and check a case; raises as `body.prepare` does."""
+    with ThreadPoolExecutor(1) as pool:
+        # Hashing reads the files once more, while the main thread thinks.
+        hashes = pool.submit(digests, input_files(case))
+        body = prepare(case, skip_undeclared, allow_nan, step)
+        chosen, index = targets(case, body.results)
+    return Expansion(body, chosen, index, hashes)
+
+
+def expand(
+    case: CaseFile | Path | str,
+    result: str | None = None,
+    skip_undeclared: bool = False,
+    allow_nan: bool = False,
+) -> pyvista.UnstructuredGrid:
+    """The whole body in memory, for scripts.
+
+    Parameters
+    ----------
+    case : a case file, or a case that was read.
+    result : name of the case or sum, if there are several.
+
+    Returns
+    -------
+    pyvista.UnstructuredGrid
+        With the sector's arrays on the whole body and the arrays `copy`, `sector_cell` and
+        `sector_point`.
+
+    Raises
+    ------
+    InputError, CheckFailed
+        As the command line reports them.
+    """
+    from expander.writers.grid import build_grid
+
+    if not isinstance(case, CaseFile):
+        case = read_case(Path(case))
+    body = prepare(case, skip_undeclared, allow_nan)
+    names = [r.name for r in body.results]
+    if result is None and len(names) > 1:
+        raise InputError(
+            "The case has several results.", f"Choose one with result=...: {', '.join(names)}."
+        )
+    if result is not None and result not in names:
+        raise InputError(f"There is no result {result!r}.", f"Results: {', '.join(names)}.")
+    chosen = next(r for r in body.results if result in (None, r.name))
+    hashes = digests(input_files(case))
+    return build_grid(arrays_of(body, chosen), field_data(body, chosen, hashes))

@@ -1,0 +1,320 @@
+"""Fields: what each array of the model is, as declared in the case or told by its name."""
+
+from __future__ import annotations
+
+from collections.abc import Iterable, Mapping
+from dataclasses import dataclass, replace
+
+import numpy as np
+from numpy.typing import NDArray
+
+from expander.casefile import CaseFile, FieldTable
+from expander.errors import InputError, NotYetError
+from expander.frames import Cylindrical, Frame, Global
+from expander.model import Model
+from expander.placements import Floats
+from expander.quantities import Quantity, quantity
+from expander.tradewords import stress_odd, trade_word
+
+ADDED_ARRAYS = ("copy", "sector_cell", "sector_point")
+_LABEL_FRAME = str.maketrans("rt", "xy")  # r, t, z are the components x, y, z of a local frame
+
+
+@dataclass(frozen=True, eq=False)
+class Field:
+    """One field of the sector and how it is carried to the copies.
+
+    Attributes
+    ----------
+    name : of the output array.
+    follows : "load" (takes chi) or "body" (never).
+    seam : "agree", "sum", "recovered", or "lowest copy" (labels and properties of the body).
+    on : "points" or "cells".
+    arrays : the arrays that hold it; one, or one per component.
+    columns : columns of the one array that are used, counted from 0; None for all.
+    decided : how the kind was decided, in words.
+    """
+
+    name: str
+    quantity: Quantity
+    follows: str
+    seam: str
+    frame: Frame
+    on: str
+    arrays: tuple[str, ...]
+    columns: tuple[int, ...] | None
+    unit: str
+    decided: str
+    shear_assumed: bool = False
+
+    @property
+    def kind(self) -> str:
+        return self.quantity.kind.name
+
+    @property
+    def summable(self) -> bool:
+        """Whether results of several cases may be added."""
+        return self.quantity.linear and self.follows == "load" and not stress_odd(self.name)
+
+    @property
+    def constant(self) -> bool:
+        """Whether it is a property of the body, the same in every case."""
+        return self.follows == "body"
+
+    def values(self, model: Model) -> NDArray[np.generic]:
+        """The field on the sector, (n, k), in the number type of the file."""
+        data = model.point_data if self.on == "points" else model.cell_data
+        missing = [a for a in self.arrays if a not in data]
+        if missing:
+            raise InputError(
+                f"{model.source}: there is no array {missing[0]!r} on {self.on} "
+                f"(field {self.name!r}).",
+                f"Arrays on {self.on}: {', '.join(data) or 'none'}.",
+            )
+        if len(self.arrays) == 1:
+            array = np.asarray(data[self.arrays[0]])
+            array = array.reshape(len(array), -1)
+            if self.columns is not None:
+                array = array[:, list(self.columns)]
+        else:
+            array = np.stack([np.asarray(data[a]) for a in self.arrays], axis=1)
+        if array.shape[1] != self.quantity.size:
+            raise InputError(
+                f"{model.source}: array {self.name!r} has {array.shape[1]} components, in the "
+                f"first case it has {self.quantity.size}.",
+                "All cases of one body hold the same fields.",
+            )
+        return array
+
+
+def frames_of(case: CaseFile, directions: Mapping[str, Floats]) -> dict[str, Frame]:
+    """The declared frames; `directions` are their axes by name."""
+    frames: dict[str, Frame] = {"global": Global()}
+    for name, table in case.frames.items():
+        if table.type == "global":
+            frames[name] = Global(name)
+        else:
+            frames[name] = Cylindrical(name, directions[name], np.array(table.point, dtype=float))
+    return frames
+
+
+def fields_of(
+    model: Model, case: CaseFile, frames: Mapping[str, Frame], skip_undeclared: bool, odd: bool
+) -> tuple[list[Field], list[str]]:
+    """All fields of the model, and notes on arrays that were left out.
+
+    Parameters
+    ----------
+    odd : whether any case has a copy with chi = -1; scalars must then be declared.
+
+    Raises
+    ------
+    InputError
+        For a declared field that is not there or does not fit, and for arrays that neither the
+        case nor their name explains, with the lines to add.
+    """
+    where = str(case.source) if case.source else "the options"
+    fields = [_declared(n, t, model, frames, where) for n, t in case.fields.items()]
+    used = {(f.on, a) for f in fields for a in f.arrays}
+    unknown: list[tuple[str, str, int]] = []
+    notes: list[str] = []
+    for on, data in (("points", model.point_data), ("cells", model.cell_data)):
+        other = model.cell_data if on == "points" else model.point_data
+        for name, array in data.items():
+            if (on, name) in used:
+                continue
+            size = 1 if array.ndim == 1 else array.shape[1]
+            word = None if name in other else trade_word(name, size)
+            clash = name in ADDED_ARRAYS or any(f.name == name for f in fields)
+            if word is not None and not clash:
+                fields.append(_by_name(name, on, array, size, frames["global"]))
+            elif (
+                size == 1 and name not in other and not clash
+                and (np.issubdtype(array.dtype, np.integer) or not odd)
+            ):  # fmt: skip
+                fields.append(_plain(name, on, array, frames["global"]))
+            else:
+                unknown.append((on, name, size))
+    if unknown and not skip_undeclared:
+        raise _undeclared(model, unknown, odd)
+    notes += [f"array {n!r} on {on} is undeclared and was left out" for on, n, _ in unknown]
+    return fields, notes
+
+
+def _declared(
+    name: str, table: FieldTable, model: Model, frames: Mapping[str, Frame], where: str
+) -> Field:
+    arrays = tuple(table.arrays or [name])
+    path = f"{where}: fields.{name}"
+    on = _where(arrays, table.on, model, path)
+    data = model.point_data if on == "points" else model.cell_data
+    shapes = [1 if data[a].ndim == 1 else data[a].shape[1] for a in arrays]
+    if len(arrays) > 1 and set(shapes) != {1}:
+        wide = arrays[int(np.argmax(np.array(shapes) > 1))]
+        raise InputError(
+            f"{path}.arrays: {wide!r} has {max(shapes)} components.",
+            "Name one array, or one array of a single component for each component.",
+        )
+    columns = None
+    size = shapes[0] if len(arrays) == 1 else len(arrays)
+    if table.columns is not None:
+        bad = [c for c in table.columns if not 1 <= c <= size]
+        if bad or len(arrays) > 1 or not table.columns:
+            raise InputError(
+                f"{path}.columns = {table.columns} does not fit {arrays[0]!r} of {size} columns.",
+                f"Expected numbers from 1 to {size}, for a single array.",
+            )
+        columns = tuple(c - 1 for c in table.columns)
+        size = len(columns)
+    frame = frames[table.frame]
+    components = table.components
+    if components is not None and isinstance(frame, Cylindrical):
+        components = components.replace("theta", "t").translate(_LABEL_FRAME)
+    if components is None and len(arrays) > 1 and size in (3, 4, 6) and "tensor" in table.kind:
+        raise InputError(
+            f"{path}: a tensor given as one array per component needs its order.",
+            'Add components = "xx yy zz xy yz zx" in the order of arrays.',
+        )
+    try:
+        q = quantity(table.kind, size, components, table.shear or "tensor")
+    except NotYetError as error:
+        raise NotYetError(f"{path}: {error.found}", error.remedy) from None
+    except InputError as error:
+        raise InputError(f"{path}: {error.found}", error.remedy) from None
+    if name in ADDED_ARRAYS:
+        raise InputError(
+            f"{path}: the output adds an array {name!r} of its own.",
+            f'Give the field another key, with arrays = ["{arrays[0]}"].',
+        )
+    word = trade_word(name, size)
+    follows = table.follows or ("body" if q.kind.name == "label" else "load")
+    if follows == "body" and table.seam is None:
+        seam = word.seam if word and word.seam == "sum" else "lowest copy"
+    else:
+        seam = table.seam or (word.seam if word else "agree")
+    if q.kind.name == "label":
+        seam = "lowest copy"
+    if seam == "sum" and q.kind.response != "linear":
+        raise InputError(
+            f'{path}: seam = "sum" does not go with kind = "{q.kind.name}".',
+            "Only linear quantities such as forces, heat flows and masses add up at a seam.",
+        )
+    decided = "declared"
+    if word is not None and word.kind != q.kind.name:
+        decided += f" (by name it would be a {word.kind})"
+    return Field(name, q, follows, seam, frame, on, arrays, columns,
+                 table.unit or "", decided, table.shear is None)  # fmt: skip
+
+
+def _where(arrays: tuple[str, ...], on: str | None, model: Model, path: str) -> str:
+    missing: list[str] = []
+    fitting = []
+    for place, data in (("points", model.point_data), ("cells", model.cell_data)):
+        absent = [a for a in arrays if a not in data]
+        missing += absent
+        if not absent:
+            fitting.append(place)
+    if on is not None and on in fitting:
+        return on
+    if len(fitting) > 1 and on is None:
+        raise InputError(
+            f"{path}: {arrays[0]!r} is both on points and on cells of {model.source}.",
+            'Add on = "points" or on = "cells".',
+        )
+    if fitting and on is None:
+        return fitting[0]
+    place = f" on {on}" if on else ""
+    raise InputError(
+        f"{path}: {model.source} has no array {missing[0]!r}{place}.",
+        f"Arrays on points: {', '.join(model.point_data) or 'none'}; "
+        f"on cells: {', '.join(model.cell_data) or 'none'}.",
+    )
+
+
+def _by_name(name: str, on: str, array: NDArray[np.generic], size: int, frame: Frame) -> Field:
+    word = trade_word(name, size)
+    assert word is not None
+    seam = "lowest copy" if word.follows == "body" and word.seam != "sum" else word.seam
+    return Field(name, quantity(word.kind, size), word.follows, seam, frame, on,
+                 (name,), None, "", "by name", True)  # fmt: skip
+
+
+def _plain(name: str, on: str, array: NDArray[np.generic], frame: Frame) -> Field:
+    if np.issubdtype(array.dtype, np.integer):
+        q, follows, seam, why = quantity("label", 1), "body", "lowest copy", "integers: a label"
+    else:
+        q, follows, seam, why = quantity("scalar", 1), "load", "agree", "one component: a scalar"
+    return Field(name, q, follows, seam, frame, on, (name,), None, "", why)
+
+
+def _undeclared(model: Model, unknown: list[tuple[str, str, int]], odd: bool) -> InputError:
+    lines = []
+    for on, name, size in unknown:
+        kinds = {
+            1: "scalar, invariant, pseudoscalar or label",
+            2: "polar vector",
+            3: "polar vector, axial vector or principal values",
+            4: "symmetric tensor",
+            6: "symmetric tensor",
+            9: "tensor",
+        }.get(size, "?")
+        key = name if name.replace("_", "").replace("-", "").isalnum() else f'"{name}"'
+        clash = name in ADDED_ARRAYS or name in (
+            model.cell_data if on == "points" else model.point_data
+        )
+        if clash:
+            key = f"{name}_on_{on}"
+        lines.append(f'[fields.{key}]\n  kind = "..."  # {size} component(s): {kinds}')
+        if clash:
+            lines.append(f'arrays = ["{name}"]\n  on = "{on}"')
+    names = ", ".join(f"{n!r} on {on} ({s})" for on, n, s in unknown)
+    because = (
+        " With an antisymmetric load even a single number must be declared: a scalar changes "
+        "sign, an invariant and a property of the body do not."
+        if odd and any(s == 1 for _, _, s in unknown)
+        else ""
+    )
+    return InputError(
+        f"{model.source}: arrays that neither the case nor their name explains: {names}.{because}",
+        "Add to the case file:\n  "
+        + "\n  ".join(lines)
+        + "\n  or leave them out with --skip-undeclared.",
+    )
+
+
+def check_shear(fields: Iterable[Field], Qs: Iterable[Floats]) -> None:
+    """Refuse an assumed shear word where tensor and engineering shear would differ."""
+    matrices = list(Qs)
+    for field in fields:
+        if field.kind != "symmetric tensor" or not field.shear_assumed:
+            continue
+        if "strain" not in field.name.lower() or isinstance(field.frame, Cylindrical):
+            continue
+        other = replace(field.quantity, engineering=True)
+        if any(np.abs(field.quantity.matrix(Q) - other.matrix(Q)).max() > 1e-12 for Q in matrices):
+            raise InputError(
+                f"Field {field.name!r}: shear strain may be stored as tensor or as engineering "
+                "shear, and on these copies the two differ.",
+                f'Add shear = "tensor" or shear = "engineering" under [fields.{field.name}].',
+            )
+
+
+def check_load_odd(fields: Iterable[Field], case_name: str) -> None:
+    """Refuse values that no rule can copy under an antisymmetric load (chi = -1)."""
+    for field in fields:
+        word = trade_word(field.name, field.quantity.size)
+        if stress_odd(field.name) and field.quantity.size == 1 and field.follows == "load":
+            raise InputError(
+                f"Field {field.name!r} in the antisymmetric case {case_name!r}: a lone principal, "
+                "signed or interaction measure is odd in the stress but not linear; the largest "
+                "principal stress of a copy is minus the smallest of the sector.",
+                "Give all three principal values as one field (kind = \"principal values\"), or "
+                "leave it out and ask for output.derived = [\"principal stresses\"].",
+            )  # fmt: skip
+        if word and word.kind == "invariant" and field.quantity.linear and field.follows == "load":
+            raise InputError(
+                f"Field {field.name!r} is declared a {field.kind}, which changes sign in the "
+                f"antisymmetric case {case_name!r}; by its name it is an invariant, which does "
+                "not.",
+                f'Write kind = "invariant" under [fields.{field.name}].',
+            )

@@ -1,0 +1,272 @@
+"""Tiling: the copies must fill the body once, with nothing twice and nothing left out.
+
+No mirror plane of the closed group may cut the model, and the sector's angle must be 360/N.
+"""
+
+from __future__ import annotations
+
+from typing import Any, cast
+
+import numpy as np
+
+from expander.errors import InputError
+from expander.groups import Group, direction_words
+from expander.model import Mesh
+from expander.placements import Floats
+from expander.seams import Seams, Tolerance
+from expander.topology import Ints, boundary_nodes, cell_sizes
+
+_SAMPLES = 400
+
+
+def check_sides(mesh: Mesh, group: Group, given_tolerance: float | None) -> None:
+    """Refuse a model with nodes on both sides of any mirror plane of the closed group."""
+    tolerance = Tolerance(mesh, given_tolerance)
+    for g, normal, level in group.mirrors:
+        side = mesh.points @ normal - level
+        low, high = float(side.min()), float(side.max())
+        if -low > high:
+            side, low, high = -side, -high, -low
+        if low >= -0.5 * tolerance.spacing:
+            continue
+        wrong = np.flatnonzero(side < 0.0)
+        sure = -low > 0.1 * tolerance.size
+        if not sure:
+            wrong = wrong[-2.0 * side[wrong] > tolerance.at(wrong)]
+        if len(wrong):
+            raise _cut(mesh, group, g, side, wrong)
+
+
+def _cut(mesh: Mesh, group: Group, g: int, side: Floats, wrong: Ints) -> InputError:
+    worst = int(wrong[np.argmin(side[wrong])])
+    found = (
+        f"{len(wrong)} of {mesh.point_count} nodes lie on the other side; the farthest is node "
+        f"{worst} at ({_at(mesh, worst)}), {-side[worst]:.6g} beyond the plane."
+    )
+    names = [p.name for p in group.planes if p.placement.plane() is not None]
+    for plane in group.planes:
+        own = plane.placement.plane()
+        this = group.placements[g].plane()
+        if (
+            own
+            and this
+            and np.abs(np.outer(own[0], own[0]) - np.outer(this[0], this[0])).max() < (1e-9)
+        ):
+            return InputError(
+                f"The model has nodes on both sides of plane {plane.name!r}. {found}",
+                "Expected the model on one side of each cut plane; check mirror.normal and "
+                "mirror.point, or cut the model.",
+            )
+    normal = direction_words(group.mirrors[[m[0] for m in group.mirrors].index(g)][1])
+    angle = ""
+    if len(group.planes) >= 2 and group.axis is None:
+        a, b = group.planes[:2]
+        degrees = np.rad2deg(np.arccos(np.clip(abs(a.normal @ b.normal), 0.0, 1.0)))
+        angle = (
+            f" Planes {a.name!r} and {b.name!r} meet at {degrees:.6g} degrees (or "
+            f"{180 - degrees:.6g} on the other side), which makes {len(group)} copies: together "
+            f"they have room for {360 / len(group) * (2 if len(group.planes) > 2 else 1):.6g} "
+            "degrees each, so space would be covered more than once."
+        )
+    elif group.axis is not None:
+        angle = (
+            f" With {group.axis.sectors} sectors and a plane through the axis the model is half a "
+            f"sector, {group.axis.degrees / 2:.6g} degrees."
+        )
+    return InputError(
+        f"The model reaches across a mirror plane (normal {normal}) that the declared planes "
+        f"({', '.join(names)}) make together.{angle} {found}",
+        "Expected planes that bound the model at 180/m degrees; check mirror.normal and "
+        "cyclic.sectors.",
+    )
+
+
+def _at(mesh: Mesh, node: int) -> str:
+    return ", ".join(f"{c:.6g}" for c in mesh.points[node])
+
+
+def check_touch(mesh: Mesh, group: Group, seams: Seams, given: float | None) -> list[str]:
+    """Refuse a model that almost touches a cut plane; notes on planes that it stays clear of."""
+    notes = []
+    tolerance = Tolerance(mesh, given)
+    for plane in group.planes:
+        own = plane.placement.plane()
+        if own is None:
+            continue
+        copy = next(g for g, n, _ in group.mirrors if _parallel(n, own[0]))
+        if seams.pairs.get(copy):
+            continue
+        off = np.abs(mesh.points @ own[0] - own[1])
+        node = int(np.argmin(off))
+        edge = float(np.minimum(_edge(mesh, node), tolerance.size))
+        if off[node] < edge:
+            raise InputError(
+                f"No node lies on plane {plane.name!r}: the nearest is node {node} at "
+                f"({_at(mesh, node)}), {off[node]:.6g} away, less than its edge of {edge:.6g}.",
+                f"Move the plane (mirror.point), or give a seam.tolerance over "
+                f"{2 * off[node]:.3g} if the nodes are off.",
+            )
+        notes.append(
+            f"the model stays clear of plane {plane.name!r} (nearest: node {node}, "
+            f"{off[node]:.6g} away): its copies do not touch there"
+        )
+    if seams.near_misses:
+        nodes = {n for n, _ in seams.near_misses}
+        node, distance = max(seams.near_misses, key=lambda m: m[1])
+        notes.append(
+            f"{len(nodes)} nodes lie close to a cut plane but outside the tolerance and were not "
+            f"merged (farthest: node {node}, {distance:.3g} off); to merge them give "
+            f"seam.tolerance = {2.1 * distance:.2g}"
+        )
+    return notes
+
+
+def _parallel(a: Floats, b: Floats) -> bool:
+    return bool(np.abs(np.outer(a, a) - np.outer(b, b)).max() < 1e-9)
+
+
+def _edge(mesh: Mesh, node: int) -> float:
+    from expander.topology import local_edges
+
+    return float(local_edges(mesh, np.array([node]))[0])
+
+
+def check_turns(mesh: Mesh, group: Group, seams: Seams, given: float | None) -> list[str]:
+    """Refuse a sector whose angle is not 360/N, or whose copies overlap.
+
+    Nothing to do where mirror planes alone make the group: `check_sides` is exact there.
+    """
+    if group.is_reflection_group:
+        return []
+    turned = [g for g in range(1, len(group)) if not group.placements[g].mirrored]
+    touching = sum(seams.pairs.get(g, 0) for g in turned if g in seams.pairs) - _on_axis(
+        mesh, group, seams
+    )
+    angle = _face_angle(mesh, group, given) if group.axis is not None else None
+    expected = group.axis.degrees if group.axis is not None else 0.0
+    agrees = angle is not None and abs(angle - expected) < 1e-4 * expected
+    if touching and agrees:
+        return []
+    if not touching and angle is not None and not agrees:
+        raise _wrong_angle(group, angle)
+    overlap = _overlap(mesh, group, turned)
+    if overlap is not None:
+        if angle is not None and not agrees:
+            raise _wrong_angle(group, angle)
+        copy, cell = overlap
+        raise InputError(
+            f"Copies overlap: the centre of cell {cell}, {group.words(copy)}, lies inside the "
+            "model.",
+            "Expected a sector of 360/N degrees about cyclic.axis through cyclic.point; check "
+            "cyclic.sectors, axis and point.",
+        )
+    if touching:
+        return []
+    return ["no node of one sector meets a node of another: the turned copies do not touch, "
+            "nothing was merged between them"]  # fmt: skip
+
+
+def _on_axis(mesh: Mesh, group: Group, seams: Seams) -> int:
+    """Pairs of a node with itself, which say nothing about the sector's faces."""
+    own = (seams.nodes.item == seams.nodes.source) & (seams.nodes.via > 0)
+    turned = np.array([not p.mirrored for p in group.placements])
+    return int(np.count_nonzero(own & turned[seams.nodes.via]))
+
+
+def _wrong_angle(group: Group, angle: float) -> InputError:
+    assert group.axis is not None
+    n = 360.0 / angle
+    fit = f" sectors = {round(n)} would fit." if abs(n - round(n)) < 1e-3 * n else ""
+    return InputError(
+        f"The sector's matching faces lie {angle:.6g} degrees apart, but cyclic.sectors = "
+        f"{group.axis.sectors} asks for {group.axis.degrees:.6g} degrees.{fit}",
+        "Correct cyclic.sectors; if the model is a part that stands clear of its copies, check "
+        "cyclic.axis and cyclic.point first.",
+    )
+
+
+def _face_angle(mesh: Mesh, group: Group, given: float | None) -> float | None:
+    """Angle between the two faces of the sector that match when turned, in degrees.
+
+    Nodes of the second face have the radius and height of nodes of the first; the angle that most
+    of such pairs share, and no larger one does, is the sector's. None if there is none.
+    """
+    from scipy.spatial import cKDTree
+
+    axis = group.axis
+    assert axis is not None
+    nodes = boundary_nodes(mesh)
+    points = mesh.points[nodes].astype(float) - axis.point
+    height = points @ axis.axis
+    radial = points - np.outer(height, axis.axis)
+    radius = np.linalg.norm(radial, axis=1)
+    size = float(radius.max())
+    off = radius > 1e-6 * size
+    if not off.any():
+        return None
+    e1 = radial[np.argmax(radius)] / size
+    e2 = np.cross(axis.axis, e1)
+    theta = np.rad2deg(np.arctan2(radial @ e2, radial @ e1))
+    tolerance = Tolerance(mesh, given)
+    ring = np.stack([radius, height], axis=1)[off]
+    theta, ring = theta[off], ring[off]
+    if len(ring) > 20_000:  # a sample of rings is enough to read an angle
+        order = np.lexsort(np.round(ring / max(tolerance.reach, 1e-12)).T)
+        ring, theta = ring[order[:20_000]], theta[order[:20_000]]
+    pairs = cKDTree(ring).query_pairs(max(tolerance.reach * 0.1, tolerance.spacing),
+                                      output_type="ndarray")  # fmt: skip
+    if not len(pairs):
+        return None
+    apart = np.abs(theta[pairs[:, 0]] - theta[pairs[:, 1]])
+    apart = np.minimum(apart, 360.0 - apart)
+    apart = apart[apart > 1e-6]
+    if not len(apart):
+        return None
+    bins, counts = np.unique(np.round(apart, 4), return_counts=True)
+    common = bins[counts >= max(2, 0.25 * counts.max())]
+    return float(common.max()) if len(common) else None
+
+
+def _overlap(mesh: Mesh, group: Group, copies: list[int]) -> tuple[int, int] | None:
+    """A copy and a cell whose centre lies inside the model, from a sample of cells."""
+    from vtkmodules.util.numpy_support import numpy_to_vtk, numpy_to_vtkIdTypeArray
+    from vtkmodules.vtkCommonCore import mutable, vtkPoints
+    from vtkmodules.vtkCommonDataModel import (
+        vtkCellArray,
+        vtkGenericCell,
+        vtkStaticCellLocator,
+        vtkUnstructuredGrid,
+    )
+
+    points = vtkPoints()
+    points.SetData(numpy_to_vtk(mesh.points.astype(float)))
+    cells = vtkCellArray()
+    offsets = numpy_to_vtkIdTypeArray(mesh.offsets)
+    connectivity = numpy_to_vtkIdTypeArray(np.ascontiguousarray(mesh.connectivity))
+    cells.SetData(offsets, connectivity)
+    grid = vtkUnstructuredGrid()
+    grid.SetPoints(points)
+    types = numpy_to_vtk(mesh.types)
+    grid.SetCells(types, cells)
+    locator = vtkStaticCellLocator()
+    locator.SetDataSet(grid)
+    locator.BuildLocator()
+    sample = np.unique(np.linspace(0, mesh.cell_count - 1, _SAMPLES).astype(np.int64))
+    sums = np.add.reduceat(mesh.points[mesh.connectivity].astype(float), mesh.offsets[:-1], axis=0)
+    centres = (sums / cell_sizes(mesh)[:, None])[sample]
+    first = mesh.points[mesh.connectivity[mesh.offsets[:-1][sample]]].astype(float)
+    inside = 0.02 * np.linalg.norm(first - centres, axis=1)
+    middle = centres.mean(axis=0)
+    reach = float(np.linalg.norm(mesh.points - middle, axis=1).max())
+    generic = vtkGenericCell()
+    cell_id, sub_id, d2 = (cast(Any, mutable(start)) for start in (0, 0, 0.0))
+    closest = [0.0, 0.0, 0.0]
+    for g in copies:
+        placement = group.placements[g]
+        images = placement.apply(centres)
+        near = np.flatnonzero(np.linalg.norm(images - middle, axis=1) <= reach)
+        for k in near.tolist():  # a bounded sample, not all cells
+            locator.FindClosestPoint(images[k], closest, generic, cell_id, sub_id, d2)
+            if float(d2) ** 0.5 < inside[k]:
+                return g, int(sample[k])
+    return None

@@ -1,0 +1,110 @@
+"""Trade words: what an array is when only its name tells. Data, in the order of decision.
+
+A name is compared in lower case, with words joined by underscores. What was decided this way is
+printed and recorded. 'Moment' alone decides nothing: a shell's (Mx, My, Mxy) is no axial vector.
+"""
+
+from __future__ import annotations
+
+import re
+from dataclasses import dataclass
+
+
+@dataclass(frozen=True)
+class TradeWord:
+    """A pattern of names and what it means.
+
+    Attributes
+    ----------
+    sizes : numbers of components for which the name decides.
+    seam, follows : as in the case file.
+    """
+
+    pattern: str
+    kind: str
+    sizes: tuple[int, ...] = (1,)
+    seam: str = "agree"
+    follows: str = "load"
+
+
+_FORCE = "nodal|internal|external|applied|reaction|contact|residual"
+
+TRADE_WORDS = (
+    # Before their parts: the names below contain the words further down.
+    TradeWord(r"(.+_)?magnitude(_.+)?|mag_.+|.+_mag", "invariant", seam="recovered"),
+    TradeWord(r"(signed_.+|.+_signed)", "scalar", seam="recovered"),
+    TradeWord(
+        r"(.+_)?(von_?mises|mises|tresca|equivalent_(stress|strain|plastic_strain)"
+        r"|octahedral_shear)(_.+)?",
+        "invariant", seam="recovered",
+    ),
+    TradeWord(r"(.+_)?energy(_density)?", "invariant", seam="recovered"),
+    TradeWord(
+        r"(.+_)?principal(_.+)?|(.+_)?principals", "principal values", (3,), seam="recovered"
+    ),
+    TradeWord(r"(.+_)?principal(_.+)?", "invariant", (1,), seam="recovered"),
+    # Primary fields
+    TradeWord(r"(total_)?displacements?|disp|u|translations?", "polar vector", (2, 3)),
+    TradeWord(r"rotations?|angular_(displacement|velocity|acceleration)s?", "axial vector", (1, 3)),
+    TradeWord(r"velocity|velocities|accelerations?", "polar vector", (2, 3)),
+    TradeWord(r"temperatures?|electric_potential|voltage|pressure|pore_pressure", "scalar"),
+    # Extensive nodal quantities
+    TradeWord(
+        rf"(({_FORCE})_)?(forces?)|({_FORCE})_(forces?|loads?)|reactions?",
+        "polar vector", (2, 3), seam="sum",
+    ),
+    TradeWord(
+        rf"({_FORCE})_moments?(_of_force)?|moments?_of_force", "axial vector", (1, 3), seam="sum"
+    ),
+    TradeWord(r"(.+_)?heat_flow", "scalar", seam="sum"),
+    TradeWord(r"(lumped_|nodal_)?mass", "scalar", seam="sum", follows="body"),
+    # Recovered from elements
+    TradeWord(
+        r"(.+_)?(stress|stresses|strain|strains)", "symmetric tensor", (3, 4, 6, 9),
+        seam="recovered",
+    ),
+    TradeWord(r"(.+_)?(heat_flux|temperature_gradient)", "polar vector", (2, 3), seam="recovered"),
+    TradeWord(r"curl|vorticity|magnetic_flux_density", "axial vector", (1, 3), seam="recovered"),
+    TradeWord(r"displacement_gradient|deformation_gradient", "tensor", (4, 9), seam="recovered"),
+    # Carried with the body
+    TradeWord(r"(.+_)?thickness|density", "scalar", follows="body"),
+    TradeWord(r"(.+_)?normals?", "polar vector", (2, 3), follows="body"),
+    TradeWord(
+        r"(part|material|property|section|region|set|component|block|layer)(_?(id|number|index))?",
+        "label", follows="body",
+    ),
+)  # fmt: skip
+
+# Odd in the response though not linear: no rule copies one of them under an antisymmetric load.
+STRESS_ODD = re.compile(r"(.+_)?(principal|signed|interaction|failure_index|reserve_factor)(_.+)?")
+
+
+def normalised(name: str) -> str:
+    """The name as it is compared.
+
+    >>> normalised("NodalForce [N]")
+    'nodal_force'
+    """
+    name = re.sub(r"[\[(].*?[\])]", "", name)
+    name = re.sub(r"(?<=[a-z])(?=[A-Z])", "_", name)
+    return re.sub(r"[^a-z0-9]+", "_", name.lower()).strip("_")
+
+
+def trade_word(name: str, size: int) -> TradeWord | None:
+    """The first trade word that fits a name and number of components.
+
+    >>> trade_word("Reaction Force", 3).seam
+    'sum'
+    >>> trade_word("moment", 3) is None
+    True
+    """
+    plain = normalised(name)
+    for word in TRADE_WORDS:
+        if size in word.sizes and re.fullmatch(word.pattern, plain):
+            return word
+    return None
+
+
+def stress_odd(name: str) -> bool:
+    """Whether the name is that of a lone measure that is odd in the stress but not linear."""
+    return bool(STRESS_ODD.fullmatch(normalised(name)))
