@@ -12,6 +12,7 @@ from functools import cached_property
 from pathlib import Path
 
 import numpy as np
+from numpy.typing import NDArray
 
 from expander.behaviours import Behaviour, factors
 from expander.casefile import CaseFile, CaseTable, Direction, plane_names
@@ -93,8 +94,11 @@ class WholeBody:
     @cached_property
     def on_axis(self) -> float:
         """Distance from the axis of a cylindrical frame that counts as on it."""
-        size = float(np.ptp(self.mesh.points, axis=0).max())
-        return 1e-9 * size + 8.0 * float(np.spacing(np.abs(self.mesh.points).max()))
+        return _on_axis(self.mesh)
+
+
+def _on_axis(mesh: Mesh) -> float:
+    return 1e-9 * mesh.size + 8.0 * mesh.spacing
 
 
 Step = Callable[[str], None]
@@ -231,13 +235,20 @@ def _within(folder: Path, file: str) -> Path:
 def _check_mesh(model: Model) -> None:
     mesh = model.mesh
     require_known(mesh.types, str(model.source))
-    bad = ~np.isfinite(mesh.points).all(axis=1)
-    if bad.any():
+    if not _all_finite(mesh.points):
+        bad = ~np.isfinite(mesh.points).all(axis=1)
         raise InputError(
             f"{model.source}: {int(bad.sum())} nodes have no finite coordinates; the first is "
             f"node {int(np.argmax(bad))}.",
             "Expected numbers; write the model again.",
         )
+
+
+def _all_finite(values: NDArray[np.generic]) -> bool:
+    """Whether all numbers are finite; a finite sum is the quick proof."""
+    with np.errstate(over="ignore", invalid="ignore"):
+        quick = bool(np.isfinite(values.sum(dtype=float)))
+    return quick or bool(np.isfinite(values).all())
 
 
 def _check_same_mesh(first: Model, other: Model, name: str) -> None:
@@ -250,8 +261,7 @@ def _check_same_mesh(first: Model, other: Model, name: str) -> None:
         and np.array_equal(a.connectivity, b.connectivity)
         and np.array_equal(a.offsets, b.offsets)
     )
-    size = float(np.ptp(a.points, axis=0).max())
-    if same and float(np.abs(a.points - b.points).max()) <= 1e-6 * size:
+    if same and float(np.abs(a.points - b.points).max()) <= 1e-6 * a.size:
         return
     what = (
         f"{b.point_count} nodes and {b.cell_count} cells against {a.point_count} and "
@@ -326,9 +336,9 @@ def _check_numbers(
             values = f.values(c.model)
             if not np.issubdtype(values.dtype, np.floating):
                 continue
-            bad = ~np.isfinite(values)
-            if not bad.any():
+            if _all_finite(values):
                 continue
+            bad = ~np.isfinite(values)
             row = int(np.argmax(bad.any(axis=1)))
             if not allow_nan:
                 raise InputError(
@@ -376,8 +386,7 @@ def _resolved(
     items = classes.items
     places = mesh.points[items] if on == "points" else cell_centres(mesh)[items]
     weights = cells_at_nodes(mesh, items) if on == "points" and len(items) else None
-    size = float(np.ptp(mesh.points, axis=0).max())
-    on_axis = 1e-9 * size + 8.0 * float(np.spacing(np.abs(mesh.points).max()))
+    on_axis = _on_axis(mesh)
     found = {}
     for k, c in enumerate(cases):
         for f in fields:

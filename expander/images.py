@@ -17,6 +17,7 @@ from __future__ import annotations
 
 from collections.abc import Callable, Iterator
 from dataclasses import dataclass, field
+from functools import lru_cache
 from threading import Lock
 
 import numpy as np
@@ -28,6 +29,7 @@ from expander.derived import Derived, derived_fields
 from expander.errors import InputError
 from expander.fields import Field
 from expander.frames import Cylindrical
+from expander.model import Mesh
 from expander.numbering import Numbering
 from expander.placements import Floats
 from expander.quantities import Quantity
@@ -35,6 +37,9 @@ from expander.resolve import acting, from_global, to_global
 from expander.topology import Ints, blocks
 
 Block = NDArray[np.generic]
+
+_RECENT = 3  # copies whose numbers are kept
+_BLAS_ALONE = 200_000  # multiplications of one product
 
 
 @dataclass(eq=False)
@@ -46,9 +51,9 @@ class BodyArray:
     section : "points", "cells", or the mesh's own "coordinates", "connectivity", "offsets",
         "types".
     components : names of the components; empty for a single number.
-    first : row of the whole array at which each copy's block starts.
+    first : row of the whole array at which each copy's part starts.
     rows : rows of the whole array.
-    block : computes the rows of one copy, in the sector's order.
+    block : computes some of the rows of one copy, which are in the sector's order.
     release : forgets what was kept between copies.
     """
 
@@ -58,7 +63,7 @@ class BodyArray:
     components: tuple[str, ...]
     first: dict[int, int]
     rows: int
-    block: Callable[[int], Block]
+    block: Callable[[int, slice], Block]
     release: Callable[[], None] = field(default=lambda: None)
 
     @property
@@ -69,6 +74,14 @@ class BodyArray:
     def nbytes(self) -> int:
         return self.rows * self.width * self.dtype.itemsize
 
+    def pieces(self, most_bytes: int) -> Iterator[tuple[int, int, slice]]:
+        """(copy, row of the whole array, rows of the copy) for pieces of at most so many bytes."""
+        step = max(1, most_bytes // (self.width * self.dtype.itemsize))
+        ends = [*list(self.first.values())[1:], self.rows]
+        for (copy, begin), end in zip(self.first.items(), ends, strict=True):
+            for row in range(0, end - begin, step):
+                yield copy, begin + row, slice(row, min(row + step, end - begin))
+
 
 class Topology:
     """Connectivity, offsets and types of the copies."""
@@ -77,52 +90,61 @@ class Topology:
         self.body = body
         self.points = body.point_numbering
         self.cells = body.cell_numbering
-        self._known: dict[tuple[bool, int], tuple[Ints, Ints, NDArray[np.uint8]]] = {}
+        self._sectors: dict[tuple[bool, int], tuple[Ints, Ints, NDArray[np.uint8]]] = {}
+        self._numbers: dict[int, Ints] = {}
         self._lock = Lock()
-        lengths = {g: len(self.sector(g)[0]) for g in body.copies}
         self.first: dict[int, int] = {}
         self.length = 0
         for g in body.copies:
             self.first[g] = self.length
-            self.length += lengths[g]
+            self.length += len(self.sector(g)[0])
         fits = max(self.points.total, self.length) < 2**31
         self.index = np.dtype(np.int32 if fits else np.int64)
 
     def sector(self, copy: int) -> tuple[Ints, Ints, NDArray[np.uint8]]:
-        """Connectivity in sector numbers, sizes and types of the cells that `copy` writes."""
+        """Connectivity in sector numbers, ends and types of the cells that `copy` writes."""
         mirrored = self.body.group.placements[copy].mirrored
         kept = self.cells.kept(copy)
         key = (mirrored, -1 if kept is None else id(kept))
         with self._lock:
-            if key not in self._known:
-                self._known[key] = self._make(mirrored, kept)
-            return self._known[key]
+            if key not in self._sectors:
+                self._sectors[key] = self._make(mirrored, kept)
+            return self._sectors[key]
 
     def _make(self, mirrored: bool, kept: Ints | None) -> tuple[Ints, Ints, NDArray[np.uint8]]:
         mesh = self.body.mesh
-        connectivity = mirrored_connectivity(self.body) if mirrored else mesh.connectivity
-        sizes = np.diff(mesh.offsets)
+        connectivity = mirrored_connectivity(mesh) if mirrored else mesh.connectivity
         if kept is None:
-            return connectivity, sizes, mesh.types
+            return connectivity, mesh.offsets[1:], mesh.types
+        sizes = np.diff(mesh.offsets)
         mask = np.zeros(mesh.cell_count, dtype=bool)
         mask[kept] = True
-        return connectivity[np.repeat(mask, sizes)], sizes[kept], mesh.types[kept]
+        return connectivity[np.repeat(mask, sizes)], np.cumsum(sizes[kept]), mesh.types[kept]
 
-    def connectivity(self, copy: int) -> Block:
-        numbers = self.points.numbers(copy).astype(self.index)
-        return np.take(numbers, self.sector(copy)[0])
+    def _numbers_of(self, copy: int) -> Ints:
+        """Numbers of the copy's points; the last few are kept, for pieces of the same copy."""
+        with self._lock:
+            if copy not in self._numbers:
+                while len(self._numbers) >= _RECENT:
+                    del self._numbers[next(iter(self._numbers))]
+                self._numbers[copy] = self.points.numbers(copy).astype(self.index)
+            return self._numbers[copy]
 
-    def offsets(self, copy: int) -> Block:
-        ends = np.cumsum(self.sector(copy)[1]) + self.first[copy]
-        return ends.astype(self.index)
+    def connectivity(self, copy: int, rows: slice) -> Block:
+        return np.take(self._numbers_of(copy), self.sector(copy)[0][rows])
 
-    def types(self, copy: int) -> Block:
-        return self.sector(copy)[2]
+    def offsets(self, copy: int, rows: slice) -> Block:
+        return (self.sector(copy)[1][rows] + self.first[copy]).astype(self.index)
+
+    def types(self, copy: int, rows: slice) -> Block:
+        return self.sector(copy)[2][rows]
+
+    def release(self) -> None:
+        self._numbers.clear()
 
 
-def mirrored_connectivity(body: WholeBody) -> Ints:
+def mirrored_connectivity(mesh: Mesh) -> Ints:
     """The sector's connectivity with every cell in the node order of its mirror image."""
-    mesh = body.mesh
     out = np.empty_like(mesh.connectivity)
     for vtk_id, cells, nodes in blocks(mesh):
         if vtk_id in CELL_TYPES:
@@ -155,16 +177,17 @@ def arrays_of(body: WholeBody, result: Result) -> Iterator[BodyArray]:
     index = topology.index
     coordinates = body.mesh.points
 
-    def place(copy: int) -> Block:
-        x = _kept(coordinates, points, copy)
+    def place(copy: int, rows: slice) -> Block:
+        x = _kept(coordinates, points, copy, rows)
         if copy == 0:
             return x
-        return body.group.placements[copy].apply(x).astype(coordinates.dtype, copy=False)
+        g = body.group.placements[copy]
+        return (times(x.astype(float, copy=False), g.Q) + g.t).astype(coordinates.dtype, copy=False)
 
     yield BodyArray("Points", "coordinates", coordinates.dtype, ("x", "y", "z"), points.first,
                     points.total, place)  # fmt: skip
     yield BodyArray("connectivity", "connectivity", index, (), topology.first, topology.length,
-                    topology.connectivity)  # fmt: skip
+                    topology.connectivity, topology.release)  # fmt: skip
     yield BodyArray("offsets", "offsets", index, (), cells.first, cells.total, topology.offsets)
     yield BodyArray("types", "types", np.dtype(np.uint8), (), cells.first, cells.total,
                     topology.types)  # fmt: skip
@@ -172,9 +195,16 @@ def arrays_of(body: WholeBody, result: Result) -> Iterator[BodyArray]:
         yield from _field_arrays(body, result, f)
     yield _numbers_array("sector_point", "points", points)
     yield _numbers_array("sector_cell", "cells", cells)
-    copy_type = np.dtype(np.int32)
-    yield BodyArray("copy", "cells", copy_type, (), cells.first, cells.total,
-                    lambda g: np.full(cells.written(g), g, dtype=copy_type))  # fmt: skip
+    yield _copy_array(cells)
+
+
+def _copy_array(cells: Numbering) -> BodyArray:
+    kind = np.dtype(np.int32)
+
+    def block(copy: int, rows: slice) -> Block:
+        return np.full(rows.stop - rows.start, copy, dtype=kind)
+
+    return BodyArray("copy", "cells", kind, (), cells.first, cells.total, block)
 
 
 def fields_in(body: WholeBody, result: Result) -> list[Field]:
@@ -189,16 +219,17 @@ def left_out_of(body: WholeBody, result: Result) -> list[str]:
     return [f.name for f in body.fields if f not in there]
 
 
-def _kept(values: Block, numbering: Numbering, copy: int) -> Block:
+def _kept(values: Block, numbering: Numbering, copy: int, rows: slice) -> Block:
+    """Rows of the sector's `values` among those that `copy` writes."""
     kept = numbering.kept(copy)
-    return values if kept is None else np.take(values, kept, axis=0)
+    return values[rows] if kept is None else np.take(values, kept[rows], axis=0)
 
 
 def _numbers_array(name: str, section: str, numbering: Numbering) -> BodyArray:
     kind = np.dtype(np.int32 if numbering.count < 2**31 else np.int64)
     everything = np.arange(numbering.count, dtype=kind)
     return BodyArray(name, section, kind, (), numbering.first, numbering.total,
-                     lambda g: _kept(everything, numbering, g))  # fmt: skip
+                     lambda g, rows: _kept(everything, numbering, g, rows))  # fmt: skip
 
 
 class _Signed:
@@ -276,9 +307,9 @@ def _field_arrays(body: WholeBody, result: Result, f: Field) -> Iterator[BodyArr
     dtype = f.values(body.cases[result.terms[0][0]].model).dtype
     image = _local_image if isinstance(f.frame, Cylindrical) else _global_image
 
-    def block(copy: int) -> Block:
-        chi = signed.lead(copy)
-        return _as(image(body, f, numbering, signed.values(copy), copy, chi), dtype, f)
+    def block(copy: int, rows: slice) -> Block:
+        values = _kept(signed.values(copy), numbering, copy, rows)
+        return _as(image(body, f, numbering, values, copy, rows, signed.lead(copy)), dtype, f)
 
     yield BodyArray(f.name, f.on, dtype, component_names(f), numbering.first, numbering.total,
                     block, signed.release)  # fmt: skip
@@ -296,48 +327,73 @@ def component_names(f: Field) -> tuple[str, ...]:
     return f.quantity.components
 
 
+@lru_cache(maxsize=64)
+def _action(q: Quantity, Q: bytes, chi: float, follows: str) -> Floats:
+    """``chi(g) * rho(Q)``, kept while the pieces of a copy are computed."""
+    return acting(q, np.frombuffer(Q).reshape(3, 3), chi, follows)
+
+
 def image_values(q: Quantity, Q: Floats, chi: float, follows: str, values: Block) -> Block:
     """The one line: ``chi(g) * rho(Q) * f(x)`` on rows of stored components, (n, k)."""
-    A = acting(q, Q, chi, follows)
+    A = _action(q, Q.tobytes(), chi, follows)
     signs = np.diag(A)
     if np.array_equal(A, np.diag(signs)):
         if (signs == 1.0).all():
             return values
         if (np.abs(signs) == 1.0).all() and not np.issubdtype(values.dtype, np.unsignedinteger):
             return values * signs.astype(values.dtype)
-    return np.asarray(values.astype(float, copy=False) @ A.T)
+    return times(values.astype(float, copy=False), A)
+
+
+def times(values: Floats, A: Floats) -> Floats:
+    """``values @ A.T`` in pieces that stay in the cache and below the size from which BLAS starts
+    threads of its own, which would wait for the writers' threads."""
+    out = np.empty((len(values), len(A)))
+    step = max(1, _BLAS_ALONE // A.size)
+    for row in range(0, len(values), step):
+        np.matmul(values[row : row + step], A.T, out=out[row : row + step])
+    return out
 
 
 def _global_image(
-    body: WholeBody, f: Field, numbering: Numbering, values: Block, copy: int, chi: float
+    body: WholeBody,
+    f: Field,
+    numbering: Numbering,
+    values: Block,
+    copy: int,
+    rows: slice,
+    chi: float,
 ) -> Block:
-    Q = body.group.placements[copy].Q
-    return image_values(f.quantity, Q, chi, f.follows, _kept(values, numbering, copy))
+    return image_values(f.quantity, body.group.placements[copy].Q, chi, f.follows, values)
 
 
 def _local_image(
-    body: WholeBody, f: Field, numbering: Numbering, values: Block, copy: int, chi: float
+    body: WholeBody,
+    f: Field,
+    numbering: Numbering,
+    values: Block,
+    copy: int,
+    rows: slice,
+    chi: float,
 ) -> Block:
     """In a cylindrical frame: one sign matrix off the axis if the placement keeps the axis,
     otherwise to global at the point, on to the copy, and back at the image point."""
     frame, placement = f.frame, body.group.placements[copy]
     assert isinstance(frame, Cylindrical)
-    where = body.mesh.points.astype(float) if f.on == "points" else body.centres
-    kept = numbering.kept(copy)
-    here = where if kept is None else where[kept]
-    mine = _kept(values, numbering, copy)
+    if copy == 0:
+        return values
+    where = body.mesh.points if f.on == "points" else body.centres
+    here = _kept(where, numbering, copy, rows).astype(float)
     local = frame.local_action(placement)
-    everything = np.arange(len(here))
-    general = everything if local is None else np.flatnonzero(frame.radius(here) <= body.on_axis)
-    out = np.asarray(mine, dtype=float)
-    if local is not None:
-        out = np.asarray(image_values(f.quantity, local, chi, f.follows, mine), dtype=float)
-    if len(general) and copy != 0:
-        there = placement.apply(here[general])
-        turned = to_global(f, mine[general], here[general], body.on_axis)
+    if local is None:
+        out, general = np.empty(values.shape), np.arange(len(here))
+    else:
+        image = image_values(f.quantity, local, chi, f.follows, values)
+        out, general = image.astype(float), np.flatnonzero(frame.radius(here) <= body.on_axis)
+    if len(general):
+        turned = to_global(f, values[general], here[general], body.on_axis)
         moved = turned @ acting(f.quantity, placement.Q, chi, f.follows).T
-        out = np.array(out)
-        out[general] = from_global(f, moved, there, body.on_axis)
+        out[general] = from_global(f, moved, placement.apply(here[general]), body.on_axis)
     return out
 
 
@@ -348,13 +404,13 @@ def _derived_array(
     known: dict[tuple[float, tuple[float, ...]], Block] = {}
     lock = Lock()
 
-    def block(copy: int) -> Block:
+    def block(copy: int, rows: slice) -> Block:
         chi = signed.lead(copy) if f.follows == "load" else 1.0
         key = (chi, signed.pattern(copy))
         with lock:
             if key not in known:
                 known[key] = extra.values(f.quantity, chi * signed.values(copy).astype(float))
-        return _kept(known[key].astype(dtype, copy=False), numbering, copy)
+        return _kept(known[key], numbering, copy, rows).astype(dtype, copy=False)
 
     def release() -> None:
         known.clear()

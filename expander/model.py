@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from dataclasses import dataclass, field
+from functools import cached_property
 from pathlib import Path
 
 import numpy as np
@@ -34,6 +35,22 @@ class Mesh:
     @property
     def cell_count(self) -> int:
         return len(self.types)
+
+    @cached_property
+    def bounds(self) -> NDArray[np.float64]:
+        """Lowest and highest coordinates, (2, 3)."""
+        columns = self.points.T  # column by column: numpy reduces rows of three slowly
+        return np.array([[c.min() for c in columns], [c.max() for c in columns]], dtype=float)
+
+    @property
+    def size(self) -> float:
+        """Longest side of the box around the model."""
+        return float((self.bounds[1] - self.bounds[0]).max())
+
+    @property
+    def spacing(self) -> float:
+        """Distance of neighbouring numbers of the coordinates' type, at the largest coordinate."""
+        return float(np.spacing(self.points.dtype.type(np.abs(self.bounds).max())))
 
 
 @dataclass(frozen=True, eq=False)

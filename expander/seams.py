@@ -101,10 +101,8 @@ class Tolerance:
     def __init__(self, mesh: Mesh, given: float | None) -> None:
         self.mesh = mesh
         self.given = given
-        low, high = mesh.points.min(axis=0).astype(float), mesh.points.max(axis=0).astype(float)
-        self.size = float(np.linalg.norm(high - low))
-        largest = mesh.points.dtype.type(max(np.abs(low).max(), np.abs(high).max()))
-        self.spacing = float(OF_SPACING * np.spacing(largest))
+        self.size = float(np.linalg.norm(mesh.bounds[1] - mesh.bounds[0]))
+        self.spacing = OF_SPACING * mesh.spacing
         # No edge is longer than the model, so no node farther away than this can be on a seam.
         self.reach = given if given is not None else max(OF_EDGE * self.size, self.spacing)
 
@@ -147,12 +145,12 @@ def find_seams(mesh: Mesh, group: Group, given_tolerance: float | None) -> Seams
     misses: list[tuple[int, float]] = []
     for g, normal, level in group.mirrors:
         off = np.abs(mesh.points @ normal - level)
-        near = np.flatnonzero(off <= max(tolerance.reach, 1e-2 * tolerance.size))
-        edges_known = near[off[near] <= tolerance.reach]
-        allowed = tolerance.at(edges_known)
-        on = edges_known[2.0 * off[edges_known] <= allowed]
-        found.append((g, on, on, 2.0 * off[on], allowed[2.0 * off[edges_known] <= allowed]))
-        misses += _near_misses(mesh, np.setdiff1d(near, on), off)
+        near = np.flatnonzero(off <= tolerance.reach)
+        allowed = tolerance.at(near)
+        fits = 2.0 * off[near] <= allowed
+        on = near[fits]
+        found.append((g, on, on, 2.0 * off[on], allowed[fits]))
+        misses += _near_misses(mesh, on, off, tolerance)
     if not group.is_reflection_group:
         boundary = boundary_nodes(mesh)
         mirrors = {g for g, _, _ in group.mirrors}
@@ -185,11 +183,17 @@ def find_seams(mesh: Mesh, group: Group, given_tolerance: float | None) -> Seams
     )
 
 
-def _near_misses(mesh: Mesh, nodes: Ints, off: Floats) -> list[tuple[int, float]]:
+def _near_misses(
+    mesh: Mesh, on: Ints, off: Floats, tolerance: Tolerance
+) -> list[tuple[int, float]]:
     """Nodes nearer a plane than a tenth of their edge, yet outside the tolerance."""
-    if not len(nodes):
+    edge = local_edges(mesh, on).max() if len(on) else OF_EDGE * 100 * tolerance.size
+    off = off.copy()
+    off[on] = np.inf
+    near = np.flatnonzero(off < MOST_OF_EDGE * min(edge, tolerance.size))
+    if not len(near):
         return []
-    close = nodes[off[nodes] < MOST_OF_EDGE * local_edges(mesh, nodes)]
+    close = near[off[near] < MOST_OF_EDGE * local_edges(mesh, near)]
     return [(int(n), float(off[n])) for n in close[np.argsort(-off[close])]]
 
 

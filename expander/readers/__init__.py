@@ -7,13 +7,13 @@ program does not wait for libraries that the case does not need.
 
 from __future__ import annotations
 
-import os
 from collections.abc import Callable
 from importlib import import_module
 from pathlib import Path
 
 from expander.errors import InputError
 from expander.model import Model
+from expander.readers.paths import require_file
 
 # extension -> module of this package and function in it, called with the path
 _FORMATS: dict[str, tuple[str, str]] = {
@@ -44,27 +44,8 @@ def read_model(path: Path) -> Model:
         If the file is missing, empty, damaged, or of a format that cannot be read.
     """
     path = Path(path)
-    _require_file(path)
+    require_file(path)
     return _reader(path)(path)
-
-
-def _require_file(path: Path) -> None:
-    try:
-        if path.is_dir():
-            raise InputError(f"{path} is a folder", "Name a result file in it.")
-        if not path.exists():
-            raise InputError(
-                f"{path} does not exist",
-                "Check the spelling; a path in a case file is relative to the case file.",
-            )
-        if not path.is_file():
-            raise InputError(f"{path} is not a regular file", "Name a result file.")
-        if path.stat().st_size == 0:
-            raise InputError(f"{path} is empty", "Write the results again.")
-        if not os.access(path, os.R_OK):
-            raise InputError(f"{path} may not be read", "Change its permissions.")
-    except (OSError, ValueError) as problem:  # too long a name, a zero byte in it
-        raise InputError(f"{path!s:.200} cannot be opened: {problem}", "Check the path.") from None
 
 
 def _reader(path: Path) -> Callable[[Path], Model]:

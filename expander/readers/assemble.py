@@ -8,11 +8,12 @@ from __future__ import annotations
 
 from collections.abc import Iterable, Sequence
 from pathlib import Path
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 
-from expander.errors import InputError
+from expander.errors import InputError, NotYetError
 from expander.model import Mesh, Model
 
 AGAIN = "The file is damaged or incomplete: write it again."
@@ -26,6 +27,8 @@ NODES = {
 # Smallest number of nodes of the types that hold any number of them.
 _AT_LEAST = {2: 1, 4: 2, 6: 3, 7: 3, 36: 4, 41: 1, 42: 4} | dict.fromkeys(range(51, 82), 1)
 
+_POLYHEDRON = 42
+
 # Every VTK type by number: fewest and most nodes; (0, 0) where there is no such type.
 _FEWEST = np.zeros(256, np.int64)
 _MOST = np.zeros(256, np.int64)
@@ -37,10 +40,10 @@ for _type, _count in NODES.items():
 
 def checked_mesh(
     path: Path,
-    points: NDArray[np.generic],
-    connectivity: NDArray[np.generic],
-    offsets: NDArray[np.generic],
-    types: NDArray[np.generic],
+    points: NDArray[Any],
+    connectivity: NDArray[Any],
+    offsets: NDArray[Any],
+    types: NDArray[Any],
 ) -> Mesh:
     """A mesh whose numbers can be trusted.
 
@@ -67,14 +70,14 @@ def checked_mesh(
             AGAIN,
         )
 
-    connectivity = np.ascontiguousarray(connectivity, dtype=np.int64)
+    nodes = np.ascontiguousarray(connectivity, dtype=np.int64)
     offsets = np.ascontiguousarray(offsets, dtype=np.int64)
     types = np.ascontiguousarray(types, dtype=np.uint8)
     sizes = np.diff(offsets)
-    if len(sizes) != len(types) or offsets[0] != 0 or offsets[-1] != len(connectivity):
+    if len(sizes) != len(types) or offsets[0] != 0 or offsets[-1] != len(nodes):
         raise InputError(
             f"{path}: {len(types)} cell types, {len(offsets)} cell offsets ending at "
-            f"{offsets[-1] if len(offsets) else 'nothing'} and {len(connectivity)} node numbers "
+            f"{offsets[-1] if len(offsets) else 'nothing'} and {len(nodes)} node numbers "
             "do not fit together",
             AGAIN,
         )
@@ -86,6 +89,11 @@ def checked_mesh(
         raise InputError(
             f"{path}: cell {cell} has type {types[cell]}, which is no VTK cell type", AGAIN
         )
+    if (types == _POLYHEDRON).any():
+        raise NotYetError(
+            f"{path}: cell {int(np.argmax(types == _POLYHEDRON))} is a polyhedron",
+            "Cells given by their faces come later.",
+        )
     wrong = (sizes < _FEWEST[types]) | (sizes > _MOST[types])
     if wrong.any():
         cell = int(np.argmax(wrong))
@@ -94,16 +102,16 @@ def checked_mesh(
             f"not {_FEWEST[types[cell]]}",
             AGAIN,
         )
-    if connectivity.min() < 0 or connectivity.max() >= len(points):
-        stray = (connectivity < 0) | (connectivity >= len(points))
+    if nodes.min() < 0 or nodes.max() >= len(points):
+        stray = (nodes < 0) | (nodes >= len(points))
         place = int(np.argmax(stray))
         cell = int(np.searchsorted(offsets, place, side="right")) - 1
         raise InputError(
-            f"{path}: cell {cell} uses node {connectivity[place]}, "
+            f"{path}: cell {cell} uses node {nodes[place]}, "
             f"but the nodes are 0 to {len(points) - 1}",
             AGAIN,
         )
-    return Mesh(points, connectivity, offsets, types)
+    return Mesh(points, nodes, offsets, types)
 
 
 def checked_arrays(

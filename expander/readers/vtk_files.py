@@ -1,15 +1,15 @@
 """VTK's own files: .vtu, .vtp and the older .vtk, through VTK's readers.
 
-Only the three VTK modules that are needed are imported. What VTK would print is caught
-and becomes the reason of the error. A damaged file is stopped before VTK sees it where
-VTK would crash, ask for absurd memory or quietly lose arrays (see ``vtk_xml_guard`` and
-``vtk_legacy_guard``).
+Only the few VTK modules that are needed are imported. What VTK would print is caught and
+becomes the reason of the error. A damaged file is stopped before VTK sees it where VTK
+would crash, ask for absurd memory or quietly lose arrays: see ``vtk_xml_guard`` and
+``vtk_legacy_guard``. What VTK hands over is checked again in ``assemble``.
 """
 
 from __future__ import annotations
 
 import re
-from collections.abc import Iterator
+from collections.abc import Iterator, Mapping, Sequence
 from contextlib import contextmanager
 from pathlib import Path
 from typing import Any
@@ -17,55 +17,47 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 from vtkmodules.util.numpy_support import vtk_to_numpy
-from vtkmodules.vtkCommonCore import vtkLogger, vtkOutputWindow, vtkStringOutputWindow
+from vtkmodules.vtkCommonCore import (
+    vtkLogger,
+    vtkOutputWindow,
+    vtkStringOutputWindow,
+    vtkUnsignedCharArray,
+)
 from vtkmodules.vtkIOLegacy import vtkPolyDataReader, vtkUnstructuredGridReader
 from vtkmodules.vtkIOXML import vtkXMLPolyDataReader, vtkXMLUnstructuredGridReader
 
 from expander.errors import InputError
 from expander.model import Mesh, Model
-from expander.readers import assemble, vtk_xml_guard
+from expander.readers import assemble, vtk_legacy_guard, vtk_xml_guard
+from expander.readers.vtk_declared import Declared
 
 Array = NDArray[np.generic]
 
 
 def read_vtu(path: Path) -> Model:
     """The model in an XML file of an unstructured grid."""
-    return _grid_model(path, _xml_output(vtkXMLUnstructuredGridReader(), path, "UnstructuredGrid"))
+    with _silence():
+        declared = vtk_xml_guard.check(path, "UnstructuredGrid")
+    return _grid_model(path, _xml_output(vtkXMLUnstructuredGridReader(), path, declared), declared)
 
 
 def read_vtp(path: Path) -> Model:
     """The model in an XML file of polygons, lines and vertices."""
-    return _polydata_model(path, _xml_output(vtkXMLPolyDataReader(), path, "PolyData"))
-
-
-def _xml_output(reader: Any, path: Path, kind: str) -> Any:
     with _silence():
-        declared = vtk_xml_guard.check(path, kind)
-    output = _output(reader, path, declared)
-    return output
+        declared = vtk_xml_guard.check(path, "PolyData")
+    return _polydata_model(path, _xml_output(vtkXMLPolyDataReader(), path, declared), declared)
 
 
 def read_legacy(path: Path) -> Model:
     """The model in a legacy file, an unstructured grid or polygonal data."""
-    with path.open("rb") as file:
-        head = file.read(4096)
-    found = re.search(rb"^\s*DATASET\s+(\w+)", head, re.MULTILINE | re.IGNORECASE)
-    kind = found[1].decode().upper() if found else "none"
-    if kind == "UNSTRUCTURED_GRID":
-        return _grid_model(path, _output(_all_arrays(vtkUnstructuredGridReader()), path))
-    if kind == "POLYDATA":
-        return _polydata_model(path, _output(_all_arrays(vtkPolyDataReader()), path))
-    raise InputError(
-        f"{path}: the data set is {kind}",
-        "Write an unstructured grid (UNSTRUCTURED_GRID) or polygonal data (POLYDATA).",
-    )
-
-
-def _all_arrays(reader: Any) -> Any:
-    """A legacy reader that keeps every array, not only the first of each kind."""
+    declared = vtk_legacy_guard.check(path)
+    grid = declared.kind == "UNSTRUCTURED_GRID"
+    reader = vtkUnstructuredGridReader() if grid else vtkPolyDataReader()
+    # without this only the first array of each kind would come
     for kind in ("Scalars", "Vectors", "Normals", "Tensors", "ColorScalars", "TCoords", "Fields"):
         getattr(reader, f"ReadAll{kind}On")()
-    return reader
+    output = _output(reader, path)
+    return (_grid_model if grid else _polydata_model)(path, output, declared)
 
 
 @contextmanager
@@ -82,15 +74,26 @@ def _silence() -> Iterator[Any]:
         vtkOutputWindow.SetInstance(before)
 
 
-def _output(reader: Any, path: Path, declared: Any=None) -> Any:
+def _xml_output(reader: Any, path: Path, declared: Declared) -> Any:
+    def leave_out_texts() -> None:
+        """VTK reads beyond its memory where a text has no end, so it is not to read them."""
+        reader.UpdateInformation()
+        for place, selection in (
+            ("point", reader.GetPointDataArraySelection()),
+            ("cell", reader.GetCellDataArraySelection()),
+        ):
+            for name in declared.texts[place]:
+                selection.DisableArray(name)
+
+    return _output(reader, path, leave_out_texts)
+
+
+def _output(reader: Any, path: Path, prepare: Any = None) -> Any:
     """The data set that a VTK reader makes of the file; any complaint of VTK is an error."""
     with _silence() as window:
         reader.SetFileName(str(path))
-        if declared is not None:
-            reader.UpdateInformation()
-            for section in ("Point", "Cell"):
-                for name in declared.texts[section+"Data"]:
-                    getattr(reader, f"Get{section}DataArraySelection")().DisableArray(name)
+        if prepare:
+            prepare()
         reader.Update()
         output = reader.GetOutput()
         complaint = window.GetOutput()
@@ -104,12 +107,16 @@ def _reason(complaint: str) -> str:
     for line in complaint.splitlines():
         text = re.sub(r"^\w+ \(0x[0-9a-f]+\): ", "", line).strip()
         if text and not text.startswith(("ERROR:", "Warning:", "Generic Warning:")):
-            return text.rstrip(".")
+            return text.rstrip(".!")
     return "VTK gives no reason"
 
 
 def _numpy(array: Any) -> Array:
-    """A VTK array as a numpy view (n, k) or (n,); the view keeps the VTK array alive."""
+    """A VTK array as a numpy view (n,) or (n, k); the view keeps the VTK array alive."""
+    if array.IsA("vtkBitArray"):
+        bytewise = vtkUnsignedCharArray()
+        bytewise.DeepCopy(array)
+        array = bytewise
     values: Array = np.asarray(vtk_to_numpy(array))
     return values
 
@@ -129,7 +136,7 @@ def _points(output: Any) -> Array:
     return np.zeros((0, 3)) if points is None else _numpy(points.GetData()).reshape(-1, 3)
 
 
-def _grid_model(path: Path, grid: Any) -> Model:
+def _grid_model(path: Path, grid: Any, declared: Declared) -> Model:
     connectivity, offsets = _cells(grid.GetCells())
     if len(offsets) == 1:
         types: Array = np.zeros(0, np.uint8)
@@ -139,56 +146,61 @@ def _grid_model(path: Path, grid: Any) -> Model:
         except TypeError:  # before VTK 9.6
             types = _numpy(grid.GetCellTypesArray())
     mesh = assemble.checked_mesh(path, _points(grid), connectivity, offsets, types)
-    return _model(path, mesh, grid)
+    return _model(path, mesh, grid, declared)
 
 
-def _polydata_model(path: Path, data: Any) -> Model:
-    # cell data follow this order: vertices, lines, polygons, strips
-    parts = [
-        (data.GetVerts(), {1: 1}, 2),
-        (data.GetLines(), {2: 3}, 4),
-        (data.GetPolys(), {3: 5, 4: 9}, 7),
-        (data.GetStrips(), {}, 6),
-    ]
-    connectivities, ends, types = [], [np.zeros(1, np.int64)], []
-    for cells, type_of_size, otherwise in parts:
-        connectivity, offsets = _cells(cells)
-        sizes = np.diff(offsets)
-        kinds = np.full(len(sizes), otherwise, np.uint8)
-        for size, kind in type_of_size.items():
-            kinds[sizes == size] = kind
-        ends.append(offsets[1:] + ends[-1][-1] if len(sizes) else ends[-1][-1:][:0])
-        if not len(ends[-1]):
-            ends.pop()
+# Cells of polygonal data in the order of their cell data: the types of certain sizes, and
+# the type of any other size.
+_POLYDATA: Sequence[tuple[str, Mapping[int, int], int]] = (
+    ("GetVerts", {1: 1}, 2),
+    ("GetLines", {2: 3}, 4),
+    ("GetPolys", {3: 5, 4: 9}, 7),
+    ("GetStrips", {}, 6),
+)
+
+
+def _polydata_model(path: Path, data: Any, declared: Declared) -> Model:
+    connectivities, sizes, types = [], [], []
+    for method, type_of_size, otherwise in _POLYDATA:
+        connectivity, offsets = _cells(getattr(data, method)())
+        size = np.diff(offsets)
+        kind = np.full(len(size), otherwise, np.uint8)
+        for nodes, vtk_type in type_of_size.items():
+            kind[size == nodes] = vtk_type
         connectivities.append(connectivity)
-        types.append(kinds)
+        sizes.append(size)
+        types.append(kind)
+    offsets = np.concatenate([[0], np.cumsum(np.concatenate(sizes))])
     mesh = assemble.checked_mesh(
-        path,
-        _points(data),
-        np.concatenate(connectivities),
-        np.concatenate(ends),
-        np.concatenate(types),
+        path, _points(data), np.concatenate(connectivities), offsets, np.concatenate(types)
     )
-    return _model(path, mesh, data)
+    return _model(path, mesh, data, declared)
 
 
-def _model(path: Path, mesh: Mesh, output: Any) -> Model:
-    notes: list[str] = []
-    points = _arrays(path, "point", output.GetPointData(), notes)
-    cells = _arrays(path, "cell", output.GetCellData(), notes)
+def _model(path: Path, mesh: Mesh, output: Any, declared: Declared) -> Model:
+    notes = list(declared.notes)
+    points = _arrays(path, "point", output.GetPointData(), declared, notes)
+    cells = _arrays(path, "cell", output.GetCellData(), declared, notes)
     return assemble.model(path, mesh, points, cells, notes)
 
 
-def _arrays(path: Path, place: str, data: Any, notes: list[str]) -> list[tuple[str, Array]]:
+def _arrays(
+    path: Path, place: str, data: Any, declared: Declared, notes: list[str]
+) -> list[tuple[str, Array]]:
     """Name and values of each numeric array of a VTK attribute set; notes on the others."""
+    notes += [
+        f"The {place} array '{name}' holds text and was left out." for name in declared.texts[place]
+    ]
     found: list[tuple[str, Array]] = []
+    delivered = set()
     for index in range(data.GetNumberOfArrays()):
         array = data.GetAbstractArray(index)
         name = array.GetName()
+        delivered.add(name)
         if not name:
             notes.append(f"A {place} array without a name was left out.")
         elif not array.IsA("vtkDataArray"):
-            notes.append(f"The {place} array '{name}' holds text and was left out.")
+            continue
         elif name in ("vtkGhostType", "vtkGhostLevels"):
             if _numpy(array).any():
                 raise InputError(
@@ -198,4 +210,7 @@ def _arrays(path: Path, place: str, data: Any, notes: list[str]) -> list[tuple[s
             notes.append(f"The {place} array '{name}' marks nothing and was left out.")
         else:
             found.append((name, _numpy(array)))
+    lost = [name for name in declared.names[place] if name not in delivered]
+    if lost:
+        raise InputError(f"{path}: the {place} array '{lost[0]}' cannot be read", assemble.AGAIN)
     return found

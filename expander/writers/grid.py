@@ -24,8 +24,8 @@ def build_grid(arrays: Iterable[BodyArray], field_data: FieldData) -> pyvista.Un
     listed = list(arrays)
     for array in listed:
         values = np.empty((array.rows, array.width), dtype=array.dtype)
-        for copy, row in array.first.items():
-            block = np.asarray(array.block(copy)).reshape(-1, array.width)
+        for copy, row, rows in array.pieces(array.nbytes + 1):
+            block = np.asarray(array.block(copy, rows)).reshape(-1, array.width)
             values[row : row + len(block)] = block
         array.release()
         whole[array.section, array.name] = values if array.components else values[:, 0]

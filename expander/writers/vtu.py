@@ -30,6 +30,7 @@ _VTK_TYPES = {
     "float64": "Float64",
 }  # fmt: skip
 _MOST_WORKERS = 4
+_PIECE = 1 << 20  # bytes computed and written at a time; small enough for the cache
 _END = b"\n  </AppendedData>\n</VTKFile>\n"
 
 
@@ -70,8 +71,8 @@ def _stream(
 ) -> None:
     """Compute and write all blocks, array after array, with a bounded number in flight."""
 
-    def task(array: BodyArray, copy: int, at: int) -> int:
-        block = np.ascontiguousarray(array.block(copy), dtype=array.dtype)
+    def task(array: BodyArray, copy: int, rows: slice, at: int) -> int:
+        block = np.ascontiguousarray(array.block(copy, rows), dtype=array.dtype)
         _write_at(descriptor, block.reshape(-1).view(np.uint8).data, at)
         return block.nbytes
 
@@ -81,12 +82,12 @@ def _stream(
         try:
             for array, start in zip(arrays, starts, strict=True):
                 width = array.width * array.dtype.itemsize
-                for copy, row in array.first.items():
+                for copy, row, rows in array.pieces(_PIECE):
                     if len(running) >= 2 * count:
                         done, running = wait(running, return_when=FIRST_COMPLETED)
                         for future in done:
                             advance(future.result())
-                    running.add(pool.submit(task, array, copy, start + 8 + row * width))
+                    running.add(pool.submit(task, array, copy, rows, start + 8 + row * width))
                 done, running = wait(running)
                 for future in done:
                     advance(future.result())
