@@ -12,6 +12,8 @@ from rich.progress import BarColumn, DownloadColumn, TaskID, TextColumn, TimeEla
 from rich.progress import Progress as Bar
 from rich.table import Table
 
+_FILE_WIDTH = 110  # characters, where no terminal says how wide it is
+
 
 class Progress:
     """A progress bar on the error stream; quiet when that is no terminal."""
@@ -54,7 +56,9 @@ class Progress:
 
 def print_summary(found: dict[str, Any]) -> None:
     """The short table of an expansion."""
-    console = Console(highlight=False, soft_wrap=False)
+    console = Console(highlight=False)
+    if not console.is_terminal:
+        console.width = _FILE_WIDTH
     points, cells = found["points"], found["cells"]
     facts = Table.grid(padding=(0, 2))
     facts.add_column(style="bold")
@@ -83,6 +87,10 @@ def print_summary(found: dict[str, Any]) -> None:
     )
     console.print(facts)
     console.print(_field_table(found))
+    signs = _sign_table(found)
+    if signs is not None:
+        console.print("components that change sign across a cut plane")
+        console.print(signs)
     for result in found["results"]:
         terms = " + ".join(f"{a:g} {name}" for name, a in result["terms"].items())
         mark = "wrote" if found["written"] else "would write"
@@ -98,20 +106,31 @@ def print_summary(found: dict[str, Any]) -> None:
 
 
 def _field_table(found: dict[str, Any]) -> Table:
-    planes = [p["name"] for p in found["planes"]]
     table = Table(box=box.SIMPLE_HEAD, pad_edge=False)
-    for heading in ("field", "on", "kind", "decided", "follows", "seam"):
+    for heading in ("field", "on", "kind", "decided", "follows", "at seams"):
         table.add_column(heading, overflow="fold")
-    several = len(found["cases"]) > 1
-    for plane in planes:
-        table.add_column(f"changes sign across {plane}", overflow="fold")
     for f in found["fields"]:
-        row = [f["name"], f["on"], f["kind"], f["decided"], f["follows"], f["seam"]]
-        for plane in planes:
-            words = {case: signs[plane] for case, signs in f["changes_sign"].items()}
-            if len(set(words.values())) == 1 or not several:
-                row.append(next(iter(words.values())))
-            else:
-                row.append("; ".join(f"{case}: {w}" for case, w in words.items()))
+        seam = f["seam"] if f["on"] == "points" or f["seam"] == "sum" else "-"
+        row = (f["name"], f["on"], f["kind"], f["decided"], f["follows"], seam)
         table.add_row(*(escape(cell) for cell in row))
+    return table
+
+
+def _sign_table(found: dict[str, Any]) -> Table | None:
+    """Which components change sign across each cut plane, a column for each plane and case."""
+    planes = [p["name"] for p in found["planes"]]
+    cases = [c["name"] for c in found["cases"]]
+    if not planes:
+        return None
+    table = Table(box=box.SIMPLE_HEAD, pad_edge=False)
+    table.add_column("field", overflow="fold")
+    columns = [(plane, case) for plane in planes for case in cases]
+    for plane, case in columns:
+        table.add_column(escape(f"{plane}, {case}" if len(cases) > 1 else plane), overflow="fold")
+    for f in found["fields"]:
+        if f["kind"] == "label":
+            continue
+        words = [f["changes_sign"][case][plane] for plane, case in columns]
+        shown = [{"none": "-", "mixed": "combined", "sign": "its sign"}.get(w, w) for w in words]
+        table.add_row(*(escape(cell) for cell in [f["name"], *shown]))
     return table

@@ -91,7 +91,7 @@ class _Numbering:
 
 def _numbering(table: Table, present: Mapping[str, Array], count: int) -> _Numbering:
     """The model's own numbers if it has any, otherwise counting from 0 or from 1."""
-    lower = {name.lower(): name for name in reversed(present)}
+    lower = {name.lower(): name for name in reversed(list(present))}
     for candidate in _NUMBERS[table.key]:
         name = lower.get(candidate, "")
         values = present.get(name)
