@@ -124,14 +124,19 @@ def prepare(
         If a primary field does not close along a seam (exit status 1).
     """
     group = _group(case)
-    step("reading")
     tables = case.case or [CaseTable(name="result")]
+    behaviours = [_behaviour(case, t) for t in tables]
+    signs = [factors(group, b) for b in behaviours]
+    step("reading")
     models = _models(case, tables, allow_nan)
     mesh = models[0].mesh
     _check_mesh(models[0])
     for name, model in zip([t.name for t in tables][1:], models[1:], strict=True):
         _check_same_mesh(models[0], model, name)
-    cases = tuple(_load_case(case, t, m, group) for t, m in zip(tables, models, strict=True))
+    cases = tuple(
+        LoadCase(t.name, m, b, chi, t.factor)
+        for t, m, b, chi in zip(tables, models, behaviours, signs, strict=True)
+    )
     results = _results(case, cases)
     _check_linear(case, cases)
     odd = any(c.chi.min() < 0 for c in cases)
@@ -140,7 +145,7 @@ def prepare(
                               for n, t in case.frames.items()})  # fmt: skip
     fields, left_out = fields_of(models[0], case, frames, skip_undeclared, odd)
     notes += left_out
-    check_shear(fields, [p.Q for p in group.placements])
+    check_shear(fields, group.placements)
     for c in cases:
         if c.chi.min() < 0:
             check_load_odd(fields, c.name)
@@ -163,10 +168,11 @@ def prepare(
     resolved = _resolved(mesh, fields, cases, nodes, group, "points")
     openings = check_closing(mesh, group, fields, cases, nodes, resolved, case.seam.limit,
                              keep_apart=case.seam.open == "keep apart")  # fmt: skip
-    kept_apart = np.union1d(kept_apart, [n for o in openings for n in o.nodes]).astype(np.int64)
+    opened = sorted({n for o in openings for n in o.nodes})
+    kept_apart = np.union1d(kept_apart, opened).astype(np.int64)
     if openings:
         notes.append(
-            f"the seam is open at {len(kept_apart)} nodes, which were kept apart "
+            f"the seam is open at {len(opened)} nodes, which were kept apart "
             '(seam.open = "keep apart"); their values are the sector\'s own'
         )
     if not case.output.merge:
@@ -273,7 +279,7 @@ def _check_same_mesh(first: Model, other: Model, name: str) -> None:
     )
 
 
-def _load_case(case: CaseFile, table: CaseTable, model: Model, group: Group) -> LoadCase:
+def _behaviour(case: CaseFile, table: CaseTable) -> Behaviour:
     words: dict[str, str] = {}
     for name, mirror in zip(plane_names(case), case.mirror, strict=True):
         given = table.load if isinstance(table.load, str) else table.load.get(name)
@@ -282,8 +288,7 @@ def _load_case(case: CaseFile, table: CaseTable, model: Model, group: Group) -> 
     if case.cyclic is not None:
         own = table.nodal_diameters
         h = case.cyclic.nodal_diameters if own is None else own
-    behaviour = Behaviour(words, h)
-    return LoadCase(table.name, model, behaviour, factors(group, behaviour), table.factor)
+    return Behaviour(words, h)
 
 
 def _results(case: CaseFile, cases: tuple[LoadCase, ...]) -> tuple[Result, ...]:

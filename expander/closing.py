@@ -59,9 +59,11 @@ def check_closing(
                 continue
             values = f.values(case.model)
             # A component bounds the length from below, and costs less than all lengths.
-            if float(found.jumps.max()) <= limit * max(0.0, float(np.nanmax(values))):
+            bound = float(np.fmax.reduce(values, axis=None, initial=0.0))
+            if np.isfinite(bound) and float(found.jumps.max()) <= limit * bound:
                 continue
-            largest = float(np.nanmax(np.linalg.norm(values.astype(float), axis=1), initial=0.0))
+            lengths = np.linalg.norm(values.astype(float), axis=1)
+            largest = float(lengths[np.isfinite(lengths)].max(initial=0.0))
             open_ = found.jumps > limit * largest
             if not open_.any():
                 continue

@@ -12,7 +12,7 @@ from expander.casefile import CaseFile, FieldTable
 from expander.errors import InputError, NotYetError
 from expander.frames import Cylindrical, Frame, Global
 from expander.model import Model
-from expander.placements import Floats
+from expander.placements import Floats, Placement
 from expander.quantities import Quantity, quantity
 from expander.tradewords import stress_odd, trade_word
 
@@ -125,6 +125,8 @@ def fields_of(
                 continue
             size = 1 if array.ndim == 1 else array.shape[1]
             word = None if name in other else trade_word(name, size)
+            if word is not None and odd and word.kind == "scalar" and word.follows == "load":
+                word = None  # whether it changes sign must be said, not guessed
             clash = name in ADDED_ARRAYS or any(f.name == name for f in fields)
             if word is not None and not clash:
                 fields.append(_by_name(name, on, array, size, frames["global"]))
@@ -282,21 +284,24 @@ def _undeclared(model: Model, unknown: list[tuple[str, str, int]], odd: bool) ->
     )
 
 
-def check_shear(fields: Iterable[Field], Qs: Iterable[Floats]) -> None:
+def check_shear(fields: Iterable[Field], placements: Iterable[Placement]) -> None:
     """Refuse an assumed shear word where tensor and engineering shear would differ."""
-    matrices = list(Qs)
+    copies = list(placements)
     for field in fields:
         if field.kind != "symmetric tensor" or not field.shear_assumed:
             continue
-        if "strain" not in field.name.lower() or isinstance(field.frame, Cylindrical):
+        if "strain" not in field.name.lower():
             continue
         other = replace(field.quantity, engineering=True)
-        if any(np.abs(field.quantity.matrix(Q) - other.matrix(Q)).max() > 1e-12 for Q in matrices):
-            raise InputError(
-                f"Field {field.name!r}: shear strain may be stored as tensor or as engineering "
-                "shear, and on these copies the two differ.",
-                f'Add shear = "tensor" or shear = "engineering" under [fields.{field.name}].',
-            )
+        for g in copies:
+            local = field.frame.local_action(g) if isinstance(field.frame, Cylindrical) else None
+            Q = g.Q if local is None else local
+            if np.abs(field.quantity.matrix(Q) - other.matrix(Q)).max() > 1e-12:
+                raise InputError(
+                    f"Field {field.name!r}: shear strain may be stored as tensor or as "
+                    "engineering shear, and on these copies the two differ.",
+                    f'Add shear = "tensor" or shear = "engineering" under [fields.{field.name}].',
+                )
 
 
 def check_load_odd(fields: Iterable[Field], case_name: str) -> None:

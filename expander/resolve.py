@@ -92,7 +92,8 @@ def resolve(
         terms[rows] = own[source[rows]] @ A.T
     apart = np.linalg.norm(terms - own[classes.row], axis=1)
     farthest = _largest(apart, classes)
-    jumps = np.nan_to_num(apart[farthest], nan=0.0)
+    # Values that are not finite were accepted and counted before; they show no jump.
+    jumps = np.nan_to_num(apart[farthest], nan=0.0, posinf=0.0)
     patch = None
     if field.seam == "sum":
         patch = np.add.reduceat(terms, classes.starts, axis=0)
@@ -109,7 +110,7 @@ def resolve(
 
 def _largest(apart: Floats, classes: Classes) -> NDArray[np.int64]:
     """Entry with the largest distance of each class, (s,)."""
-    key = np.nan_to_num(apart, nan=-1.0)
+    key = np.nan_to_num(apart, nan=-1.0, posinf=-1.0)
     order = np.lexsort((key, classes.row))
     last = np.append(classes.starts[1:], len(apart)) - 1
     return np.asarray(order[last])

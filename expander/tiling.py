@@ -14,7 +14,7 @@ from expander.groups import Group, direction_words
 from expander.model import Mesh
 from expander.placements import Floats
 from expander.seams import Seams, Tolerance
-from expander.topology import Ints, boundary_nodes, cell_sizes
+from expander.topology import Ints, boundary_nodes, cell_centres, local_edges
 
 _SAMPLES = 400
 
@@ -43,21 +43,16 @@ def _cut(mesh: Mesh, group: Group, g: int, side: Floats, wrong: Ints) -> InputEr
         f"{len(wrong)} of {mesh.point_count} nodes lie on the other side; the farthest is node "
         f"{worst} at ({_at(mesh, worst)}), {-side[worst]:.6g} beyond the plane."
     )
-    names = [p.name for p in group.planes if p.placement.plane() is not None]
-    for plane in group.planes:
-        own = plane.placement.plane()
-        this = group.placements[g].plane()
-        if (
-            own
-            and this
-            and np.abs(np.outer(own[0], own[0]) - np.outer(this[0], this[0])).max() < (1e-9)
-        ):
-            return InputError(
-                f"The model has nodes on both sides of plane {plane.name!r}. {found}",
-                "Expected the model on one side of each cut plane; check mirror.normal and "
-                "mirror.point, or cut the model.",
-            )
-    normal = direction_words(group.mirrors[[m[0] for m in group.mirrors].index(g)][1])
+    name = _plane_words(group, g)
+    if name.startswith("plane"):
+        return InputError(
+            f"The model has nodes on both sides of {name}. {found}",
+            "Expected the model on one side of each cut plane; check mirror.normal and "
+            "mirror.point, or cut the model; nodes that are only slightly off are taken as on "
+            "the plane with a larger seam.tolerance.",
+        )
+    names = [p.name for p in group.planes]
+    normal = direction_words(next(n for k, n, _ in group.mirrors if k == g))
     angle = ""
     if len(group.planes) >= 2 and group.axis is None:
         a, b = group.planes[:2]
@@ -86,28 +81,31 @@ def _at(mesh: Mesh, node: int) -> str:
 
 
 def check_touch(mesh: Mesh, group: Group, seams: Seams, given: float | None) -> list[str]:
-    """Refuse a model that almost touches a cut plane; notes on planes that it stays clear of."""
+    """Refuse a model that almost touches a cut plane; notes on planes that it stays clear of.
+
+    The planes are those that bound the copies next to the model, declared or implied.
+    """
     notes = []
     tolerance = Tolerance(mesh, given)
-    for plane in group.planes:
-        own = plane.placement.plane()
-        if own is None:
+    for g in _walls(group, mesh):
+        if seams.pairs.get(g):
             continue
-        copy = next(g for g, n, _ in group.mirrors if _parallel(n, own[0]))
-        if seams.pairs.get(copy):
-            continue
-        off = np.abs(mesh.points @ own[0] - own[1])
+        normal, level = next((n, d) for k, n, d in group.mirrors if k == g)
+        off = np.abs(mesh.points @ normal - level)
         node = int(np.argmin(off))
-        edge = float(np.minimum(_edge(mesh, node), tolerance.size))
+        edge = float(min(local_edges(mesh, np.array([node]))[0], tolerance.size))
+        name = _plane_words(group, g)
         if off[node] < edge:
             raise InputError(
-                f"No node lies on plane {plane.name!r}: the nearest is node {node} at "
+                f"No node lies on {name}: the nearest is node {node} at "
                 f"({_at(mesh, node)}), {off[node]:.6g} away, less than its edge of {edge:.6g}.",
                 f"Move the plane (mirror.point), or give a seam.tolerance over "
                 f"{2 * off[node]:.3g} if the nodes are off.",
             )
+        if group.axis is not None and abs(float(normal @ group.axis.axis)) < 1e-6:
+            _check_half_sector(mesh, group)
         notes.append(
-            f"the model stays clear of plane {plane.name!r} (nearest: node {node}, "
+            f"the model stays clear of {name} (nearest: node {node}, "
             f"{off[node]:.6g} away): its copies do not touch there"
         )
     if seams.near_misses:
@@ -121,14 +119,62 @@ def check_touch(mesh: Mesh, group: Group, seams: Seams, given: float | None) -> 
     return notes
 
 
+def _walls(group: Group, mesh: Mesh) -> list[int]:
+    """Mirrors (copy numbers) that bound the region of the model: the first that rays from it hit.
+
+    A ray that leaves the region crosses one of its walls first; enough rays meet every wall.
+    """
+    if not group.mirrors:
+        return []
+    normals = np.array([n for _, n, _ in group.mirrors])
+    levels = np.array([d for _, _, d in group.mirrors])
+    start = mesh.points[np.linspace(0, mesh.point_count - 1, 500).astype(np.int64)].mean(axis=0)
+    rays = np.random.default_rng(23).normal(size=(4096, 3))
+    with np.errstate(divide="ignore", invalid="ignore"):
+        ahead = (levels - normals @ start)[:, None] / (normals @ rays.T)
+    ahead[~(ahead > 0.0)] = np.inf
+    first = np.unique(np.argmin(ahead, axis=0)[np.isfinite(ahead.min(axis=0))])
+    return [group.mirrors[k][0] for k in first.tolist()]
+
+
+def _plane_words(group: Group, g: int) -> str:
+    normal = next(n for k, n, _ in group.mirrors if k == g)
+    for plane in group.planes:
+        own = plane.placement.plane()
+        if own is not None and _parallel(own[0], normal):
+            return f"plane {plane.name!r}"
+    return f"the implied cut plane with normal {direction_words(normal)}"
+
+
+def _check_half_sector(mesh: Mesh, group: Group) -> None:
+    """Refuse a half-sector whose plane faces lie at another angle than 180/N."""
+    assert group.axis is not None
+    points = mesh.points.astype(float) - group.axis.point
+    height = points @ group.axis.axis
+    radial = points - np.outer(height, group.axis.axis)
+    radius = np.linalg.norm(radial, axis=1)
+    off_axis = radius > 1e-6 * radius.max()
+    middle = radial[off_axis].mean(axis=0)
+    middle /= np.linalg.norm(middle)
+    across = np.cross(group.axis.axis, middle)
+    theta = np.rad2deg(np.arctan2(radial[off_axis] @ across, radial[off_axis] @ middle))
+    low, high = float(theta.min()), float(theta.max())
+    on_faces = min((theta < low + 1e-6).sum(), (theta > high - 1e-6).sum())
+    span = high - low
+    if on_faces < 3 or abs(span - group.axis.degrees / 2) < 1e-4 * span:
+        return
+    n = 180.0 / span
+    fit = f" sectors = {round(n)} would fit." if abs(n - round(n)) < 1e-3 * n else ""
+    raise InputError(
+        f"The model lies between two planes through the axis {span:.6g} degrees apart, but "
+        f"cyclic.sectors = {group.axis.sectors} with a cut plane through the axis asks for half "
+        f"a sector, {group.axis.degrees / 2:.6g} degrees.{fit}",
+        "Correct cyclic.sectors, or the planes.",
+    )
+
+
 def _parallel(a: Floats, b: Floats) -> bool:
     return bool(np.abs(np.outer(a, a) - np.outer(b, b)).max() < 1e-9)
-
-
-def _edge(mesh: Mesh, node: int) -> float:
-    from expander.topology import local_edges
-
-    return float(local_edges(mesh, np.array([node]))[0])
 
 
 def check_turns(mesh: Mesh, group: Group, seams: Seams, given: float | None) -> list[str]:
@@ -139,9 +185,9 @@ def check_turns(mesh: Mesh, group: Group, seams: Seams, given: float | None) -> 
     if group.is_reflection_group:
         return []
     turned = [g for g in range(1, len(group)) if not group.placements[g].mirrored]
-    touching = sum(seams.pairs.get(g, 0) for g in turned if g in seams.pairs) - _on_axis(
-        mesh, group, seams
-    )
+    nodes = seams.nodes
+    by_turn = np.array([not p.mirrored for p in group.placements])[nodes.via]
+    touching = bool((by_turn & (nodes.item != nodes.source)).any())  # on the axis says nothing
     angle = _face_angle(mesh, group, given) if group.axis is not None else None
     expected = group.axis.degrees if group.axis is not None else 0.0
     agrees = angle is not None and abs(angle - expected) < 1e-4 * expected
@@ -164,13 +210,6 @@ def check_turns(mesh: Mesh, group: Group, seams: Seams, given: float | None) -> 
         return []
     return ["no node of one sector meets a node of another: the turned copies do not touch, "
             "nothing was merged between them"]  # fmt: skip
-
-
-def _on_axis(mesh: Mesh, group: Group, seams: Seams) -> int:
-    """Pairs of a node with itself, which say nothing about the sector's faces."""
-    own = (seams.nodes.item == seams.nodes.source) & (seams.nodes.via > 0)
-    turned = np.array([not p.mirrored for p in group.placements])
-    return int(np.count_nonzero(own & turned[seams.nodes.via]))
 
 
 def _wrong_angle(group: Group, angle: float) -> InputError:
@@ -252,8 +291,7 @@ def _overlap(mesh: Mesh, group: Group, copies: list[int]) -> tuple[int, int] | N
     locator.SetDataSet(grid)
     locator.BuildLocator()
     sample = np.unique(np.linspace(0, mesh.cell_count - 1, _SAMPLES).astype(np.int64))
-    sums = np.add.reduceat(mesh.points[mesh.connectivity].astype(float), mesh.offsets[:-1], axis=0)
-    centres = (sums / cell_sizes(mesh)[:, None])[sample]
+    centres = cell_centres(mesh)[sample]
     first = mesh.points[mesh.connectivity[mesh.offsets[:-1][sample]]].astype(float)
     inside = 0.02 * np.linalg.norm(first - centres, axis=1)
     middle = centres.mean(axis=0)

@@ -85,7 +85,7 @@ def local_edges(mesh: Mesh, nodes: Ints) -> Floats:
 
 
 def boundary_nodes(mesh: Mesh) -> Ints:
-    """Nodes on faces that belong to one solid cell only, and all nodes of other cells, sorted.
+    """Nodes on faces of one solid cell only, all nodes of other cells, and loose nodes, sorted.
 
     A face is known by the sum of random numbers given to its corners: one sort of 64-bit keys,
     instead of sorting rows of node numbers. Two different faces share a key with a probability
@@ -94,7 +94,8 @@ def boundary_nodes(mesh: Mesh) -> Ints:
     token = np.random.default_rng(20).integers(
         0, 2**64, size=mesh.point_count, dtype=np.uint64, endpoint=False
     )
-    marked = np.zeros(mesh.point_count, dtype=bool)
+    marked = np.ones(mesh.point_count, dtype=bool)
+    marked[mesh.connectivity] = False
     keys, owners = [], []
     for vtk_id, _, nodes in blocks(mesh):
         kind = CELL_TYPES.get(vtk_id)
