@@ -9,46 +9,33 @@ from __future__ import annotations
 from collections.abc import Callable
 from dataclasses import dataclass, field
 from functools import cached_property
-from pathlib import Path
 
 import numpy as np
-from numpy.typing import NDArray
 
-from expander.behaviours import Behaviour, factors
+from expander.admission import (
+    check_constant,
+    check_linear,
+    check_mesh,
+    check_numbers,
+    check_same_mesh,
+    check_storage,
+    read_models,
+)
+from expander.behaviours import factors
 from expander.casefile import CaseFile, CaseTable, Direction, plane_names
-from expander.cells import require_known
 from expander.closing import Opening, check_closing
 from expander.errors import InputError
 from expander.fields import Field, check_load_odd, check_shear, fields_of, frames_of
 from expander.groups import CutPlane, CyclicAxis, Group, make_group
-from expander.model import Mesh, Model
+from expander.loadcases import LoadCase, Result, behaviour_of, results_of
+from expander.model import Mesh
 from expander.numbering import Numbering, shared_cells
 from expander.placements import Floats, unit
-from expander.readers import read_model
 from expander.resolve import Resolved, resolve
 from expander.seams import Classes, Seams, find_seams
 from expander.surroundings import not_averaged
 from expander.tiling import check_sides, check_touch, check_turns
 from expander.topology import cell_centres, cells_at_nodes
-
-
-@dataclass(frozen=True, eq=False)
-class LoadCase:
-    """One result set on the sector and its load behaviour."""
-
-    name: str
-    model: Model
-    behaviour: Behaviour
-    chi: Floats
-    factor: float
-
-
-@dataclass(frozen=True)
-class Result:
-    """A case, or a sum of cases: (number of the case, factor) for each term."""
-
-    name: str
-    terms: tuple[tuple[int, float], ...]
 
 
 @dataclass(frozen=True, eq=False)
@@ -125,20 +112,20 @@ def prepare(
     """
     group = _group(case)
     tables = case.case or [CaseTable(name="result")]
-    behaviours = [_behaviour(case, t) for t in tables]
+    behaviours = [behaviour_of(case, t) for t in tables]
     signs = [factors(group, b) for b in behaviours]
     step("reading")
-    models = _models(case, tables, allow_nan)
+    models = read_models(case, tables, allow_nan)
     mesh = models[0].mesh
-    _check_mesh(models[0])
+    check_mesh(models[0])
     for name, model in zip([t.name for t in tables][1:], models[1:], strict=True):
-        _check_same_mesh(models[0], model, name)
+        check_same_mesh(models[0], model, name)
     cases = tuple(
         LoadCase(t.name, m, b, chi, t.factor)
         for t, m, b, chi in zip(tables, models, behaviours, signs, strict=True)
     )
-    results = _results(case, cases)
-    _check_linear(case, cases)
+    results = results_of(case, cases)
+    check_linear(case, cases)
     odd = any(c.chi.min() < 0 for c in cases)
     notes = [note for m in dict.fromkeys(models) for note in m.notes]
     frames = frames_of(case, {n: _direction(t.axis, f"frames.{n}.axis")
@@ -151,9 +138,9 @@ def prepare(
             check_load_odd(fields, c.name)
     for f in fields:
         for p in group.placements:
-            _matrix_checked(f, p.Q)
-    _check_constant(fields, cases, results)
-    invalid = _check_numbers(fields, cases, allow_nan)
+            check_storage(f, p.Q)
+    check_constant(fields, cases, results)
+    invalid = check_numbers(fields, cases, allow_nan)
     step("checking the copies")
     tolerance = case.seam.tolerance
     check_sides(mesh, group, tolerance)
@@ -210,174 +197,6 @@ def _group(case: CaseFile) -> Group:
         axis = CyclicAxis(case.cyclic.sectors, _direction(case.cyclic.axis, "cyclic.axis"),
                           np.array(case.cyclic.point, dtype=float))  # fmt: skip
     return make_group(planes, axis)
-
-
-def _models(case: CaseFile, tables: list[CaseTable], allow_nan: bool) -> list[Model]:
-    """The model of each case; one that several cases share is read once."""
-    known: dict[tuple[str, ...], Model] = {}
-    models = []
-    for table in tables:
-        file = table.file or case.model.file
-        if file is None:
-            where = f"case {table.name!r}" if case.case else "[model]"
-            raise InputError(f"{where} names no file.", 'Add file = "result.vtu" under [model].')
-        results = table.results if table.results is not None else case.model.results
-        key = (file, *results)
-        if key not in known:
-            model = read_model(_within(case.folder, file))
-            for result in results:
-                from expander.readers.tables import add_table
-
-                model = add_table(model, _within(case.folder, result), allow_missing=allow_nan)
-            known[key] = model
-        models.append(known[key])
-    return models
-
-
-def _within(folder: Path, file: str) -> Path:
-    return Path(file) if Path(file).is_absolute() else folder / file
-
-
-def _check_mesh(model: Model) -> None:
-    mesh = model.mesh
-    require_known(mesh.types, str(model.source))
-    if not _all_finite(mesh.points):
-        bad = ~np.isfinite(mesh.points).all(axis=1)
-        raise InputError(
-            f"{model.source}: {int(bad.sum())} nodes have no finite coordinates; the first is "
-            f"node {int(np.argmax(bad))}.",
-            "Expected numbers; write the model again.",
-        )
-
-
-def _all_finite(values: NDArray[np.generic]) -> bool:
-    """Whether all numbers are finite; a finite sum is the quick proof."""
-    with np.errstate(over="ignore", invalid="ignore"):
-        quick = bool(np.isfinite(values.sum(dtype=float)))
-    return quick or bool(np.isfinite(values).all())
-
-
-def _check_same_mesh(first: Model, other: Model, name: str) -> None:
-    a, b = first.mesh, other.mesh
-    if a is b:
-        return
-    same = (
-        a.points.shape == b.points.shape
-        and np.array_equal(a.types, b.types)
-        and np.array_equal(a.connectivity, b.connectivity)
-        and np.array_equal(a.offsets, b.offsets)
-    )
-    if same and float(np.abs(a.points - b.points).max()) <= 1e-6 * a.size:
-        return
-    what = (
-        f"{b.point_count} nodes and {b.cell_count} cells against {a.point_count} and "
-        f"{a.cell_count}" if not same else "the same cells, but nodes in other places"
-    )  # fmt: skip
-    raise InputError(
-        f"{other.source} (case {name!r}) has another mesh than {first.source}: {what}.",
-        "All cases of one body use one mesh, with nodes and cells in the same order.",
-    )
-
-
-def _behaviour(case: CaseFile, table: CaseTable) -> Behaviour:
-    words: dict[str, str] = {}
-    for name, mirror in zip(plane_names(case), case.mirror, strict=True):
-        given = table.load if isinstance(table.load, str) else table.load.get(name)
-        words[name] = given or mirror.load
-    h = 0
-    if case.cyclic is not None:
-        own = table.nodal_diameters
-        h = case.cyclic.nodal_diameters if own is None else own
-    return Behaviour(words, h)
-
-
-def _results(case: CaseFile, cases: tuple[LoadCase, ...]) -> tuple[Result, ...]:
-    single = [Result(c.name, ((k, c.factor),)) for k, c in enumerate(cases)]
-    number = {c.name: k for k, c in enumerate(cases)}
-    sums = [
-        Result(s.name, tuple((number[n], f * cases[number[n]].factor)
-                             for n, f in s.terms.items()))
-        for s in case.sum
-    ]  # fmt: skip
-    if case.output.results is not None:
-        by_name = {r.name: r for r in single + sums}
-        return tuple(by_name[n] for n in case.output.results)
-    return tuple(sums or single)
-
-
-def _check_linear(case: CaseFile, cases: tuple[LoadCase, ...]) -> None:
-    if case.model.linear:
-        return
-    why = ""
-    for c in cases:
-        if c.chi.min() < 0:
-            why = f"case {c.name!r} is antisymmetric or has nodal diameters ({c.behaviour.words()})"
-        elif c.factor != 1.0:
-            why = f"case {c.name!r} has factor = {c.factor:g}"
-    if case.sum:
-        why = f"sum {case.sum[0].name!r} adds results"
-    if why:
-        raise InputError(
-            f"model.linear = false, but {why}.",
-            "A nonlinear response cannot be scaled, added or taken as antisymmetric: use symmetric "
-            "cases alone, or set linear = true if the analysis is linear.",
-        )
-
-
-def _matrix_checked(f: Field, Q: Floats) -> None:
-    try:
-        f.quantity.matrix(Q)
-    except InputError as error:
-        raise InputError(f"Field {f.name!r}: {error.found}", error.remedy) from None
-
-
-def _check_numbers(
-    fields: list[Field], cases: tuple[LoadCase, ...], allow_nan: bool
-) -> dict[str, int]:
-    """Refuse NaN and infinity, or count them; check every field in every case."""
-    counts: dict[str, int] = {}
-    for c in cases:
-        for f in fields:
-            values = f.values(c.model)
-            if not np.issubdtype(values.dtype, np.floating):
-                continue
-            if _all_finite(values):
-                continue
-            bad = ~np.isfinite(values)
-            row = int(np.argmax(bad.any(axis=1)))
-            if not allow_nan:
-                raise InputError(
-                    f"{c.model.source}: field {f.name!r} holds {int(bad.sum())} values that are "
-                    f"not finite numbers; the first is at {f.on[:-1]} {row}: "
-                    f"{values[row].tolist()}.",
-                    "Correct the results, or accept them with --allow-nan (they are counted and "
-                    "stay as they are).",
-                )
-            counts[f.name] = counts.get(f.name, 0) + int(bad.sum())
-    return counts
-
-
-def _check_constant(
-    fields: list[Field], cases: tuple[LoadCase, ...], results: tuple[Result, ...]
-) -> None:
-    """Properties of the body must be the same in all cases that are added."""
-    for result in results:
-        first, *others = [cases[k] for k, _ in result.terms]
-        for f in fields if others else []:
-            if not f.constant:
-                continue
-            for other in others:
-                if not np.array_equal(
-                    f.values(first.model),
-                    f.values(other.model),
-                    equal_nan=np.issubdtype(f.values(first.model).dtype, np.inexact),
-                ):
-                    raise InputError(
-                        f"Sum {result.name!r}: field {f.name!r} follows the body, but differs "
-                        f"between cases {first.name!r} and {other.name!r}.",
-                        "Cases of one body share its properties; if it is a result, declare "
-                        'follows = "load".',
-                    )
 
 
 def _resolved(

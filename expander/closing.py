@@ -15,7 +15,7 @@ from expander.resolve import Resolved
 from expander.seams import Classes
 
 if TYPE_CHECKING:
-    from expander.body import LoadCase
+    from expander.loadcases import LoadCase
 
 
 @dataclass(frozen=True)

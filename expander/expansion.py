@@ -13,10 +13,11 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
-from expander.body import Result, Step, WholeBody, prepare
+from expander.body import Step, WholeBody, prepare
 from expander.casefile import CaseFile, CaseTable, read_case
 from expander.errors import InputError, NotYetError
 from expander.images import arrays_of
+from expander.loadcases import Result
 from expander.summary import CAUTIONS, summary
 
 if TYPE_CHECKING:

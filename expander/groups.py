@@ -116,6 +116,7 @@ class Group:
     def words(self, copy: int) -> str:
         """How a copy is made, in words.
 
+        >>> from expander.placements import unit
         >>> make_group([CutPlane("mid", unit([0, 0, 1]), np.zeros(3))], None).words(1)
         "mirrored in 'mid'"
         """
@@ -218,6 +219,7 @@ def make_group(planes: list[CutPlane], axis: CyclicAxis | None) -> Group:
 
     Examples
     --------
+    >>> from expander.placements import unit
     >>> x, y = (CutPlane(n, unit(v), np.zeros(3)) for n, v in (("x", [1, 0, 0]), ("y", [0, 1, 0])))
     >>> len(make_group([x, y], None)), len(make_group([x], CyclicAxis(5, unit([0, 0, 1]),
     ...     np.zeros(3))))

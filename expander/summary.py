@@ -7,10 +7,11 @@ from typing import Any
 
 import numpy as np
 
-from expander.body import Result, WholeBody
+from expander.body import WholeBody
 from expander.fields import Field
 from expander.frames import Cylindrical
 from expander.images import component_names, left_out_of
+from expander.loadcases import Result
 from expander.quantities import sign_words
 
 SCHEMA = 1

@@ -1,0 +1,159 @@
+"""Admission: what models must satisfy before a body is planned from them."""
+
+from __future__ import annotations
+
+from pathlib import Path
+
+import numpy as np
+from numpy.typing import NDArray
+
+from expander.casefile import CaseFile, CaseTable
+from expander.cells import require_known
+from expander.errors import InputError
+from expander.fields import Field
+from expander.loadcases import LoadCase, Result
+from expander.model import Model
+from expander.placements import Floats
+from expander.readers import read_model
+
+
+def read_models(case: CaseFile, tables: list[CaseTable], allow_nan: bool) -> list[Model]:
+    """The model of each case; one that several cases share is read once."""
+    known: dict[tuple[str, ...], Model] = {}
+    models = []
+    for table in tables:
+        file = table.file or case.model.file
+        if file is None:
+            where = f"case {table.name!r}" if case.case else "[model]"
+            raise InputError(f"{where} names no file.", 'Add file = "result.vtu" under [model].')
+        results = table.results if table.results is not None else case.model.results
+        key = (file, *results)
+        if key not in known:
+            model = read_model(_within(case.folder, file))
+            for result in results:
+                from expander.readers.tables import add_table
+
+                model = add_table(model, _within(case.folder, result), allow_missing=allow_nan)
+            known[key] = model
+        models.append(known[key])
+    return models
+
+
+def _within(folder: Path, file: str) -> Path:
+    return Path(file) if Path(file).is_absolute() else folder / file
+
+
+def check_mesh(model: Model) -> None:
+    mesh = model.mesh
+    require_known(mesh.types, str(model.source))
+    if not _all_finite(mesh.points):
+        bad = ~np.isfinite(mesh.points).all(axis=1)
+        raise InputError(
+            f"{model.source}: {int(bad.sum())} nodes have no finite coordinates; the first is "
+            f"node {int(np.argmax(bad))}.",
+            "Expected numbers; write the model again.",
+        )
+
+
+def _all_finite(values: NDArray[np.generic]) -> bool:
+    """Whether all numbers are finite; a finite sum is the quick proof."""
+    with np.errstate(over="ignore", invalid="ignore"):
+        quick = bool(np.isfinite(values.sum(dtype=float)))
+    return quick or bool(np.isfinite(values).all())
+
+
+def check_same_mesh(first: Model, other: Model, name: str) -> None:
+    a, b = first.mesh, other.mesh
+    if a is b:
+        return
+    same = (
+        a.points.shape == b.points.shape
+        and np.array_equal(a.types, b.types)
+        and np.array_equal(a.connectivity, b.connectivity)
+        and np.array_equal(a.offsets, b.offsets)
+    )
+    if same and float(np.abs(a.points - b.points).max()) <= 1e-6 * a.size:
+        return
+    what = (
+        f"{b.point_count} nodes and {b.cell_count} cells against {a.point_count} and "
+        f"{a.cell_count}" if not same else "the same cells, but nodes in other places"
+    )  # fmt: skip
+    raise InputError(
+        f"{other.source} (case {name!r}) has another mesh than {first.source}: {what}.",
+        "All cases of one body use one mesh, with nodes and cells in the same order.",
+    )
+
+
+def check_linear(case: CaseFile, cases: tuple[LoadCase, ...]) -> None:
+    if case.model.linear:
+        return
+    why = ""
+    for c in cases:
+        if c.chi.min() < 0:
+            why = f"case {c.name!r} is antisymmetric or has nodal diameters ({c.behaviour.words()})"
+        elif c.factor != 1.0:
+            why = f"case {c.name!r} has factor = {c.factor:g}"
+    if case.sum:
+        why = f"sum {case.sum[0].name!r} adds results"
+    if why:
+        raise InputError(
+            f"model.linear = false, but {why}.",
+            "A nonlinear response cannot be scaled, added or taken as antisymmetric: use symmetric "
+            "cases alone, or set linear = true if the analysis is linear.",
+        )
+
+
+def check_numbers(
+    fields: list[Field], cases: tuple[LoadCase, ...], allow_nan: bool
+) -> dict[str, int]:
+    """Refuse NaN and infinity, or count them; check every field in every case."""
+    counts: dict[str, int] = {}
+    for c in cases:
+        for f in fields:
+            values = f.values(c.model)
+            if not np.issubdtype(values.dtype, np.floating):
+                continue
+            if _all_finite(values):
+                continue
+            bad = ~np.isfinite(values)
+            row = int(np.argmax(bad.any(axis=1)))
+            if not allow_nan:
+                raise InputError(
+                    f"{c.model.source}: field {f.name!r} holds {int(bad.sum())} values that are "
+                    f"not finite numbers; the first is at {f.on[:-1]} {row}: "
+                    f"{values[row].tolist()}.",
+                    "Correct the results, or accept them with --allow-nan (they are counted and "
+                    "stay as they are).",
+                )
+            counts[f.name] = counts.get(f.name, 0) + int(bad.sum())
+    return counts
+
+
+def check_constant(
+    fields: list[Field], cases: tuple[LoadCase, ...], results: tuple[Result, ...]
+) -> None:
+    """Properties of the body must be the same in all cases that are added."""
+    for result in results:
+        first, *others = [cases[k] for k, _ in result.terms]
+        for f in fields if others else []:
+            if not f.constant:
+                continue
+            for other in others:
+                if not np.array_equal(
+                    f.values(first.model),
+                    f.values(other.model),
+                    equal_nan=np.issubdtype(f.values(first.model).dtype, np.inexact),
+                ):
+                    raise InputError(
+                        f"Sum {result.name!r}: field {f.name!r} follows the body, but differs "
+                        f"between cases {first.name!r} and {other.name!r}.",
+                        "Cases of one body share its properties; if it is a result, declare "
+                        'follows = "load".',
+                    )
+
+
+def check_storage(f: Field, Q: Floats) -> None:
+    try:
+        f.quantity.matrix(Q)
+    except InputError as error:
+        raise InputError(f"Field {f.name!r}: {error.found}", error.remedy) from None

@@ -1,0 +1,55 @@
+"""Load cases and results: what was solved on the sector, and what is wanted on the whole body."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+from expander.behaviours import Behaviour
+from expander.casefile import CaseFile, CaseTable, plane_names
+from expander.model import Model
+from expander.placements import Floats
+
+
+@dataclass(frozen=True, eq=False)
+class LoadCase:
+    """One result set on the sector and its load behaviour."""
+
+    name: str
+    model: Model
+    behaviour: Behaviour
+    chi: Floats
+    factor: float
+
+
+@dataclass(frozen=True)
+class Result:
+    """A case, or a sum of cases: (number of the case, factor) for each term."""
+
+    name: str
+    terms: tuple[tuple[int, float], ...]
+
+
+def behaviour_of(case: CaseFile, table: CaseTable) -> Behaviour:
+    words: dict[str, str] = {}
+    for name, mirror in zip(plane_names(case), case.mirror, strict=True):
+        given = table.load if isinstance(table.load, str) else table.load.get(name)
+        words[name] = given or mirror.load
+    h = 0
+    if case.cyclic is not None:
+        own = table.nodal_diameters
+        h = case.cyclic.nodal_diameters if own is None else own
+    return Behaviour(words, h)
+
+
+def results_of(case: CaseFile, cases: tuple[LoadCase, ...]) -> tuple[Result, ...]:
+    single = [Result(c.name, ((k, c.factor),)) for k, c in enumerate(cases)]
+    number = {c.name: k for k, c in enumerate(cases)}
+    sums = [
+        Result(s.name, tuple((number[n], f * cases[number[n]].factor)
+                             for n, f in s.terms.items()))
+        for s in case.sum
+    ]  # fmt: skip
+    if case.output.results is not None:
+        by_name = {r.name: r for r in single + sums}
+        return tuple(by_name[n] for n in case.output.results)
+    return tuple(sums or single)
