@@ -18,7 +18,6 @@ from expander.placements import Floats, Placement
 
 MOST_COPIES = 4096
 _SAME = 1e-6  # two placements closer than this (relative for translations) are one
-_DIRECTIONS = {(1.0, 0.0, 0.0): "x", (0.0, 1.0, 0.0): "y", (0.0, 0.0, 1.0): "z"}
 
 
 @dataclass(frozen=True, eq=False)
@@ -141,9 +140,9 @@ class Group:
 
 def direction_words(direction: Floats) -> str:
     """``x``, ``-y`` or ``(0.707, 0, 0.707)``."""
-    for vector, name in _DIRECTIONS.items():
-        for sign, mark in ((1.0, ""), (-1.0, "-")):
-            if np.allclose(direction, sign * np.array(vector), atol=1e-12):
+    for sign, mark in ((1.0, ""), (-1.0, "-")):
+        for axis, name in enumerate("xyz"):
+            if abs(sign * direction[axis] - 1.0) < 1e-12:  # a unit vector: the others vanish
                 return mark + name
     return "(" + ", ".join(f"{c + 0.0:.4g}" for c in direction) + ")"
 
@@ -196,8 +195,17 @@ def _check_planes(planes: tuple[CutPlane, ...]) -> None:
 
 
 def _check_axis(planes: tuple[CutPlane, ...], axis: CyclicAxis) -> None:
-    for plane in planes:
-        along = abs(float(plane.normal @ axis.axis))
+    along_axis = [abs(float(plane.normal @ axis.axis)) for plane in planes]
+    copies = axis.sectors
+    copies *= 2 if any(a < 1e-6 for a in along_axis) else 1  # a plane through the axis
+    copies *= 2 if any(a > 1.0 - 1e-9 for a in along_axis) else 1  # a plane normal to it
+    if copies > MOST_COPIES:
+        raise InputError(
+            f"cyclic.sectors = {axis.sectors} makes {copies} copies with the planes, more than "
+            f"the {MOST_COPIES} that this version holds.",
+            "Check cyclic.sectors.",
+        )
+    for plane, along in zip(planes, along_axis, strict=True):
         if along < 1e-6:
             gap = abs(float(plane.normal @ (axis.point - plane.point)))
             if gap > 1e-6 * _scale(planes, axis):

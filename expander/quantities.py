@@ -134,7 +134,8 @@ class Quantity:
         """
         action: Floats = np.ones((1, 1)) if self.kind.rank else np.eye(self.size)
         for _ in range(self.kind.rank):
-            action = np.asarray(np.kron(action, Q))
+            n = len(action)  # action and Q as a Kronecker product
+            action = (action[:, None, :, None] * Q[None, :, None, :]).reshape(3 * n, 3 * n)
         moved = action @ self.spread
         A = self.gather @ moved
         if np.abs(self.spread @ A - moved).max(initial=0.0) > 1e-9:

@@ -22,7 +22,7 @@ AGAIN = "The file is damaged or incomplete: write it again."
 NODES = {
     1: 1, 3: 2, 5: 3, 8: 4, 9: 4, 10: 4, 11: 8, 12: 8, 13: 6, 14: 5, 15: 10, 16: 12,
     21: 3, 22: 6, 23: 8, 24: 10, 25: 20, 26: 15, 27: 13, 28: 9, 29: 27, 30: 6, 31: 12,
-    32: 18, 33: 24, 34: 7, 35: 4, 38: 19,
+    32: 18, 33: 24, 34: 7, 35: 4, 37: 19,
 }  # fmt: skip
 # Smallest number of nodes of the types that hold any number of them.
 _AT_LEAST = {2: 1, 4: 2, 6: 3, 7: 3, 36: 4, 41: 1, 42: 4} | dict.fromkeys(range(51, 82), 1)
@@ -55,10 +55,10 @@ def checked_mesh(
     offsets : (m + 1,) place of each cell's first node, and the end.
     types : (m,) VTK cell types.
     """
-    if points.ndim != 2 or points.shape[1] != 3:
-        raise InputError(f"{path}: the points have shape {points.shape}, not (n, 3)", AGAIN)
     if len(points) == 0:
         raise InputError(f"{path}: the mesh has no points", "Name a file that holds the mesh.")
+    if points.ndim != 2 or points.shape[1] != 3:
+        raise InputError(f"{path}: the points have shape {points.shape}, not (n, 3)", AGAIN)
     if len(types) == 0:
         raise InputError(f"{path}: the mesh has no cells", "Name a file that holds the mesh.")
     if points.dtype not in (np.float32, np.float64):

@@ -71,10 +71,12 @@ def _stream(
 ) -> None:
     """Compute and write all blocks, array after array, with a bounded number in flight."""
 
-    def task(array: BodyArray, copy: int, rows: slice, at: int) -> int:
-        block = np.ascontiguousarray(array.block(copy, rows), dtype=array.dtype)
-        _write_at(descriptor, block.reshape(-1).view(np.uint8).data, at)
-        return block.nbytes
+    def task(array: BodyArray, pieces: list[tuple[int, int, slice]], at: int) -> int:
+        blocks = [np.asarray(array.block(copy, rows)) for copy, _, rows in pieces]
+        joined = blocks[0] if len(blocks) == 1 else np.concatenate(blocks)
+        data = np.ascontiguousarray(joined, dtype=array.dtype).reshape(-1).view(np.uint8)
+        _write_at(descriptor, data.data, at)
+        return data.nbytes
 
     count = workers or min(_MOST_WORKERS, os.cpu_count() or 1)
     with ThreadPoolExecutor(count) as pool:
@@ -82,12 +84,13 @@ def _stream(
         try:
             for array, start in zip(arrays, starts, strict=True):
                 width = array.width * array.dtype.itemsize
-                for copy, row, rows in array.pieces(_PIECE):
+                for batch in _batches(array):
                     if len(running) >= 2 * count:
                         done, running = wait(running, return_when=FIRST_COMPLETED)
                         for future in done:
                             advance(future.result())
-                    running.add(pool.submit(task, array, copy, rows, start + 8 + row * width))
+                    at = start + 8 + batch[0][1] * width
+                    running.add(pool.submit(task, array, batch, at))
                 done, running = wait(running)
                 for future in done:
                     advance(future.result())
@@ -95,6 +98,20 @@ def _stream(
         finally:
             for future in running:
                 future.cancel()
+
+
+def _batches(array: BodyArray) -> Iterator[list[tuple[int, int, slice]]]:
+    """Pieces that lie one after the other in the file, small ones together."""
+    batch: list[tuple[int, int, slice]] = []
+    rows = 0
+    for piece in array.pieces(_PIECE):
+        batch.append(piece)
+        rows += piece[2].stop - piece[2].start
+        if rows * array.width * array.dtype.itemsize >= _PIECE // 2:
+            yield batch
+            batch, rows = [], 0
+    if batch:
+        yield batch
 
 
 def _write_at(descriptor: int, data: bytes | memoryview, at: int) -> None:
