@@ -146,7 +146,7 @@ def prepare(
     check_sides(mesh, group, tolerance)
     step("finding seams")
     seams = find_seams(mesh, group, tolerance)
-    notes += check_touch(mesh, group, seams, tolerance)
+    notes += check_touch(mesh, group, seams, tolerance, case.seam.open == "keep apart")
     notes += check_turns(mesh, group, seams, tolerance)
     step("resolving seams")
     nodes = seams.nodes

@@ -56,6 +56,8 @@ def digests(files: list[Path]) -> dict[str, str]:
     """SHA-256 of each file by name."""
     found = {}
     for file in files:
+        if not file.is_file():
+            continue  # a pipe would never end; what is missing is reported by the reader
         with file.open("rb") as stream:
             found[file.name] = hashlib.file_digest(stream, "sha256").hexdigest()
     return found

@@ -9,6 +9,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from expander.casefile import CaseFile, FieldTable
+from expander.cells import dimensions
 from expander.errors import InputError, NotYetError
 from expander.frames import Cylindrical, Frame, Global
 from expander.model import Model
@@ -17,6 +18,8 @@ from expander.quantities import Quantity, quantity
 from expander.tradewords import stress_odd, trade_word
 
 ADDED_ARRAYS = ("copy", "sector_cell", "sector_point")
+_OF_PLANE_MODELS = {("polar vector", 2), ("axial vector", 1), ("symmetric tensor", 3),
+                    ("symmetric tensor", 4), ("tensor", 4)}  # fmt: skip
 _LABEL_FRAME = str.maketrans("rt", "xy")  # r, t, z are the components x, y, z of a local frame
 
 
@@ -116,6 +119,7 @@ def fields_of(
     where = str(case.source) if case.source else "the options"
     fields = [_declared(n, t, model, frames, where) for n, t in case.fields.items()]
     used = {(f.on, a) for f in fields for a in f.arrays}
+    solid = bool((dimensions(model.mesh.types) == 3).any())
     unknown: list[tuple[str, str, int]] = []
     notes: list[str] = []
     for on, data in (("points", model.point_data), ("cells", model.cell_data)):
@@ -127,6 +131,8 @@ def fields_of(
             word = None if name in other else trade_word(name, size)
             if word is not None and odd and word.kind == "scalar" and word.follows == "load":
                 word = None  # whether it changes sign must be said, not guessed
+            if word is not None and solid and (word.kind, size) in _OF_PLANE_MODELS:
+                word = None  # a plane storage on solids may be something else
             clash = name in ADDED_ARRAYS or any(f.name == name for f in fields)
             if word is not None and not clash:
                 fields.append(_by_name(name, on, array, size, frames["global"]))
@@ -257,7 +263,8 @@ def _undeclared(model: Model, unknown: list[tuple[str, str, int]], odd: bool) ->
             2: "polar vector",
             3: "polar vector, axial vector or principal values",
             4: "symmetric tensor",
-            6: "symmetric tensor",
+            6: "symmetric tensor; for translations and rotations two fields with "
+            f'arrays = ["{name}"], columns = [1, 2, 3] and [4, 5, 6]',
             9: "tensor",
         }.get(size, "?")
         key = name if name.replace("_", "").replace("-", "").isalnum() else f'"{name}"'

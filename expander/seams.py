@@ -156,14 +156,15 @@ def find_seams(mesh: Mesh, group: Group, given_tolerance: float | None) -> Seams
         mirrors = {g for g, _, _ in group.mirrors}
         piece = None
         for g in _touching(mesh.points[boundary].astype(float), group, tolerance.reach, mirrors):
-            i, j, distance = _match(mesh.points, boundary, group.placements[g], tolerance.reach)
-            if len(i):
-                allowed = np.minimum(tolerance.at(i), tolerance.at(j))
-                fits = distance <= allowed
-                i, j, distance, allowed = i[fits], j[fits], distance[fits], allowed[fits]
-                if len(np.unique(i)) < len(i) or len(np.unique(j)) < len(j):
-                    piece = pieces(mesh) if piece is None else piece
-                    i, j, distance, allowed = _one_to_one(mesh, i, j, distance, allowed, piece)
+            placement = group.placements[g]
+            i, j, distance = _match(mesh.points, boundary, boundary, placement, tolerance.reach)
+            allowed = np.minimum(tolerance.at(i), tolerance.at(j))
+            fits = distance <= allowed
+            i, j, distance, allowed = i[fits], j[fits], distance[fits], allowed[fits]
+            if len(np.unique(i)) < len(i) or len(np.unique(j)) < len(j):
+                piece = pieces(mesh) if piece is None else piece
+                i, j, distance, allowed = _one_to_one(mesh, i, j, distance, allowed, piece)
+            misses += _near_pairs(mesh, boundary, placement, i, j)
             found.append((g, i, j, distance, allowed))
             inverse = int(group.inverse[g])
             if inverse != g:
@@ -194,7 +195,23 @@ def _near_misses(
     if not len(near):
         return []
     close = near[off[near] < MOST_OF_EDGE * local_edges(mesh, near)]
-    return [(int(n), float(off[n])) for n in close[np.argsort(-off[close])]]
+    return [(int(n), 2.0 * float(off[n])) for n in close]  # to its image
+
+
+def _near_pairs(
+    mesh: Mesh, boundary: Ints, placement: Placement, i: Ints, j: Ints
+) -> list[tuple[int, float]]:
+    """Unmatched nodes nearer an unmatched partner than a tenth of their edge, at a seam."""
+    if not len(i):
+        return []
+    reach = MOST_OF_EDGE * float(local_edges(mesh, i).max())
+    if not np.isfinite(reach):
+        return []
+    mine, theirs = np.setdiff1d(boundary, i), np.setdiff1d(boundary, j)
+    a, b, distance = _match(mesh.points, mine, theirs, placement, reach)
+    edge = np.minimum(local_edges(mesh, a), local_edges(mesh, b))
+    close = (distance <= MOST_OF_EDGE * edge) & (a != b)
+    return [(int(n), float(d)) for n, d in zip(a[close], distance[close], strict=True)]
 
 
 def _touching(points: Floats, group: Group, reach: float, skip: set[int]) -> list[int]:
@@ -224,24 +241,26 @@ def _touching(points: Floats, group: Group, reach: float, skip: set[int]) -> lis
 
 
 def _match(
-    points: NDArray[np.floating], boundary: Ints, placement: Placement, reach: float
+    points: NDArray[np.floating], mine: Ints, theirs: Ints, placement: Placement, reach: float
 ) -> tuple[Ints, Ints, Floats]:
-    """All pairs with ``|s x_j - x_i| <= reach`` among boundary nodes: i, j, distance."""
+    """All pairs with ``|s x_j - x_i| <= reach``, i of `mine`, j of `theirs`: i, j, distance."""
     from scipy.spatial import cKDTree
 
-    here = points[boundary].astype(float)
-    there = placement.apply(here)
+    none = np.empty(0, dtype=np.int64)
+    if not len(mine) or not len(theirs):
+        return none, none, np.empty(0)
+    here = points[mine].astype(float)
+    there = placement.apply(points[theirs])
     low = np.maximum(here.min(axis=0), there.min(axis=0)) - reach
     high = np.minimum(here.max(axis=0), there.max(axis=0)) + reach
     a = np.flatnonzero(((here >= low) & (here <= high)).all(axis=1))
     b = np.flatnonzero(((there >= low) & (there <= high)).all(axis=1))
     if not len(a) or not len(b):
-        none = np.empty(0, dtype=np.int64)
         return none, none, np.empty(0)
     pairs = cKDTree(here[a]).sparse_distance_matrix(
         cKDTree(there[b]), reach, output_type="coo_matrix"
     )
-    return boundary[a[pairs.row]], boundary[b[pairs.col]], np.asarray(pairs.data, dtype=float)
+    return mine[a[pairs.row]], theirs[b[pairs.col]], np.asarray(pairs.data, dtype=float)
 
 
 def _one_to_one(

@@ -63,7 +63,9 @@ def _cut(mesh: Mesh, group: Group, g: int, side: Floats, wrong: Ints) -> InputEr
             f"they have room for {360 / len(group) * (2 if len(group.planes) > 2 else 1):.6g} "
             "degrees each, so space would be covered more than once."
         )
-    elif group.axis is not None:
+    elif group.axis is not None and any(
+        abs(float(p.normal @ group.axis.axis)) < 1e-6 for p in group.planes
+    ):
         angle = (
             f" With {group.axis.sectors} sectors and a plane through the axis the model is half a "
             f"sector, {group.axis.degrees / 2:.6g} degrees."
@@ -80,8 +82,12 @@ def _at(mesh: Mesh, node: int) -> str:
     return ", ".join(f"{c:.6g}" for c in mesh.points[node])
 
 
-def check_touch(mesh: Mesh, group: Group, seams: Seams, given: float | None) -> list[str]:
+def check_touch(
+    mesh: Mesh, group: Group, seams: Seams, given: float | None, keep_apart: bool
+) -> list[str]:
     """Refuse a model that almost touches a cut plane; notes on planes that it stays clear of.
+
+    With `keep_apart` a small clearance is taken as meant.
 
     The planes are those that bound the copies next to the model, declared or implied.
     """
@@ -95,12 +101,13 @@ def check_touch(mesh: Mesh, group: Group, seams: Seams, given: float | None) -> 
         node = int(np.argmin(off))
         edge = float(min(local_edges(mesh, np.array([node]))[0], tolerance.size))
         name = _plane_words(group, g)
-        if off[node] < edge:
+        if off[node] < edge and not keep_apart:
             raise InputError(
                 f"No node lies on {name}: the nearest is node {node} at "
                 f"({_at(mesh, node)}), {off[node]:.6g} away, less than its edge of {edge:.6g}.",
                 f"Move the plane (mirror.point), or give a seam.tolerance over "
-                f"{2 * off[node]:.3g} if the nodes are off.",
+                f"{2 * off[node]:.3g} if the nodes are off; if the clearance is meant, "
+                'seam.open = "keep apart".',
             )
         if group.axis is not None and abs(float(normal @ group.axis.axis)) < 1e-6:
             _check_half_sector(mesh, group)
@@ -112,9 +119,9 @@ def check_touch(mesh: Mesh, group: Group, seams: Seams, given: float | None) -> 
         nodes = {n for n, _ in seams.near_misses}
         node, distance = max(seams.near_misses, key=lambda m: m[1])
         notes.append(
-            f"{len(nodes)} nodes lie close to a cut plane but outside the tolerance and were not "
-            f"merged (farthest: node {node}, {distance:.3g} off); to merge them give "
-            f"seam.tolerance = {2.1 * distance:.2g}"
+            f"{len(nodes)} nodes lie close to a seam but outside the tolerance and were not "
+            f"merged (farthest: node {node}, {distance:.3g} from its partner); to merge them give "
+            f"seam.tolerance = {1.05 * distance:.2g}"
         )
     return notes
 
@@ -248,7 +255,7 @@ def _face_angle(mesh: Mesh, group: Group, given: float | None) -> float | None:
     theta = np.rad2deg(np.arctan2(radial @ e2, radial @ e1))
     tolerance = Tolerance(mesh, given)
     ring = np.stack([radius, height], axis=1)[off]
-    theta, ring = theta[off], ring[off]
+    theta = theta[off]
     if len(ring) > 20_000:  # a sample of rings is enough to read an angle
         order = np.lexsort(np.round(ring / max(tolerance.reach, 1e-12)).T)
         ring, theta = ring[order[:20_000]], theta[order[:20_000]]

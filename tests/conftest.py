@@ -2,7 +2,13 @@
 
 from __future__ import annotations
 
+import sys
+from pathlib import Path
+
 from hypothesis import HealthCheck, settings
+
+# So that test modules find the shared builders: from meshes import box.
+sys.path.insert(0, str(Path(__file__).parent))
 
 # The same examples on every run: a test that fails must fail again.
 settings.register_profile(

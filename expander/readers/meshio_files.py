@@ -23,8 +23,11 @@ from expander.model import Model
 from expander.readers import assemble, meshio_formats
 from expander.readers.meshio_cells import Block, vtk_cells
 from expander.readers.meshio_formats import Extra
+from expander.readers.meshio_open import impatient
 
 Array = NDArray[np.generic]
+# Text that does not say how much of it there is.
+_UNCOUNTED = (".inp", ".obj", ".dato", ".post")
 
 
 def _registry() -> tuple[dict[str, list[str]], dict[str, Any]]:
@@ -64,7 +67,8 @@ def read(path: Path) -> Model:
         with redirect_stdout(out), redirect_stderr(err), warnings.catch_warnings():
             warnings.simplefilter("ignore")
             meshio_formats.refuse_early(path, formats)
-            mesh = meshio_formats.read(path, formats)
+            with impatient():
+                mesh = meshio_formats.read(path, formats)
             printed = out.getvalue() + err.getvalue()
             return _model(path, mesh, meshio_formats.extra(path, formats, mesh, printed), printed)
     except SeamfoldError:
@@ -85,6 +89,8 @@ def read(path: Path) -> Model:
 def _model(path: Path, mesh: Any, extra: Extra, printed: str) -> Model:
     """The model of a mesh that meshio has read."""
     notes = [*extra.notes, *_warnings(printed)]
+    if path.suffix.lower() in _UNCOUNTED and not path.read_bytes()[-1:].isspace():
+        notes.append("The file ends without a line end: if it was cut short, something is missing.")
     points = _points(path, mesh.points, notes)
     cells = vtk_cells(path, points, [Block(b.type, b.data) for b in mesh.cells], notes)
     checked = assemble.checked_mesh(path, points, *cells)

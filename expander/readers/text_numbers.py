@@ -7,17 +7,17 @@ from typing import BinaryIO
 import numpy as np
 from numpy.typing import NDArray
 
-_CHUNK = 1 << 22
-# bytes that separate words: blank, tab, line feed, vertical tab, form feed, return
-_BLANK = np.zeros(256, bool)
-_BLANK[[9, 10, 11, 12, 13, 32]] = True
+_CHUNK = 1 << 20
+_BLANK = 32  # the blank; tabs and line ends have lower codes
 
 
-def _word_starts(data: bytes, in_word: bool) -> NDArray[np.intp]:
-    """Places in ``data`` where a word begins; ``in_word`` if one runs on from before."""
-    filled = ~_BLANK[np.frombuffer(data, np.uint8)]
-    before = np.concatenate([[in_word], filled[:-1]])
-    return np.flatnonzero(filled & ~before)
+def _word_starts(data: bytes, in_word: bool) -> NDArray[np.bool_]:
+    """Where in ``data`` a word begins; ``in_word`` if one runs on from before."""
+    filled = np.frombuffer(data, np.uint8) > _BLANK
+    starts = filled.copy()
+    starts[1:] &= ~filled[:-1]
+    starts[0] &= not in_word
+    return starts
 
 
 def count_words(file: BinaryIO, start: int, stop: int) -> int:
@@ -25,8 +25,8 @@ def count_words(file: BinaryIO, start: int, stop: int) -> int:
     file.seek(start)
     words, in_word = 0, False
     while start < stop and (data := file.read(min(_CHUNK, stop - start))):
-        words += len(_word_starts(data, in_word))
-        in_word = not data[-1:].isspace()
+        words += int(np.count_nonzero(_word_starts(data, in_word)))
+        in_word = data[-1] > _BLANK
         start += len(data)
     return words
 
@@ -39,12 +39,12 @@ def skip_words(file: BinaryIO, start: int, count: int) -> int:
     in_word = False
     while data := file.read(_CHUNK):
         starts = _word_starts(data, in_word)
-        if count > len(starts):
-            count -= len(starts)
-            in_word = not data[-1:].isspace()
-            start += len(data)
-            continue
-        return _end_of_word(file, start + int(starts[count - 1]))
+        words = int(np.count_nonzero(starts))
+        if count <= words:
+            return _end_of_word(file, start + int(np.flatnonzero(starts)[count - 1]))
+        count -= words
+        in_word = data[-1] > _BLANK
+        start += len(data)
     return -1
 
 
@@ -52,7 +52,7 @@ def _end_of_word(file: BinaryIO, start: int) -> int:
     """The first blank, or the end of the file, from ``start``, which is in a word."""
     file.seek(start)
     while data := file.read(256):
-        blank = _BLANK[np.frombuffer(data, np.uint8)]
+        blank = np.frombuffer(data, np.uint8) <= _BLANK
         if blank.any():
             return start + int(np.argmax(blank))
         start += len(data)

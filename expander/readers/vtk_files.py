@@ -96,10 +96,15 @@ def _output(reader: Any, path: Path, prepare: Any = None) -> Any:
             prepare()
         reader.Update()
         output = reader.GetOutput()
-        complaint = window.GetOutput()
+        complaint = _text(window.GetOutput())
     if complaint or reader.GetErrorCode() or output is None:
         raise InputError(f"{path} cannot be read: {_reason(complaint)}", assemble.AGAIN)
     return output
+
+
+def _text(value: Any) -> str:
+    """A string of VTK, which is bytes where it is not UTF-8."""
+    return value.decode("utf-8", "replace") if isinstance(value, bytes) else str(value or "")
 
 
 def _reason(complaint: str) -> str:
@@ -195,7 +200,7 @@ def _arrays(
     delivered = set()
     for index in range(data.GetNumberOfArrays()):
         array = data.GetAbstractArray(index)
-        name = array.GetName()
+        name = _text(array.GetName())
         delivered.add(name)
         if not name:
             notes.append(f"A {place} array without a name was left out.")

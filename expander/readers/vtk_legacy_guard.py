@@ -74,6 +74,7 @@ class _Walker:
         self.latest = ""
         self.data = ""  # "point" or "cell", once POINT_DATA or CELL_DATA is reached
         self.tuples = 0
+        self.components = 0  # of the latest array
         self.declared = Declared("")
 
     def line(self, skip_blank: bool = True) -> str:
@@ -112,13 +113,13 @@ class _Walker:
         if key == "DATASET":
             self._dataset(words[1].upper())
         elif key == "METADATA":
-            while self.line(skip_blank=False):
-                pass
+            self._metadata()
         elif key == "FIELD":
             self._field(_count(words[2]))
         elif not self.declared.kind:
             raise Bad(f"'{words[0][:40]}' stands before the data set")
         elif key == "POINTS":
+            self.components = 3
             self._skip(3 * _count(words[1]), words[2])
         elif key in _CELLS[self.declared.kind]:
             self._cells(_count(words[1]), _count(words[2]))
@@ -129,6 +130,13 @@ class _Walker:
         else:
             self._attribute(key, words)
         return True
+
+    def _metadata(self) -> None:
+        """Pass what is said about the latest array, up to a blank line."""
+        while line := self.line(skip_blank=False):
+            if line.upper() == "COMPONENT_NAMES":
+                for _ in range(self.components):  # a name may be blank
+                    self.line(skip_blank=False)
 
     def _check_end(self) -> None:
         if not self.declared.kind:
@@ -186,14 +194,14 @@ class _Walker:
         else:
             raise Bad(f"'{words[0][:40]}' begins no section of such a file")
         self._declare(words[1], kind)
+        self.components = components
         self._skip(components * self.tuples, kind)
 
     def _field(self, arrays: int) -> None:
         for _ in range(arrays):
             words = self.line().split()
             if words and words[0].upper() == "METADATA":
-                while self.line(skip_blank=False):
-                    pass
+                self._metadata()
                 words = self.line().split()
             if words == ["NULL_ARRAY"]:
                 continue
@@ -202,7 +210,18 @@ class _Walker:
                 if _count(tuples) != self.tuples:
                     raise Bad(f"array '{name}' has {tuples} tuples for {self.tuples} {self.data}s")
                 self._declare(name, kind)
-            self._skip(_count(components) * _count(tuples), kind)
+            self.components = _count(components)
+            start = self.place
+            self._skip(self.components * _count(tuples), kind)
+            if not (self.binary or self.data or kind.lower() in _TEXTS):
+                self._require_numbers(start, kind.lower())
+
+    def _require_numbers(self, start: int, kind: str) -> None:
+        """VTK crashes where a word among the numbers of the file's own field data is none."""
+        self.file.seek(start)
+        words = self.file.read(self.place - start).split()
+        whole = np.uint64 if kind.startswith(("unsigned", "vtktypeu")) else np.int64
+        np.array(words, np.float64 if kind in ("float", "double") else whole)
 
     def _declare(self, name: str, kind: str) -> None:
         plain = unquote_to_bytes(name.encode("latin-1")).decode("utf-8", "replace")

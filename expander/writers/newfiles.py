@@ -55,7 +55,7 @@ class NewFiles:
             raise InputError(
                 f"{path}: the file needs {size / 1e9:.3g} GB, the disk has {free / 1e9:.3g} GB "
                 "free.",
-                "Choose another folder with output.file, or fewer copies with output.copies.",
+                "Choose another folder (output.file), or fewer copies (output.copies).",
             )
         handle, name = tempfile.mkstemp(prefix=".seamfold-", suffix=".part", dir=path.parent)
         file = open(handle, "wb", buffering=0)  # noqa: SIM115  closed in __exit__
@@ -86,9 +86,9 @@ class NewFiles:
         if isinstance(error, OSError):
             raise InputError(
                 f"{self._opening} cannot be written: {error.strerror or error}.",
-                "Free some space or choose another folder with output.file."
+                "Free some space or choose another folder."
                 if error.errno in _FULL
-                else "Choose another folder with output.file, or make this one writable.",
+                else "Choose another folder, or make this one writable.",
             ) from None
 
 
