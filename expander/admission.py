@@ -11,10 +11,12 @@ from expander.casefile import CaseFile, CaseTable
 from expander.cells import require_known
 from expander.errors import InputError
 from expander.fields import Field
+from expander.frames import Cylindrical
+from expander.groups import Group
 from expander.loadcases import LoadCase, Result
 from expander.model import Model
-from expander.placements import Floats
 from expander.readers import read_model
+from expander.resolve import acting
 
 
 def read_models(case: CaseFile, tables: list[CaseTable], allow_nan: bool) -> list[Model]:
@@ -152,8 +154,55 @@ def check_constant(
                     )
 
 
-def check_storage(f: Field, Q: Floats) -> None:
-    try:
-        f.quantity.matrix(Q)
-    except InputError as error:
-        raise InputError(f"Field {f.name!r}: {error.found}", error.remedy) from None
+def check_storage(fields: list[Field], group: Group) -> None:
+    """Refuse a field whose stored components cannot hold its value on every copy."""
+    for f in fields:
+        for g in group.placements:
+            Q = g.Q
+            if isinstance(f.frame, Cylindrical):
+                local = f.frame.local_action(g)
+                if local is None and f.quantity.reduction.shape[0] < f.quantity.kind.full_size:
+                    raise InputError(
+                        f"Field {f.name!r}: components = {' '.join(f.quantity.components)!r} in "
+                        f"frame {f.frame.name!r} cannot hold its value on every copy, since the "
+                        "copies do not keep the frame's axis in place.",
+                        "Store all components, or in global directions.",
+                    )
+                Q = g.Q if local is None else local
+            try:
+                f.quantity.matrix(Q)
+            except InputError as error:
+                raise InputError(f"Field {f.name!r}: {error.found}", error.remedy) from None
+
+
+def check_integers(fields: list[Field], cases: tuple[LoadCase, ...], group: Group) -> None:
+    """Refuse integer fields whose number type cannot hold their values on every copy."""
+    for f in fields:
+        for c in cases:
+            values = f.values(c.model)
+            if not np.issubdtype(values.dtype, np.integer) or not len(values):
+                continue
+            low, high = values.min(axis=0).astype(float), values.max(axis=0).astype(float)
+            limits = np.iinfo(values.dtype.name)
+            for g, chi in zip(group.placements, c.chi.tolist(), strict=True):
+                Q = f.frame.local_action(g) if isinstance(f.frame, Cylindrical) else g.Q
+                A = acting(f.quantity, g.Q if Q is None else Q, chi, f.follows)
+                ends = np.where(A > 0, A, 0.0), np.where(A < 0, A, 0.0)
+                most = ends[0] @ high + ends[1] @ low
+                least = ends[0] @ low + ends[1] @ high
+                if (
+                    np.abs(A - np.rint(A)).max() > 1e-9
+                    or most.max() > limits.max
+                    or least.min() < limits.min
+                ):
+                    raise integers_too_small(f.name, values.dtype)
+
+
+def integers_too_small(name: str, dtype: np.dtype[np.generic]) -> InputError:
+    """The refusal of an integer field that would lose something."""
+    return InputError(
+        f"Field {name!r} is stored as {dtype}, which cannot hold its values on every copy "
+        "(fractions, negative or too large numbers).",
+        'Store it as a floating-point array, or declare kind = "label" if it is a number of '
+        "something.",
+    )

@@ -14,6 +14,7 @@ import numpy as np
 
 from expander.admission import (
     check_constant,
+    check_integers,
     check_linear,
     check_mesh,
     check_numbers,
@@ -24,8 +25,16 @@ from expander.admission import (
 from expander.behaviours import factors
 from expander.casefile import CaseFile, CaseTable, Direction, plane_names
 from expander.closing import Opening, check_closing
+from expander.derived import derived_notes
 from expander.errors import InputError
-from expander.fields import Field, check_load_odd, check_shear, fields_of, frames_of
+from expander.fields import (
+    Field,
+    check_invariants,
+    check_load_odd,
+    check_shear,
+    fields_of,
+    frames_of,
+)
 from expander.groups import CutPlane, CyclicAxis, Group, make_group
 from expander.loadcases import LoadCase, Result, behaviour_of, results_of
 from expander.model import Mesh
@@ -135,10 +144,11 @@ def prepare(
     check_shear(fields, group.placements)
     for c in cases:
         if c.chi.min() < 0:
-            check_load_odd(fields, c.name)
-    for f in fields:
-        for p in group.placements:
-            check_storage(f, p.Q)
+            check_load_odd(fields, f"the antisymmetric case {c.name!r}")
+    if case.sum:
+        check_invariants(fields, f"the sum {case.sum[0].name!r}")
+    check_storage(fields, group)
+    check_integers(fields, cases, group)
     check_constant(fields, cases, results)
     invalid = check_numbers(fields, cases, allow_nan)
     step("checking the copies")
@@ -146,7 +156,7 @@ def prepare(
     check_sides(mesh, group, tolerance)
     step("finding seams")
     seams = find_seams(mesh, group, tolerance)
-    notes += check_touch(mesh, group, seams, tolerance, case.seam.open == "keep apart")
+    notes += check_touch(mesh, group, seams, case.seam.open == "keep apart")
     notes += check_turns(mesh, group, seams, tolerance)
     step("resolving seams")
     nodes = seams.nodes
@@ -174,6 +184,7 @@ def prepare(
         resolved |= _resolved(mesh, fields, cases, cells, group, "cells")
         notes.append(_double_cells(cells))
     notes += _frame_notes(fields, mesh)
+    notes += derived_notes(fields, case.output.derived)
     return WholeBody(case, group, mesh, tuple(fields), cases, results, _copies(case, group),
                      seams, nodes, cells, resolved, tuple(openings), tuple(notes),
                      invalid)  # fmt: skip

@@ -5,6 +5,7 @@ from __future__ import annotations
 import difflib
 import re
 import tomllib
+import unicodedata
 from collections.abc import Mapping
 from pathlib import Path
 from typing import Annotated, Any, Literal
@@ -12,7 +13,7 @@ from typing import Annotated, Any, Literal
 from pydantic import BaseModel, BeforeValidator, ConfigDict, Field, ValidationError
 
 from expander.errors import InputError, NotYetError
-from expander.quantities import KINDS
+from expander.quantities import KINDS, LATER_KINDS
 
 Vector = Annotated[list[float], Field(min_length=3, max_length=3)]
 Direction = Literal["x", "y", "z"] | Vector
@@ -62,8 +63,8 @@ class FieldTable(Table):
     seam: SeamRule | None = None
     follows: Literal["load", "body"] | None = None
     frame: str = "global"
-    arrays: Names | None = None
-    columns: list[int] | None = None
+    arrays: Annotated[Names, Field(min_length=1)] | None = None
+    columns: Annotated[list[int], Field(min_length=1)] | None = None
     on: Literal["points", "cells"] | None = None
     unit: str | None = None
 
@@ -97,7 +98,7 @@ class SeamTable(Table):
 
 class OutputTable(Table):
     file: str | None = None
-    results: Names | None = None
+    results: Annotated[Names, Field(min_length=1)] | None = None
     copies: list[int] | None = None
     merge: bool = True
     encoding: Literal["raw"] = "raw"
@@ -126,6 +127,13 @@ class CaseFile(Table):
     source: Path | None = None
 
 
+# Other names of the trade, for the suggestion only.
+_OTHER_WORDS = {
+    "pseudovector": "axial vector",
+    "vector": "polar vector",
+    "tensor6": "symmetric tensor",
+}
+
 # Keys of the contract that later versions serve; patterns over dotted paths.
 _LATER = {
     r"model\.(step|once)": "Steps and parts modelled whole",
@@ -149,7 +157,7 @@ def read_case(path: Path, overrides: Mapping[str, Any] | None = None) -> CaseFil
         Naming file, key and allowed values.
     """
     try:
-        raw = tomllib.loads(path.read_text(encoding="utf-8"))
+        raw = tomllib.loads(path.read_text(encoding="utf-8-sig"))  # with a byte order mark or not
     except FileNotFoundError:
         raise InputError(f"{path}: there is no such case file.", "Check the path.") from None
     except IsADirectoryError:
@@ -208,10 +216,20 @@ def validate_case(raw: Mapping[str, Any], folder: Path, source: Path | None = No
     except ValidationError as error:
         raise _explained(error, where) from None
     for name, table in case.fields.items():
-        if table.kind not in KINDS and table.kind not in ("stiffness", "compliance"):
+        if table.kind in LATER_KINDS:
+            raise NotYetError(
+                f"{where}: fields.{name}.kind = {table.kind!r} belongs to the contract, but not "
+                "yet to this version.",
+                "Quantities of rank 4 come with a later version; leave the table out and give "
+                "--skip-undeclared.",
+            )
+        if table.kind not in KINDS:
             raise InputError(
                 f"{where}: fields.{name}.kind = {table.kind!r} is unknown.",
-                _suggest(table.kind, list(KINDS)) + "Expected one of: " + ", ".join(KINDS) + ".",
+                _suggest(_OTHER_WORDS.get(table.kind, table.kind), list(KINDS))
+                + "Expected one of: "
+                + ", ".join(KINDS)
+                + ".",
             )
     _check_names(case, where)
     return case
@@ -220,6 +238,15 @@ def validate_case(raw: Mapping[str, Any], folder: Path, source: Path | None = No
 def _check_names(case: CaseFile, where: str) -> None:
     """Names must be unique and refer to something."""
     planes = plane_names(case)
+    for name in [*planes, *(c.name for c in case.case), *(s.name for s in case.sum), *case.fields,
+                 *case.frames]:  # fmt: skip
+        if any(unicodedata.category(letter) == "Cc" for letter in name):
+            raise InputError(
+                f"{where}: the name {name!r} holds control characters, which no file or table can "
+                "show.",
+                "Use letters, digits, blanks and punctuation; a field keeps the array's own name "
+                "with arrays = [..].",
+            )
     _unique(planes, f"{where}: two planes are named", "Give each [[mirror]] its own name.")
     cases = [c.name for c in case.case]
     sums = [s.name for s in case.sum]
@@ -347,11 +374,28 @@ def _explained(error: ValidationError, where: str) -> InputError:
         )
     if first["type"] == "missing":
         return InputError(f"{where}: {path} is missing.", _example(str(named[-1])))
-    same = [p["msg"] for p in problems if p["loc"][: len(named)] == first["loc"][: len(named)]]
-    reasons = list(dict.fromkeys(m.replace("Input should be", "expected") for m in same))
     value = first["input"]
     shown = repr(value) if len(repr(value)) < 80 else f"a {type(value).__name__}"
+    same = [p for p in problems if p["loc"][: len(named)] == first["loc"][: len(named)]]
+    reasons = list(dict.fromkeys(_reason(p["type"], p["msg"], named) for p in same))
     return InputError(f"{where}: {path} = {shown} is not valid.", "; or ".join(reasons) + ".")
+
+
+def _reason(kind: str, message: str, named: list[Any]) -> str:
+    """What was expected, in words of the case file."""
+    name = str(named[0])
+    if name in ("mirror", "case", "sum") and len(named) == 1:
+        return f"expected tables headed [[{name}]], one for each"
+    if kind in ("model_type", "model_attributes_type", "dict_type"):
+        table = {1: f"[{name}]", 2: f"[{name}.{named[-1]}]" if name in ("fields", "frames")
+                 else f"[[{name}]]"}.get(len(named))  # fmt: skip
+        if name == "fields" and len(named) == 1:
+            table = "[fields.NAME] for each field"
+        keys = ", ".join(_TABLES.get(name, CaseFile).model_fields)
+        if table is None:  # load = {..}, terms = {..}
+            return "expected names with a value for each: { name = value }"
+        return f"expected a table {table} with the keys {keys}"
+    return message.replace("Input should be", "expected").replace("List should", "the list should")
 
 
 _UNION_PARTS = {"list", "literal", "dict", "str", "function-before"}

@@ -102,11 +102,7 @@ def _open(
     through = found.through == copy
     hint = ""
     if f.follows == "load" and (turned_over[through] <= limit * largest).all():
-        hint = (
-            " With the opposite sign it closes: the load of this case looks "
-            + ("symmetric" if case.chi[copy] < 0 else "antisymmetric")
-            + " there, change the load word."
-        )
+        hint = " With the opposite sign it closes: " + _other_word(group, case, copy)
     return CheckFailed(
         f"Field {f.name!r} does not close along the seam of the copy {group.words(copy)} "
         f"(case {case.name!r}, {case.behaviour.words()}): at node {node} ({at}) the model has "
@@ -118,6 +114,15 @@ def _open(
         "they add up (forces), seam = \"sum\"; to keep open nodes apart, seam.open = "
         "\"keep apart\" under [seam].",
     )  # fmt: skip
+
+
+def _other_word(group: Group, case: LoadCase, copy: int) -> str:
+    odd = case.chi[copy] < 0
+    if group.axis is not None and not group.placements[copy].mirrored:
+        h = 0 if odd else group.axis.sectors // 2
+        return f"the load of this case looks like nodal_diameters = {h}."
+    word = "symmetric" if odd else "antisymmetric"
+    return f'the load of this case looks {word} there, change the load word to "{word}".'
 
 
 def _numbers(values: np.ndarray) -> str:

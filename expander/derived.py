@@ -41,12 +41,37 @@ def von_mises(q: Quantity, values: Floats) -> Floats:
 
 def principal_values(q: Quantity, values: Floats) -> Floats:
     """Largest, middle and smallest principal value, (n, 3)."""
-    return np.asarray(np.linalg.eigvalsh(full_array(q, values))[:, ::-1], dtype=float)
+    T = full_array(q, values)
+    finite = np.isfinite(T).all(axis=(1, 2))
+    found = np.full((len(T), 3), np.nan)
+    found[finite] = np.linalg.eigvalsh(T[finite])[:, ::-1]
+    return found
 
 
 def magnitude(q: Quantity, values: Floats) -> Floats:
     """Length of a vector, (n, 1)."""
     return np.asarray(np.linalg.norm(full_array(q, values), axis=1)[:, None], dtype=float)
+
+
+def derived_notes(fields: Iterable[Field], wanted: Iterable[str]) -> list[str]:
+    """What `output.derived` asks for and does not get, each a sentence."""
+    listed = list(fields)
+    notes = []
+    for word in wanted:
+        extras = [e for f in listed for e in derived_fields(f, [word])]
+        if not extras:
+            notes.append(
+                f"output.derived: {word!r} was asked for, but no field gives it (a stress is a "
+                "symmetric tensor with the word stress in its name)"
+            )
+        own = {f.name for f in listed}
+        notes += [
+            f"output.derived: {e.name!r} is an array of the model already, which is kept where it "
+            "can be copied"
+            for e in extras
+            if e.name in own
+        ]
+    return notes
 
 
 def derived_fields(f: Field, wanted: Iterable[str]) -> list[Derived]:

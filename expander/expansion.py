@@ -19,6 +19,7 @@ from expander.errors import InputError, NotYetError
 from expander.images import arrays_of
 from expander.loadcases import Result
 from expander.summary import CAUTIONS, summary
+from expander.writers.newfiles import NewFiles, check_place
 
 if TYPE_CHECKING:
     import pyvista
@@ -87,14 +88,13 @@ def targets(case: CaseFile, results: tuple[Result, ...]) -> tuple[list[Target], 
         index = None
     else:
         index = path.with_suffix(".pvd")
-        slugs: list[str] = []
-        for result in results:
-            slug = re.sub(r"[^A-Za-z0-9.-]+", "_", result.name).strip("_") or "result"
-            slugs.append(slug if slug not in slugs else f"{slug}_{len(slugs)}")
+        slugs = _file_words([r.name for r in results])
         chosen = [
             Target(r, path.with_name(f"{path.stem}_{s}.vtu"))
             for r, s in zip(results, slugs, strict=True)
         ]
+    for target in chosen:
+        check_place(target.file)
     inputs = {f.resolve() for f in input_files(case)}
     for file in [t.file for t in chosen] + ([index] if index else []):
         if file.resolve() in inputs:
@@ -103,6 +103,25 @@ def targets(case: CaseFile, results: tuple[Result, ...]) -> tuple[list[Target], 
                 "Choose another output.file.",
             )
     return chosen, index
+
+
+def _file_words(names: list[str]) -> list[str]:
+    """Parts of file names, different from each other also where case is not told apart.
+
+    >>> _file_words(["one ear", "one_ear", "ONE EAR"])
+    ['one_ear', 'one_ear_2', 'ONE_EAR_3']
+    """
+    found: list[str] = []
+    for name in names:
+        word = re.sub(r"[^A-Za-z0-9.-]+", "_", name).strip("_.") or "result"
+        taken = {w.lower() for w in found}
+        number = 1
+        unique = word
+        while unique.lower() in taken:
+            number += 1
+            unique = f"{word}_{number}"
+        found.append(unique)
+    return found
 
 
 def _default_name(case: CaseFile) -> str:
@@ -129,6 +148,7 @@ def field_data(body: WholeBody, result: Result, hashes: dict[str, str]) -> dict[
         ],
         "assumptions": list(body.notes) or ["none"],
         "cautions": list(CAUTIONS),
+        "unit": [body.case.model.unit or ""],
         "program": [f"seamfold {program_version()}"],
         "input_sha256": [f"{name} {digest}" for name, digest in hashes.items()],
     }
@@ -156,7 +176,6 @@ class Expansion:
 
     def write(self, advance: Advance = lambda done: None) -> None:
         """Write all results; each file appears only when all are whole."""
-        from expander.writers.newfiles import NewFiles
         from expander.writers.pvd import write_pvd
         from expander.writers.vtu import write_vtu
 

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import json
 from collections.abc import Iterable, Mapping
 from dataclasses import dataclass, replace
 
@@ -15,7 +16,7 @@ from expander.frames import Cylindrical, Frame, Global
 from expander.model import Model
 from expander.placements import Floats, Placement
 from expander.quantities import Quantity, quantity
-from expander.tradewords import stress_odd, trade_word
+from expander.tradewords import not_linear, stress_odd, trade_word
 
 ADDED_ARRAYS = ("copy", "sector_cell", "sector_point")
 _OF_PLANE_MODELS = {("polar vector", 2), ("axial vector", 1), ("symmetric tensor", 3),
@@ -57,7 +58,8 @@ class Field:
     @property
     def summable(self) -> bool:
         """Whether results of several cases may be added."""
-        return self.quantity.linear and self.follows == "load" and not stress_odd(self.name)
+        linear = self.quantity.linear and not stress_odd(self.name) and not not_linear(self.name)
+        return linear and self.follows == "load"
 
     @property
     def constant(self) -> bool:
@@ -144,7 +146,7 @@ def fields_of(
             else:
                 unknown.append((on, name, size))
     if unknown and not skip_undeclared:
-        raise _undeclared(model, unknown, odd)
+        raise _undeclared(model, unknown, case, odd)
     notes += [f"array {n!r} on {on} is undeclared and was left out" for on, n, _ in unknown]
     return fields, notes
 
@@ -166,11 +168,11 @@ def _declared(
     columns = None
     size = shapes[0] if len(arrays) == 1 else len(arrays)
     if table.columns is not None:
-        bad = [c for c in table.columns if not 1 <= c <= size]
+        bad = [c for c in table.columns if not 1 <= c <= size or table.columns.count(c) > 1]
         if bad or len(arrays) > 1 or not table.columns:
             raise InputError(
                 f"{path}.columns = {table.columns} does not fit {arrays[0]!r} of {size} columns.",
-                f"Expected numbers from 1 to {size}, for a single array.",
+                f"Expected different numbers from 1 to {size}, for a single array.",
             )
         columns = tuple(c - 1 for c in table.columns)
         size = len(columns)
@@ -255,27 +257,33 @@ def _plain(name: str, on: str, array: NDArray[np.generic], frame: Frame) -> Fiel
     return Field(name, q, follows, seam, frame, on, (name,), None, "", why)
 
 
-def _undeclared(model: Model, unknown: list[tuple[str, str, int]], odd: bool) -> InputError:
+_KINDS_BY_SIZE = {
+    1: "scalar, invariant, pseudoscalar or label",
+    2: "polar vector",
+    3: "polar vector, axial vector or principal values",
+    4: "symmetric tensor",
+    6: "symmetric tensor; translations and rotations are two fields, a polar vector with "
+       "columns = [1, 2, 3] and an axial vector with columns = [4, 5, 6]",
+    9: "tensor",
+}  # fmt: skip
+
+
+def _undeclared(model: Model, unknown: list[tuple[str, str, int]], case: CaseFile,
+                odd: bool) -> InputError:  # fmt: skip
     lines = []
+    taken = set(case.fields)
     for on, name, size in unknown:
-        kinds = {
-            1: "scalar, invariant, pseudoscalar or label",
-            2: "polar vector",
-            3: "polar vector, axial vector or principal values",
-            4: "symmetric tensor",
-            6: "symmetric tensor; for translations and rotations two fields with "
-            f'arrays = ["{name}"], columns = [1, 2, 3] and [4, 5, 6]',
-            9: "tensor",
-        }.get(size, "?")
-        key = name if name.replace("_", "").replace("-", "").isalnum() else f'"{name}"'
-        clash = name in ADDED_ARRAYS or name in (
-            model.cell_data if on == "points" else model.point_data
-        )
-        if clash:
-            key = f"{name}_on_{on}"
-        lines.append(f'[fields.{key}]\n  kind = "..."  # {size} component(s): {kinds}')
-        if clash:
-            lines.append(f'arrays = ["{name}"]\n  on = "{on}"')
+        other = model.cell_data if on == "points" else model.point_data
+        key = name
+        if name in ADDED_ARRAYS or name in other or key in taken or not name.isprintable():
+            key = f"{name}_on_{on}" if name.isprintable() else f"array_on_{on}"
+        taken.add(key)
+        kinds = _KINDS_BY_SIZE.get(size, "label, or parts of it with columns = [..]")
+        lines.append(f'[fields.{_toml_key(key)}]\n  kind = "..."  # {size} component(s): {kinds}')
+        if key != name:
+            lines.append(f"arrays = [{_toml_text(name)}]")
+        if name in other:
+            lines.append(f'on = "{on}"')
     names = ", ".join(f"{n!r} on {on} ({s})" for on, n, s in unknown)
     because = (
         " With an antisymmetric load even a single number must be declared: a scalar changes "
@@ -283,12 +291,25 @@ def _undeclared(model: Model, unknown: list[tuple[str, str, int]], odd: bool) ->
         if odd and any(s == 1 for _, _, s in unknown)
         else ""
     )
+    option = (
+        "" if case.source else '\n  or give options such as --field "NAME=polar vector",'
+    )  # fmt: skip
     return InputError(
         f"{model.source}: arrays that neither the case nor their name explains: {names}.{because}",
         "Add to the case file:\n  "
         + "\n  ".join(lines)
-        + "\n  or leave them out with --skip-undeclared.",
+        + f"{option}\n  or leave them out with --skip-undeclared.",
     )
+
+
+def _toml_key(name: str) -> str:
+    bare = name.isascii() and name.replace("_", "").replace("-", "").isalnum()
+    return name if bare else _toml_text(name)
+
+
+def _toml_text(text: str) -> str:
+    """A TOML basic string; JSON's escapes are TOML's."""
+    return json.dumps(text, ensure_ascii=False).replace("\x7f", "\\u007f")
 
 
 def check_shear(fields: Iterable[Field], placements: Iterable[Placement]) -> None:
@@ -311,22 +332,36 @@ def check_shear(fields: Iterable[Field], placements: Iterable[Placement]) -> Non
                 )
 
 
-def check_load_odd(fields: Iterable[Field], case_name: str) -> None:
+def check_load_odd(fields: Iterable[Field], where: str) -> None:
     """Refuse values that no rule can copy under an antisymmetric load (chi = -1)."""
+    listed = list(fields)
+    for field in listed:
+        if field.follows == "body":
+            continue
+        if stress_odd(field.name) and field.quantity.size == 1:
+            raise InputError(
+                f"Field {field.name!r} in {where}: a lone principal, signed or interaction measure "
+                "is odd in the stress but not linear; the largest principal stress of a copy is "
+                "minus the smallest of the sector.",
+                'Give all three principal values as one field (kind = "principal values"), or '
+                'leave it out and ask for output.derived = ["principal stresses"].',
+            )
+        if not_linear(field.name):
+            raise InputError(
+                f"Field {field.name!r} in {where}: it is not linear in the response, so an "
+                "antisymmetric load has no rule for it.",
+                "Leave it out, and use the displacement gradient in its place.",
+            )
+    check_invariants(listed, where)
+
+
+def check_invariants(fields: Iterable[Field], where: str) -> None:
+    """Refuse an invariant, told by its name, that is declared to be something linear."""
     for field in fields:
         word = trade_word(field.name, field.quantity.size)
-        if stress_odd(field.name) and field.quantity.size == 1 and field.follows == "load":
+        if word and word.kind == "invariant" and field.summable:
             raise InputError(
-                f"Field {field.name!r} in the antisymmetric case {case_name!r}: a lone principal, "
-                "signed or interaction measure is odd in the stress but not linear; the largest "
-                "principal stress of a copy is minus the smallest of the sector.",
-                "Give all three principal values as one field (kind = \"principal values\"), or "
-                "leave it out and ask for output.derived = [\"principal stresses\"].",
-            )  # fmt: skip
-        if word and word.kind == "invariant" and field.quantity.linear and field.follows == "load":
-            raise InputError(
-                f"Field {field.name!r} is declared a {field.kind}, which changes sign in the "
-                f"antisymmetric case {case_name!r}; by its name it is an invariant, which does "
-                "not.",
+                f"Field {field.name!r} is declared a {field.kind}, which changes sign with the "
+                f"load and adds up, in {where}; by its name it is an invariant, which does not.",
                 f'Write kind = "invariant" under [fields.{field.name}].',
             )

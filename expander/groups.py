@@ -184,8 +184,8 @@ def _check_planes(planes: tuple[CutPlane, ...]) -> None:
                     "images never close, the body would be an endless row of copies.",
                     "Keep one of the two [[mirror]] tables.",
                 )
-            turns = Fraction(angle / 180.0).limit_denominator(MOST_COPIES // 2)
-            if abs(float(turns) * 180.0 - angle) > 1e-5:
+            turns = Fraction(angle / 180.0).limit_denominator(MOST_COPIES // 4)
+            if abs(float(turns) * 180.0 - angle) > 1e-6:
                 raise InputError(
                     f"Planes {b.name!r} and {a.name!r} meet at {angle:.6f} degrees, which is no "
                     "whole part of 180 degrees: their images never close.",
@@ -282,6 +282,12 @@ def _key(p: Placement, scale: float) -> Floats:
 
 def _never_closes(planes: tuple[CutPlane, ...], axis: CyclicAxis | None) -> InputError:
     names = ", ".join(repr(p.name) for p in planes)
+    pairs = [
+        f"{a.name!r} and {b.name!r} meet at "
+        f"{np.rad2deg(np.arccos(np.clip(abs(a.normal @ b.normal), 0, 1))):.6g} degrees"
+        for i, b in enumerate(planes)
+        for a in planes[:i]
+    ]
     with_axis = f" and the axis of {axis.sectors} sectors" if axis else ""
     angles = [
         f"{p.name!r} and the axis meet at "
@@ -289,7 +295,7 @@ def _never_closes(planes: tuple[CutPlane, ...], axis: CyclicAxis | None) -> Inpu
         for p in planes
         if axis is not None
     ]
-    detail = f" ({'; '.join(angles)})" if angles else ""
+    detail = f" ({'; '.join(pairs + angles)})" if pairs or angles else ""
     return InputError(
         f"The copies made by the planes {names}{with_axis} never close: more than {MOST_COPIES} "
         f"were found{detail}.",

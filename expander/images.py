@@ -23,10 +23,10 @@ from threading import Lock
 import numpy as np
 from numpy.typing import NDArray
 
+from expander.admission import integers_too_small
 from expander.body import WholeBody
 from expander.bodymesh import BodyMesh
 from expander.derived import Derived, derived_fields
-from expander.errors import InputError
 from expander.fields import Field
 from expander.frames import Cylindrical
 from expander.loadcases import Result
@@ -202,12 +202,7 @@ def _as(values: Block, dtype: np.dtype[np.generic], f: Field) -> Block:
         if np.abs(whole - values).max(initial=0.0) > 1e-9 or (
             whole.size and (whole.min() < limits.min or whole.max() > limits.max)
         ):
-            raise InputError(
-                f"Field {f.name!r} is stored as {dtype}, which cannot hold its values on every "
-                "copy (fractions or negative numbers).",
-                'Store it as a floating-point array, or declare kind = "label" if it is a number '
-                "of something.",
-            )
+            raise integers_too_small(f.name, dtype)
         return np.asarray(whole.astype(dtype))
     return np.asarray(values.astype(dtype))
 
@@ -224,7 +219,10 @@ def _field_arrays(body: WholeBody, result: Result, f: Field) -> Iterator[BodyArr
 
     yield BodyArray(f.name, f.on, dtype, component_names(f), numbering.first, numbering.total,
                     block, signed.release)  # fmt: skip
+    there = [g.name for g in fields_in(body, result)]
     for extra in derived_fields(f, body.case.output.derived):
+        if extra.name in there:
+            continue  # the model has its own; said in the notes
         yield _derived_array(body, signed, f, extra, numbering)
 
 
@@ -261,8 +259,9 @@ def times(values: Floats, A: Floats) -> Floats:
     threads of its own, which would wait for the writers' threads."""
     out = np.empty((len(values), len(A)))
     step = max(1, _BLAS_ALONE // A.size)
-    for row in range(0, len(values), step):
-        np.matmul(values[row : row + step], A.T, out=out[row : row + step])
+    with np.errstate(invalid="ignore"):  # values that are not finite were accepted before
+        for row in range(0, len(values), step):
+            np.matmul(values[row : row + step], A.T, out=out[row : row + step])
     return out
 
 
@@ -303,7 +302,7 @@ def _local_image(
         out, general = image.astype(float), np.flatnonzero(frame.radius(here) <= body.on_axis)
     if len(general):
         turned = to_global(f, values[general], here[general], body.on_axis)
-        moved = turned @ acting(f.quantity, placement.Q, chi, f.follows).T
+        moved = turned @ acting(f.quantity.complete, placement.Q, chi, f.follows).T
         out[general] = from_global(f, moved, placement.apply(here[general]), body.on_axis)
     return out
 

@@ -138,7 +138,7 @@ def shared_cells(mesh: Mesh, nodes: Classes, group: Group) -> Classes:
     found: list[tuple[Ints, Ints, Ints]] = []
     token = np.random.default_rng(21).integers(0, 2**62, size=mesh.point_count, dtype=np.int64)
     parts = list(blocks(mesh, candidates)) if len(candidates) else []
-    keys_by_type = [(t, np.sort(token[block], axis=1), cells) for t, cells, block in parts]
+    keys_by_type = [(t, _ranked(np.sort(token[block], axis=1)), cells) for t, cells, block in parts]
     for s in np.unique(nodes.via).tolist():
         if s == 0:
             continue
@@ -150,7 +150,7 @@ def shared_cells(mesh: Mesh, nodes: Classes, group: Group) -> Classes:
             whole = np.flatnonzero((image >= 0).all(axis=1))
             if not len(whole):
                 continue
-            wanted = np.sort(token[image[whole]], axis=1)
+            wanted = np.hstack([np.sort(token[image[whole]], axis=1), keys[whole, -1:]])
             pool, where = np.unique(np.vstack([keys, wanted]), axis=0, return_inverse=True)
             where = where.ravel()
             cell_of = np.full(len(pool), -1, dtype=np.int64)
@@ -165,3 +165,16 @@ def shared_cells(mesh: Mesh, nodes: Classes, group: Group) -> Classes:
     item, via, source = (np.concatenate([f[k] for f in found]) for k in range(3))
     order = np.lexsort((source, via, item))
     return Classes(item[order], via[order], source[order])
+
+
+def _ranked(keys: Ints) -> Ints:
+    """Rows with one more column: how many equal rows came before, to tell cells on the same nodes
+    (two springs side by side) from each other."""
+    _, which = np.unique(keys, axis=0, return_inverse=True)
+    which = which.ravel()
+    order = np.argsort(which, kind="stable")
+    sorted_ = which[order]
+    first = np.searchsorted(sorted_, sorted_)
+    rank = np.empty(len(keys), dtype=np.int64)
+    rank[order] = np.arange(len(keys)) - first
+    return np.column_stack([keys, rank])

@@ -25,6 +25,7 @@ from expander.errors import InputError, NotYetError
 from expander.placements import Floats
 
 _AXES = "xyz"
+_OPPOSITE = {"largest": "smallest", "middle": "middle", "smallest": "largest"}
 
 
 @dataclass(frozen=True)
@@ -49,6 +50,11 @@ class Kind:
     response: str = "linear"
     storages: tuple[str, ...] = ("value",)
 
+    @property
+    def full_size(self) -> int:
+        """Components of a value in any directions: independent ones of a symmetric tensor."""
+        return 6 if self.symmetric else int(3**self.rank)
+
 
 _VECTOR = ("x y z", "x y")
 _FULL = "xx xy xz yx yy yz zx zy zz"
@@ -70,6 +76,7 @@ KINDS = {
         Kind("label", 0, response="even"),
     )
 }
+COMPLETE = {1: "x y z", 2: _FULL}  # storages that can hold a value in any directions
 LATER_KINDS = ("stiffness", "compliance")
 
 
@@ -149,12 +156,29 @@ class Quantity:
         return np.asarray(sign * A + 0.0)
 
     @cached_property
+    def complete(self) -> Quantity:
+        """The same quantity with all components stored, to be turned in any way."""
+        names = COMPLETE.get(self.kind.rank)
+        return self if names is None else Quantity(self.kind, tuple(names.split()))
+
+    @cached_property
+    def completion(self) -> Floats:
+        """(complete size, size): stored components to all components."""
+        return np.asarray(self.complete.gather @ self.spread)
+
+    @cached_property
+    def reduction(self) -> Floats:
+        """(size, complete size): all components to the stored ones."""
+        return np.asarray(self.gather @ self.complete.spread)
+
+    @cached_property
     def odd(self) -> Floats:
         """(size, size): what a load behaviour of -1 does to a value that follows the load."""
         if self.kind.response == "linear":
             return -np.eye(self.size)
         if self.kind.response == "ordered":
-            return -np.eye(self.size)[::-1]
+            turned = [_OPPOSITE[name] for name in self.components]
+            return -np.array([[float(a == b) for b in self.components] for a in turned])
         return np.eye(self.size)
 
     @property
@@ -219,19 +243,31 @@ def _checked_names(row: Kind, components: str, size: int) -> tuple[str, ...]:
     bad = [n for n in names if n not in allowed]
     if bad or len(set(names)) != len(names):
         what = f"{bad[0]!r} is not a component" if bad else "a component is named twice"
+        both = (
+            " Translations and rotations in one array are two fields of kind polar vector and "
+            'axial vector: give each its columns = [..] and arrays = [".."].'
+            if row.rank == 1 and bad
+            else ""
+        )
         raise InputError(
             f"components = {components!r}: {what} of a {row.name}.",
-            f"Expected names from: {expected}.",
+            f"Expected names from: {expected}.{both}",
         )
     if len(names) != size:
         raise InputError(
             f"components = {components!r} names {len(names)}, the array has {size}.",
             "Name one component for each column of the array, in its order.",
         )
-    both = [n for n in names if row.symmetric and n != n[::-1] and n[::-1] in names]
-    if both and len(names) != 9:
+    if row.response == "ordered" and len(names) != 3:
         raise InputError(
-            f"components = {components!r} names {both[0]!r} and {both[0][::-1]!r}, which are one "
+            f"components = {components!r}: principal values are handled as a triple only, since "
+            "their order turns round under an antisymmetric load.",
+            f"Expected all of: {expected}.",
+        )
+    doubled = [n for n in names if row.symmetric and n != n[::-1] and n[::-1] in names]
+    if doubled and len(names) != 9:
+        raise InputError(
+            f"components = {components!r} names {doubled[0]!r} and {doubled[0][::-1]!r}, which are one "
             "component of a symmetric tensor.",
             "Name each shear component once.",
         )

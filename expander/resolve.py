@@ -78,7 +78,7 @@ def resolve(
     weights : (s,) elements at each shared node, for "recovered".
     on_axis : distance within which a node counts as on the axis of a cylindrical frame.
     """
-    q = field.quantity
+    q = field.quantity if field.frame.letters == "x y z" else field.quantity.complete
     if not len(classes.item):
         none = np.empty((0, q.size))
         return Resolved(None, none, none, np.empty(0), np.empty(0, dtype=np.int64))
@@ -89,7 +89,8 @@ def resolve(
     vias, first = np.unique(classes.via[order], return_index=True)
     for s, rows in zip(vias.tolist(), np.split(order, first[1:]), strict=True):
         A = acting(q, group.placements[s].Q, float(chi[s]), field.follows)
-        terms[rows] = own[source[rows]] @ A.T
+        with np.errstate(invalid="ignore"):  # values that are not finite were accepted before
+            terms[rows] = own[source[rows]] @ A.T
     apart = np.linalg.norm(terms - own[classes.row], axis=1)
     farthest = _largest(apart, classes)
     # Values that are not finite were accepted and counted before; they show no jump.
@@ -119,18 +120,23 @@ def _largest(apart: Floats, classes: Classes) -> NDArray[np.int64]:
 def to_global(
     field: Field, values: NDArray[np.generic], places: NDArray[np.floating], on_axis: float
 ) -> Floats:
-    """Components in the field's frame turned to global directions, (n, k)."""
+    """Components in the field's frame turned to global directions.
+
+    (n, k) stored components; in a local frame (n, all components), since a storage that is enough
+    there, such as that of an axisymmetric stress, need not be enough in global directions.
+    """
     numbers = values.astype(float)
     if isinstance(field.frame, Cylindrical):
-        return turn_each(field.quantity, numbers, field.frame.bases(places.astype(float), on_axis))
+        bases = field.frame.bases(places.astype(float), on_axis)
+        return turn_each(field.quantity.complete, numbers @ field.quantity.completion.T, bases)
     return numbers
 
 
 def from_global(
     field: Field, values: Floats, places: NDArray[np.floating], on_axis: float
 ) -> Floats:
-    """Components in global directions turned to the field's frame at `places`, (n, k)."""
+    """The reverse of `to_global` at `places`: (n, k) stored components."""
     if isinstance(field.frame, Cylindrical):
-        bases = field.frame.bases(places.astype(float), on_axis)
-        return turn_each(field.quantity, values, bases.transpose(0, 2, 1))
+        bases = field.frame.bases(places.astype(float), on_axis).transpose(0, 2, 1)
+        return turn_each(field.quantity.complete, values, bases) @ field.quantity.reduction.T
     return values

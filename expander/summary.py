@@ -29,8 +29,8 @@ def summary(
 ) -> dict[str, Any]:
     """Everything a reviewer needs to follow what was done.
 
-    Keys: schema, program, source, copies, planes, axis, seams, points, cells, fields, results,
-    notes, cautions; all values are plain data. Extended with new keys only; `schema` counts
+    Keys: schema, program, source, unit, copies, planes, axis, seams, points, cells, fields,
+    results, notes, cautions; all values are plain data. Extended with new keys only; `schema` counts
     changes that are not extensions.
     """
     group, seams = body.group, body.seams
@@ -40,6 +40,7 @@ def summary(
         "schema": SCHEMA,
         "program": f"seamfold {program}",
         "source": str(body.case.source or body.cases[0].model.source),
+        "unit": body.case.model.unit,
         "copies": [{"copy": g, "made": group.words(g)} for g in body.copies],
         "whole_body_copies": len(group),
         "planes": [

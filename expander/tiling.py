@@ -82,9 +82,7 @@ def _at(mesh: Mesh, node: int) -> str:
     return ", ".join(f"{c:.6g}" for c in mesh.points[node])
 
 
-def check_touch(
-    mesh: Mesh, group: Group, seams: Seams, given: float | None, keep_apart: bool
-) -> list[str]:
+def check_touch(mesh: Mesh, group: Group, seams: Seams, keep_apart: bool) -> list[str]:
     """Refuse a model that almost touches a cut plane; notes on planes that it stays clear of.
 
     With `keep_apart` a small clearance is taken as meant.
@@ -92,16 +90,15 @@ def check_touch(
     The planes are those that bound the copies next to the model, declared or implied.
     """
     notes = []
-    tolerance = Tolerance(mesh, given)
     for g in _walls(group, mesh):
         if seams.pairs.get(g):
             continue
         normal, level = next((n, d) for k, n, d in group.mirrors if k == g)
         off = np.abs(mesh.points @ normal - level)
         node = int(np.argmin(off))
-        edge = float(min(local_edges(mesh, np.array([node]))[0], tolerance.size))
+        edge = float(local_edges(mesh, np.array([node]))[0])
         name = _plane_words(group, g)
-        if off[node] < edge and not keep_apart:
+        if off[node] < edge < np.inf and not keep_apart:  # a lone mass has no edge to compare
             raise InputError(
                 f"No node lies on {name}: the nearest is node {node} at "
                 f"({_at(mesh, node)}), {off[node]:.6g} away, less than its edge of {edge:.6g}.",

@@ -60,12 +60,12 @@ TRADE_WORDS = (
     TradeWord(r"(lumped_|nodal_)?mass", "scalar", seam="sum", follows="body"),
     # Recovered from elements
     TradeWord(
-        r"(.+_)?(stress|stresses|strain|strains)", "symmetric tensor", (3, 4, 6, 9),
+        r"(?!couple_)(.+_)?(stress|stresses|strain|strains)", "symmetric tensor", (3, 4, 6, 9),
         seam="recovered",
     ),
     TradeWord(r"(.+_)?(heat_flux|temperature_gradient)", "polar vector", (2, 3), seam="recovered"),
     TradeWord(r"curl|vorticity|magnetic_flux_density", "axial vector", (1, 3), seam="recovered"),
-    TradeWord(r"displacement_gradient|deformation_gradient", "tensor", (4, 9), seam="recovered"),
+    TradeWord(r"displacement_gradient", "tensor", (4, 9), seam="recovered"),
     # Carried with the body
     TradeWord(r"(.+_)?thickness|density", "scalar", follows="body"),
     TradeWord(r"(.+_)?normals?", "polar vector", (2, 3), follows="body"),
@@ -77,6 +77,8 @@ TRADE_WORDS = (
 
 # Odd in the response though not linear: no rule copies one of them under an antisymmetric load.
 STRESS_ODD = re.compile(r"(.+_)?(principal|signed|interaction|failure_index|reserve_factor)(_.+)?")
+# Not linear in the response, whatever its kind: F is one plus a gradient.
+NOT_LINEAR = re.compile(r"(.+_)?(deformation_gradient|stretch)(_.+)?")
 
 
 def normalised(name: str) -> str:
@@ -103,6 +105,11 @@ def trade_word(name: str, size: int) -> TradeWord | None:
         if size in word.sizes and re.fullmatch(word.pattern, plain):
             return word
     return None
+
+
+def not_linear(name: str) -> bool:
+    """Whether the name is that of a measure that is neither odd nor even in the response."""
+    return bool(NOT_LINEAR.fullmatch(normalised(name)))
 
 
 def stress_odd(name: str) -> bool:

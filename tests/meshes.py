@@ -10,6 +10,7 @@ from typing import Any
 import numpy as np
 import pyvista
 from scipy.spatial.transform import Rotation
+from vtkmodules.util.numpy_support import vtk_to_numpy
 
 from expander.casefile import CaseFile, validate_case
 from expander.model import Mesh
@@ -231,6 +232,20 @@ def placed(tables: Mapping[str, Any], R: np.ndarray, t: np.ndarray) -> dict[str,
         axis = R @ direction(tables["cyclic"].get("axis", "z"))
         out["cyclic"] = {**tables["cyclic"], "axis": axis.tolist(), "point": t.tolist()}
     return out
+
+
+def cell_nodes(grid: pyvista.UnstructuredGrid) -> list[np.ndarray]:
+    """Node numbers of each cell of a grid."""
+    cells = grid.GetCells()
+    offsets, flat = (
+        vtk_to_numpy(a) for a in (cells.GetOffsetsArray(), cells.GetConnectivityArray())
+    )
+    return np.split(flat, offsets[1:-1])
+
+
+def centres(points: np.ndarray, nodes: Sequence[Sequence[int]]) -> np.ndarray:
+    """Mean position of the nodes of each cell, (m, 3)."""
+    return np.array([points[list(n)].mean(axis=0) for n in nodes])
 
 
 def case_of(

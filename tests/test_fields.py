@@ -145,14 +145,23 @@ def test_name_that_decides_nothing(name: str, size: int) -> None:
     assert trade_word(name, size) is None
 
 
-def test_trade_words_in_a_model(tmp_path: Path) -> None:
+@pytest.mark.parametrize("plane", [False, True])
+def test_trade_words_in_a_model(tmp_path: Path, plane: bool) -> None:
     """What a name decides reaches the summary, with the reason."""
+    grid = box()
+    if plane:
+        grid = pyvista.Plane(center=(1, 1, 0), i_size=2, j_size=2, i_resolution=4, j_resolution=2)
+        grid = grid.cast_to_unstructured_grid()
+        grid.clear_data()
     chosen: dict[str, tuple[int, str, str, str]] = {}
     for name, size, kind, seam, follows in BY_NAME:
-        chosen.setdefault(name, (size, kind, seam, follows))
-    grid = box()
+        only_plane = (kind, size) in (("polar vector", 2), ("axial vector", 1)) or (
+            kind == "symmetric tensor" and size < 6
+        )
+        if only_plane == plane:
+            chosen[name] = (size, kind, seam, follows)
     for name, (size, *_) in chosen.items():
-        grid.cell_data[name] = np.zeros((grid.n_cells, size)) if size > 1 else np.zeros(8)
+        grid.cell_data[name] = np.zeros((8, size)) if size > 1 else np.zeros(8)
     found = decided(case_of(tmp_path, grid))
     assert found.keys() == chosen.keys()
     for name, (_, kind, seam, follows) in chosen.items():
@@ -162,6 +171,15 @@ def test_trade_words_in_a_model(tmp_path: Path) -> None:
         assert f["seam"] == ("lowest copy" if own else seam), name
         expected = {"body": "body", "load": "nothing" if kind == "invariant" else "load"}
         assert f["follows"] == expected[follows], name
+
+
+@pytest.mark.parametrize(("name", "size"), [("displacement", 2), ("rotation", 1), ("stress", 3)])
+def test_plane_storage_on_solids_must_be_declared(tmp_path: Path, name: str, size: int) -> None:
+    """Three components called stress may be a traction, two of a displacement a mode's pair."""
+    grid = box()
+    grid.cell_data[name] = np.zeros((8, size)) if size > 1 else np.zeros(8)
+    with pytest.raises(InputError, match=name):
+        plan(case_of(tmp_path, grid, mirror=[{"normal": "x", "load": "antisymmetric"}]))
 
 
 @pytest.mark.parametrize("name", ["moment", "shell_moment", "bending_moment"])
@@ -182,6 +200,19 @@ def test_couple_stress_is_no_ordinary_tensor(tmp_path: Path) -> None:
     except InputError:
         return
     assert kind == "axial tensor"
+
+
+def test_deformation_gradient_is_not_linear(tmp_path: Path) -> None:
+    """Of a body that does not move it is the unit tensor everywhere, whatever the load word."""
+    grid = box()
+    grid.cell_data["deformation_gradient"] = np.tile(np.eye(3).ravel(), (8, 1))
+    case = case_of(tmp_path, grid, mirror=[{"normal": "x", "load": "antisymmetric"}])
+    try:
+        body = expand(case)
+    except InputError:
+        return
+    right = np.tile(np.eye(3).ravel(), (16, 1))
+    np.testing.assert_array_equal(body.cell_data["deformation_gradient"], right)
 
 
 def test_declared_wins_over_the_name(tmp_path: Path) -> None:
@@ -546,16 +577,17 @@ def test_local_values_are_compared_in_global_directions(tmp_path: Path) -> None:
     """In the plane x = 0 the frame about z at (0, -1, 0) is the same on both sides; a vector that
     is radial there is tangential to the plane, so it closes."""
     grid = box()
-    E = local_bases(grid.points + [0.0, 1.0, 0.0])
+    below = np.array([0.0, -1.0, 0.0])
+    E = local_bases(grid.points - below)
     outwards = np.einsum("nji,j->ni", E, [0.0, 1.0, 0.0])
     grid.point_data["displacement"] = outwards
     case = case_of(
         tmp_path, grid,
-        frames={"here": {"type": "cylindrical", "axis": "z", "point": [0.0, -1.0, 0.0]}},
+        frames={"here": {"type": "cylindrical", "axis": "z", "point": below.tolist()}},
         fields={"displacement": {"kind": "polar vector", "frame": "here"}},
     )  # fmt: skip
     body = expand(case)
-    back = np.einsum("nij,nj->ni", local_bases(body.points + [0.0, 1.0, 0.0]),
+    back = np.einsum("nij,nj->ni", local_bases(body.points - below),
                      body.point_data["displacement"])  # fmt: skip
     np.testing.assert_allclose(back, np.tile([0.0, 1.0, 0.0], (45, 1)), atol=1e-14)
 

@@ -379,6 +379,15 @@ def test_too_many_copies_are_refused_as_such(sectors: int, planes) -> None:
     assert "never close" not in str(caught.value)
 
 
+@pytest.mark.parametrize("off", [1e-17, 3e-13])
+@pytest.mark.parametrize("point", [[0, 0, 0], [0, 0, 250.0], [40.0, 0, -3.0]])
+def test_round_off_in_a_point_is_no_distance(off: float, point) -> None:
+    """Points read off a model carry round-off; a plane is not beside the axis for that."""
+    noisy = np.add(point, [off, -off, off])
+    group = make_group([plane("cut", Y, noisy), plane("mid", Z, point)], axis(5, Z, point))
+    assert len(group) == 20
+
+
 # --- load behaviours ----------------------------------------------------------------------------
 
 

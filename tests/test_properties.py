@@ -22,7 +22,7 @@ import pytest
 import pyvista
 from hypothesis import given, settings
 from hypothesis import strategies as st
-from meshes import Sector, box, case_of, copies_of, placed, ring, somewhere
+from meshes import Sector, box, case_of, cell_nodes, centres, copies_of, placed, ring, somewhere
 from scipy.spatial import cKDTree
 
 from expander import expand
@@ -203,11 +203,6 @@ def analytic(tables: Tables, centre: np.ndarray):
     }  # fmt: skip
 
 
-def centres(grid_points: np.ndarray, connectivity: np.ndarray, offsets: np.ndarray) -> np.ndarray:
-    sums = np.add.reduceat(grid_points[connectivity], offsets[:-1], axis=0)
-    return sums / np.diff(offsets)[:, None]
-
-
 @dataclass
 class Expanded:
     sector: Sector
@@ -228,7 +223,7 @@ def expanded(tmp_path_factory):
             sector, tables = sector.moved(R, t), placed(tables, R, t)
             fields = analytic(tables, t + 0.3)
             points = {k: f(sector.points) for k, (_, f) in fields.items()}
-            middle = centres(sector.points, sector.connectivity, sector.offsets)
+            middle = centres(sector.points, [n for _, n in sector.cells])
             cells = {f"{k}_on_cells": f(middle) for k, (_, f) in fields.items()}
             declared = {k: d for k, (d, _) in fields.items()}
             declared |= {f"{k}_on_cells": d for k, (d, _) in fields.items()}
@@ -287,7 +282,7 @@ def test_fields_are_the_analytic_ones_everywhere(name: str, expanded) -> None:
 @pytest.mark.parametrize("name", BODIES)
 def test_fields_on_cells(name: str, expanded) -> None:
     e = expanded(name)
-    middle = centres(e.body.points, e.body.cell_connectivity, e.body.offset)
+    middle = centres(e.body.points, cell_nodes(e.body))
     for key, (_, f) in e.fields.items():
         want = f(middle)
         np.testing.assert_allclose(
@@ -346,9 +341,7 @@ def test_copy_0_is_the_input(name: str, expanded) -> None:
     np.testing.assert_array_equal(e.body.points[:n], e.sector.points)
     np.testing.assert_array_equal(e.body.point_data["sector_point"][:n], np.arange(n))
     np.testing.assert_array_equal(e.body.cell_data["copy"][:m], 0)
-    np.testing.assert_array_equal(
-        e.body.cell_connectivity[: len(e.sector.connectivity)], e.sector.connectivity
-    )
+    assert [n.tolist() for n in cell_nodes(e.body)[:m]] == [n for _, n in e.sector.cells]
     times = np.bincount(e.body.point_data["sector_point"], minlength=n)
     inside = times == len(np.unique(e.body.cell_data["copy"]))
     assert inside.any()
@@ -357,7 +350,7 @@ def test_copy_0_is_the_input(name: str, expanded) -> None:
         want, found = f(e.sector.points), np.asarray(e.body.point_data[key][:n])
         np.testing.assert_array_equal(found[inside], want[inside], err_msg=key)
         np.testing.assert_allclose(found, want, rtol=0, atol=1e-11 * scale(want), err_msg=key)
-        middle = centres(e.sector.points, e.sector.connectivity, e.sector.offsets)
+        middle = centres(e.sector.points, [n for _, n in e.sector.cells])
         np.testing.assert_array_equal(e.body.cell_data[f"{key}_on_cells"][:m], f(middle))
 
 
@@ -372,8 +365,8 @@ KINDS = {
 
 def as_model(body: pyvista.UnstructuredGrid, copy: int | None = None) -> Sector:
     """The cells of a body, or of one copy of it when nothing was merged, as a sector."""
-    nodes = np.split(body.cell_connectivity, body.offset[1:-1])
-    cells = list(zip(body.celltypes.tolist(), [n.tolist() for n in nodes], strict=True))
+    nodes = [n.tolist() for n in cell_nodes(body)]
+    cells = list(zip(body.celltypes.tolist(), nodes, strict=True))
     if copy is None:
         return Sector(np.array(body.points), cells)
     n = body.n_points // len(np.unique(body.cell_data["copy"]))
@@ -429,8 +422,8 @@ def same_body(one: pyvista.UnstructuredGrid, other: pyvista.UnstructuredGrid, ke
     assert (np.sort(at) == np.arange(other.n_points)).all()
 
     def cells(grid, number):
-        nodes = np.split(number[grid.cell_connectivity], grid.offset[1:-1])
-        return sorted((int(t), sorted(n)) for t, n in zip(grid.celltypes, nodes, strict=True))
+        nodes = [sorted(number[n].tolist()) for n in cell_nodes(grid)]
+        return sorted(zip(grid.celltypes.tolist(), nodes, strict=True))
 
     assert cells(one, at) == cells(other, np.arange(other.n_points))
     for key in keys:

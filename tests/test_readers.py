@@ -9,6 +9,7 @@ from __future__ import annotations
 
 import contextlib
 import io
+import os
 import re
 import resource
 import struct
@@ -16,6 +17,7 @@ import subprocess
 import sys
 import zipfile
 from pathlib import Path
+from types import SimpleNamespace
 
 import meshio
 import numpy as np
@@ -35,6 +37,7 @@ from vtkmodules.vtkCommonDataModel import (
     vtkCellArray,
     vtkGenericCell,
     vtkPolyData,
+    vtkPyramid,
     vtkUnstructuredGrid,
 )
 from vtkmodules.vtkFiltersVerdict import vtkCellSizeFilter
@@ -48,7 +51,7 @@ from vtkmodules.vtkIOXML import vtkXMLPolyDataWriter, vtkXMLUnstructuredGridWrit
 
 from expander.errors import InputError, NotYetError
 from expander.model import Mesh, Model
-from expander.readers import read_model, readable
+from expander.readers import meshio_formats, read_model, readable
 from expander.readers.tables import add_table
 
 MODES = ("ascii", "binary", "raw", "base64")
@@ -443,6 +446,50 @@ def test_names_that_are_missing_or_there_twice(tmp_path):
     refused(path, "called 'u'")
 
 
+def test_legacy_text_by_hand(tmp_path):
+    """Line ends are blanks like others, and may be those of another system."""
+    text = """# vtk DataFile Version 3.0
+by hand
+ASCII
+DATASET UNSTRUCTURED_GRID POINTS 4 float 0 0 0 1 0 0
+0 1 0 0 0 1
+CELLS 1 5
+4 0 1
+2 3 CELL_TYPES
+1 10 POINT_DATA 4 SCALARS T int
+LOOKUP_TABLE default
+1 2 3 4 VECTORS v float 0 0 0 1 1 1 2 2 2 3 3 3
+"""
+    for name, ends in (("a.vtk", "\n"), ("b.vtk", "\r\n")):
+        (tmp_path / name).write_text(text, newline=ends)
+        model = read_model(tmp_path / name)
+        assert model.mesh.connectivity.tolist() == [0, 1, 2, 3]
+        assert model.point_data["T"].tolist() == [1, 2, 3, 4]
+        assert model.point_data["v"][3].tolist() == [3, 3, 3]
+        assert model.notes == ()
+
+
+@pytest.mark.parametrize(
+    ("name", "options"),
+    [("a.vtu", {"binary": False}), ("b.vtu", {"compression": None}),
+     ("c.vtu", {"compression": "lzma"}), ("d.vtk", {"file_format": "vtk42"}),
+     ("e.vtk", {"file_format": "vtk51", "binary": False})],
+)  # fmt: skip
+def test_vtk_files_by_another_writer(tmp_path, name, options):
+    mesh = meshio_mesh("hexahedron20")
+    model = read_model(meshio_write(tmp_path / name, mesh, **options))
+    check_cells(model, "hexahedron20")
+    assert np.allclose(model.point_data["u"], mesh.point_data["u"], rtol=1e-10)
+    assert model.cell_data["part"].tolist() == [4, 5]
+
+
+@pytest.mark.skipif(sys.platform != "linux", reason="names of files are bytes only here")
+@pytest.mark.parametrize("name", ["\u00fc \u0394.vtu", os.fsdecode(b"a\xff.vtu")])
+def test_names_of_files_are_any_text(tmp_path, name):
+    (tmp_path / name).write_bytes(write_xml(grid(), tmp_path / "a.vtu").read_bytes())
+    same_as_grid(read_model(tmp_path / name))
+
+
 # --- damaged files of VTK's formats ---------------------------------------------------------
 
 FILES = {
@@ -633,7 +680,6 @@ def test_random_bytes(tmp_path_factory, extension, data):
 
 @pytest.mark.parametrize("extension", [".vtu", ".vtp", ".vtk", ".med", ".xdmf", ".inp", ".stl"])
 def test_a_picture_is_no_model(tmp_path, capfd, extension):
-    pv.Plotter  # noqa: B018 - pyvista is loaded; no window is opened
     picture = b"\x89PNG\r\n\x1a\n\0\0\0\rIHDR" + bytes(range(256)) * 8
     path = tmp_path / f"a{extension}"
     path.write_bytes(picture)
@@ -659,6 +705,12 @@ def places(kind: str) -> np.ndarray:
     if hasattr(cell, "Initialize"):
         cell.Initialize()
     x = np.array(cell.GetParametricCoords()[: 3 * cell.GetNumberOfPoints()]).reshape(-1, 3)
+    if kind == "pyramid13":  # VTK's parameters squeeze the apex out to a square
+        linear, weights = vtkPyramid(), [0.0] * 5
+        corners = np.array(linear.GetParametricCoords()).reshape(5, 3)
+        for node in x:
+            linear.InterpolateFunctions(node.tolist(), weights)
+            node[:] = weights @ corners
     u, v, w = x.T
     return x + 0.06 * np.stack([np.sin(2 * v + w), np.cos(u + 2 * w), np.sin(u * v)], 1)
 
@@ -708,7 +760,7 @@ def check_cells(model: Model, kind: str) -> None:
 
 QUADRATIC = ("triangle6", "quad8", "tetra10", "hexahedron20", "wedge15", "pyramid13")
 TRIPS = [
-    *[(".inp", {}, k) for k in VTK_TYPES if k[:3] != "pyr" and k not in ("hexahedron27", "wedge18")],
+    *[(".inp", {}, k) for k in VTK_TYPES if not k.startswith(("pyr", "hexahedron27", "wedge18"))],
     *[(".msh", {"file_format": "gmsh"}, k) for k in VTK_TYPES],
     *[(".msh", {"file_format": "gmsh22"}, k) for k in VTK_TYPES],
     *[(".msh", {"file_format": "ansys"}, k) for k in ("tetra", "hexahedron", "wedge", "pyramid")],
@@ -716,7 +768,7 @@ TRIPS = [
     *[(".med", {}, k) for k in VTK_TYPES if k not in ("quad9", "hexahedron27", "wedge18")],
     *[(e, {}, k) for e in (".vol", ".vol.gz") for k in (*LINEAR, *QUADRATIC)],
     *[(e, {}, "triangle") for e in (".stl", ".ply", ".obj", ".off")],
-    *[(".bdf", {}, k) for k in ("triangle", "quad", "quad8", "triangle6", "pyramid", "pyramid13")],
+    *[(".bdf", {}, k) for k in ("triangle", "quad", "quad8", "triangle6")],
     *[(e, {}, k) for e in (".avs", ".mesh", ".su2", ".f3grid") for k in LINEAR],
     (".mdpa", {}, "hexahedron20"),
     (".mdpa", {}, "hexahedron27"),
@@ -896,22 +948,25 @@ def test_bulk_data_by_hand(tmp_path, kind):
     refused(path)
 
 
-def test_wide_cards_of_bulk_data_are_not_dropped(tmp_path):
+@pytest.mark.parametrize(
+    "lines",
+    [
+        ["CTETRA* 1               1               1               2               ",
+         "*       3               4"],
+        ["ctetra,1,1,1,2,3,4"],
+        ["INCLUDE 'more.bdf'"],
+    ],
+)  # fmt: skip
+def test_cards_of_bulk_data_that_meshio_drops_are_refused(tmp_path, lines):
     grids = [f"GRID,{i + 1},,{x},{y},{z}" for i, (x, y, z) in enumerate(np.eye(4, 3))]
-    wide = "CTETRA* 1               1               1               2               "
-    lines = [
-        "BEGIN BULK",
-        *grids,
-        "CTETRA,2,1,1,2,3,4",
-        wide,
-        "*       3               4",
-        "ENDDATA",
-    ]
-    refused(write_lines(tmp_path / "a.bdf", *lines), "wide")
-    grids[1] = grids[1].replace("GRID,2,,", "GRID,2,8,")
-    grids = [g.replace(",,", ",0,", 1) for g in grids]
-    lines = ["BEGIN BULK", *grids, "CTETRA,2,1,1,2,3,4", "ENDDATA"]
-    refused(write_lines(tmp_path / "b.bdf", *lines), "coordinate system 8")
+    rows = ["BEGIN BULK", *grids, "CTETRA,2,1,1,2,3,4", *lines, "ENDDATA"]
+    refused(write_lines(tmp_path / "a.bdf", *rows), "passes over")
+
+
+def test_points_in_another_coordinate_system_are_refused(tmp_path):
+    grids = [f"GRID,{i + 1},{8 * i},{x},{y},{z}" for i, (x, y, z) in enumerate(np.eye(4, 3))]
+    rows = ["BEGIN BULK", *grids, "CTETRA,2,1,1,2,3,4", "ENDDATA"]
+    refused(write_lines(tmp_path / "b.bdf", *rows), "coordinate system 24")
 
 
 def msh22(path: Path, kind: str, data=()) -> Path:
@@ -1006,12 +1061,8 @@ def test_exodus_by_hand(tmp_path, kind):
             file.createVariable("node_num_map", "i4", ("num_nodes",))[:] = 3 * np.arange(len(order))
     model = read_model(tmp_path / "1.e")
     check_cells(model, kind)
-    assert model.point_data["node_number"].tolist() == [3 * i for i in order_of(len(order))]
+    assert model.point_data["node_number"].tolist() == [3 * i for i in range(len(order))]
     refused(tmp_path / "2.e", "several steps", NotYetError)
-
-
-def order_of(n: int) -> range:
-    return range(n)
 
 
 @pytest.mark.parametrize("percent", [0, 10, 50, 90, 99])
@@ -1035,6 +1086,118 @@ def test_files_of_meshio_that_are_cut_short(tmp_path, capfd, extension, options,
     if model is not None and percent < 90:
         assert extension in (".inp", ".obj")
         assert "line end" in " ".join(model.notes)
+
+
+@pytest.fixture
+def handed_over(monkeypatch, tmp_path):
+    """Read what meshio is made to hand over, whatever the file."""
+
+    def read(**parts) -> Model:
+        square = np.array([[0.0, 0, 0], [1, 0, 0], [1, 1, 0], [0, 1, 0]])
+        mesh = SimpleNamespace(
+            points=square, cells=[Cells(type="quad", data=np.array([[0, 1, 2, 3]]))],
+            point_data={}, cell_data={}, point_sets={}, cell_sets={},
+        )  # fmt: skip
+        vars(mesh).update(parts)
+        monkeypatch.setattr(meshio_formats, "read", lambda path, formats: mesh)
+        (tmp_path / "a.med").write_text("x")
+        return read_model(tmp_path / "a.med")
+
+    return read
+
+
+class Cells(SimpleNamespace):
+    def __len__(self) -> int:
+        return len(self.data)
+
+
+TWO = [
+    Cells(type="quad", data=np.array([[0, 1, 2, 3]])),
+    Cells(type="line", data=np.array([[0, 1]])),
+]
+
+
+@pytest.mark.parametrize(
+    ("parts", "words"),
+    [
+        ({"cells": TWO, "cell_data": {"s": [np.ones(1)]}}, "'s' is not there for every"),
+        ({"cells": TWO, "cell_data": {"s": [np.ones(1), None]}}, "'s' is not there for every"),
+        ({"cells": TWO, "cell_data": {"s": [np.ones(1), np.ones(2)]}}, "'s' is not there"),
+        ({"cells": TWO, "cell_data": {"s": [np.ones(1), np.ones((1, 3))]}}, "in the same form"),
+        ({"cells": []}, "no cells"),
+        ({"cells": [Cells(type="quad", data=np.zeros((0, 4), int))]}, "no cells"),
+        ({"cells": [Cells(type="tetra20", data=np.zeros((1, 20), int))]}, "'tetra20'"),
+        ({"cells": [Cells(type="polyhedron8", data=[[[0, 1, 2]]])]}, "'polyhedron8'"),
+        ({"cells": [Cells(type="quad", data=[[0.0, 1, 2, 3]])]}, "no whole table"),
+        ({"cells": [Cells(type="quad", data=[[0, 1, 2]])]}, "3 nodes, not 4"),
+        ({"cells": [Cells(type="quad", data=[[0, 1, 2, -1]])]}, "uses node -1"),
+        ({"points": []}, "no points"),
+        ({"points": np.array(["a"])}, "not numbers"),
+        ({"points": np.zeros((4, 1))}, "shape"),
+        ({"point_data": {"T": np.zeros(3)}}, "'T' has 3 values for 4 points"),
+        ({"point_data": {"T": np.ma.masked_array([1, 2, 3, 4], [0, 0, 0, 1])}}, "missing whole"),
+        ({"point_data": {"T[0] - 0.5": np.zeros(4)}}, "several steps of 'T'"),
+    ],
+)
+def test_meshes_that_do_not_fit_together(handed_over, parts, words):
+    with pytest.raises(InputError, match=words) as caught:
+        handed_over(**parts)
+    assert "a.med" in str(caught.value)
+
+
+def test_arrays_and_sets_of_every_kind(handed_over):
+    model = handed_over(
+        point_data={
+            "m": np.ma.masked_array([1.0, 2, 3, 4], [0, 0, 1, 0]),
+            "text": np.array(list("abcd")),
+            "swapped": np.array([1, 2, 3, 4], ">f8"),
+            "flag": np.array([True, False, True, False]),
+            "wide": np.arange(4, dtype=np.longdouble),
+            "matrix": np.arange(36.0).reshape(4, 3, 3),
+            "one": np.zeros((4, 1), np.float32),
+        },
+        point_sets={"m": [1, 2], "far": [9], "none": [], "ragged": [[1], [2, 3]], "real": [0.5]},
+        cell_sets={"c": [None], "many": [[0], [0]]},
+    )
+    found = model.point_data
+    assert np.array_equal(found["m"], [1, 2, np.nan, 4], equal_nan=True)
+    assert found["swapped"].dtype == found["wide"].dtype == np.dtype(np.float64)
+    assert found["flag"].tolist() == [1, 0, 1, 0]
+    assert found["matrix"].shape == (4, 9)
+    assert found["one"].shape == (4,)
+    assert found["m (set)"].tolist() == [0, 1, 1, 0]
+    assert found["none"].tolist() == [0, 0, 0, 0]
+    assert model.cell_data["c"].tolist() == [0]
+    notes = " ".join(model.notes)
+    for name in ("text", "far", "ragged", "real", "many"):
+        assert name not in {**found, **model.cell_data}
+        assert f"'{name}'" in notes
+    assert "NaN" in notes
+
+
+def test_what_meshio_prints_and_its_exits(monkeypatch, tmp_path, capfd):
+    path = tmp_path / "a.med"
+    path.write_text("x")
+
+    def leave(*_):
+        print("bad luck")
+        print("worse luck", file=sys.stderr)
+        sys.exit(1)
+
+    monkeypatch.setattr(meshio_formats, "read", leave)
+    with quiet(capfd):
+        refused(path, "bad luck")
+    monkeypatch.setattr(meshio_formats, "read", lambda *_: 1 / 0)
+    refused(path, "ZeroDivisionError")
+
+    def warn(*_):
+        meshio._common.warn("half of it was left out, which is a sentence longer than one line is")
+        return meshio_mesh("tetra")
+
+    monkeypatch.setattr(meshio_formats, "read", warn)
+    with quiet(capfd):
+        model = read_model(path)
+    assert model.notes == ("half of it was left out, which is a sentence longer than one line is",)
 
 
 # --- tables ---------------------------------------------------------------------------------

@@ -5,6 +5,7 @@ Nothing heavy is imported here: `seamfold --help` must answer at once.
 
 from __future__ import annotations
 
+import io
 import os
 import signal
 import sys
@@ -56,6 +57,9 @@ def _terminated(*_: Any) -> None:
 def main() -> None:
     """Entry point of the console command."""
     signal.signal(signal.SIGTERM, _terminated)
+    for stream in (sys.stdout, sys.stderr):
+        if isinstance(stream, io.TextIOWrapper):  # a terminal may not know every letter
+            stream.reconfigure(errors="backslashreplace")
     try:
         seamfold(standalone_mode=False)
     except SeamfoldError as problem:

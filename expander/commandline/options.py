@@ -68,7 +68,8 @@ def case_from(
     if case.suffix.lower() == ".toml":
         given = [n for n, v in (("--mirror", mirror), ("--sectors", sectors), ("--axis", axis),
                                 ("--axis-point", axis_point), ("--field", field),
-                                ("--nodal-diameters", nodal_diameters)) if v]  # fmt: skip
+                                ("--nodal-diameters", nodal_diameters))
+                 if v not in (None, ())]  # fmt: skip
         if given:
             raise InputError(
                 f"{given[0]} describes a case, but {case} is a case file already.",

@@ -85,6 +85,8 @@ def print_summary(found: dict[str, Any]) -> None:
         f"{points['body']:,} nodes, {cells['body']:,} cells (sector: {points['sector']:,} nodes, "
         f"{cells['sector']:,} cells)",
     )
+    if found["unit"]:
+        facts.add_row("units", escape(found["unit"]))
     console.print(facts)
     console.print(_field_table(found))
     signs = _sign_table(found)
@@ -107,11 +109,14 @@ def print_summary(found: dict[str, Any]) -> None:
 
 def _field_table(found: dict[str, Any]) -> Table:
     table = Table(box=box.SIMPLE_HEAD, pad_edge=False)
-    for heading in ("field", "on", "kind", "decided", "follows", "at seams"):
+    units = any(f["unit"] for f in found["fields"])
+    headings = ["field", "on", "kind", "decided", "follows", "at seams"]
+    for heading in headings + ["unit"] * units:
         table.add_column(heading, overflow="fold")
     for f in found["fields"]:
         seam = f["seam"] if f["on"] == "points" or f["seam"] == "sum" else "-"
-        row = (f["name"], f["on"], f["kind"], f["decided"], f["follows"], seam)
+        row = [f["name"], f["on"], f["kind"], f["decided"], f["follows"], seam]
+        row += [f["unit"]] * units
         table.add_row(*(escape(cell) for cell in row))
     return table
 

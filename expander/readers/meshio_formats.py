@@ -10,6 +10,7 @@ import re
 from collections.abc import Sequence
 from dataclasses import dataclass, field
 from importlib import import_module
+from itertools import dropwhile
 from pathlib import Path
 from typing import Any
 from xml.etree import ElementTree
@@ -147,32 +148,27 @@ def _bulk_data(path: Path, mesh: Any, _: str) -> Extra:
         )
     if "nastran:ref" in mesh.cell_data:
         added.cell_arrays["property"] = np.concatenate(mesh.cell_data["nastran:ref"])
-    solids = ("CTETRA", "CPYRAM", "CPYRA", "CPENTA", "CHEXA")
-    known = (*solids, "CTRIA3", "CTRIA6", "CTRIAR", "CQUAD4", "CQUAD8", "CQUADR")
+    from meshio.nastran import _nastran
+
+    known = _nastran.nastran_to_meshio_type
     skipped: dict[str, int] = {}
     with path.open(errors="replace") as file:
-        for line in file:
-            card = re.match(r"(C[A-Z0-9]+)(\*?)", line)
-            if card and card[2] and card[1] in known:
+        for line in dropwhile(lambda line: not line.strip().startswith("BEGIN BULK"), file):
+            card = re.match(r"(C[A-Z0-9]+|INCLUDE)(\*?)", line, re.IGNORECASE)
+            if not card or card[0] in known or card[0].upper().startswith("CORD"):
+                continue
+            if card[1].upper() in (*known, "INCLUDE"):
                 raise InputError(
-                    f"{path}: {card[1]}* cards, in the wide layout, cannot be read",
-                    "Write cells in the narrow or the free layout.",
+                    f"{path}: meshio passes over '{card[0]}' cards written like this",
+                    "Write all cells in this file, in capitals, in the narrow or free layout.",
                 )
-            if card and not card[1].startswith("CORD") and card[1] not in _bulk_cells():
-                skipped[card[1]] = skipped.get(card[1], 0) + 1
+            skipped[card[1]] = skipped.get(card[1], 0) + 1
     if skipped:
         listed = ", ".join(f"{name} ({count})" for name, count in sorted(skipped.items()))
         added.notes.append(f"Cards that are no cells of the mesh were left out: {listed}.")
     cells = np.concatenate(mesh.cells_id) if mesh.cells_id else None
     _add_numbers(added, mesh, mesh.points_id, cells)
     return added
-
-
-def _bulk_cells() -> Sequence[str]:
-    """Cards that meshio takes for cells."""
-    from meshio.nastran import _nastran
-
-    return list(_nastran.nastran_to_meshio_type)
 
 
 def _exodus(path: Path, mesh: Any, printed: str) -> Extra:

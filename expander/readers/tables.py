@@ -98,7 +98,7 @@ def _numbering(table: Table, present: Mapping[str, Array], count: int) -> _Numbe
         if values is None or values.ndim != 1 or values.dtype.kind not in "iu":
             continue
         numbers = values.astype(np.int64)
-        if len(np.unique(numbers)) == count:
+        if np.diff(np.sort(numbers)).all():  # each number once
             return _Numbering(
                 numbers, f"{table.key} numbers are those of the model's array '{name}'"
             )

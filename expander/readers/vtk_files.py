@@ -8,6 +8,7 @@ would crash, ask for absurd memory or quietly lose arrays: see ``vtk_xml_guard``
 
 from __future__ import annotations
 
+import os
 import re
 from collections.abc import Iterator, Mapping, Sequence
 from contextlib import contextmanager
@@ -91,7 +92,7 @@ def _xml_output(reader: Any, path: Path, declared: Declared) -> Any:
 def _output(reader: Any, path: Path, prepare: Any = None) -> Any:
     """The data set that a VTK reader makes of the file; any complaint of VTK is an error."""
     with _silence() as window:
-        reader.SetFileName(str(path))
+        reader.SetFileName(os.fsencode(path))
         if prepare:
             prepare()
         reader.Update()

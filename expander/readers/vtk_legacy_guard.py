@@ -8,6 +8,7 @@ is therefore walked through once, from section to section, without reading the v
 
 from __future__ import annotations
 
+import re
 from pathlib import Path
 from typing import BinaryIO
 from urllib.parse import unquote_to_bytes
@@ -32,10 +33,17 @@ _CELLS = {
     "UNSTRUCTURED_GRID": ("CELLS",),
     "POLYDATA": ("VERTICES", "LINES", "POLYGONS", "TRIANGLE_STRIPS"),
 }
-# attribute arrays of fixed width: components, and how many words follow the name
+# attribute arrays of fixed width: their components
 _FIXED = {
     "VECTORS": 3, "NORMALS": 3, "TENSORS": 9, "TENSORS6": 6, "GLOBAL_IDS": 1,
     "PEDIGREE_IDS": 1, "EDGE_FLAGS": 1,
+}  # fmt: skip
+
+# how many words follow the first one of a section, on its line
+_WORDS = {
+    "DATASET": 1, "FIELD": 2, "POINTS": 2, "CELL_TYPES": 1, "POINT_DATA": 1, "CELL_DATA": 1,
+    "LOOKUP_TABLE": 2, "SCALARS": 2, "COLOR_SCALARS": 2, "TEXTURE_COORDINATES": 3,
+    **dict.fromkeys((*_FIXED, *_CELLS["UNSTRUCTURED_GRID"], *_CELLS["POLYDATA"]), 2),
 }  # fmt: skip
 
 
@@ -77,19 +85,30 @@ class _Walker:
         self.components = 0  # of the latest array
         self.declared = Declared("")
 
-    def line(self, skip_blank: bool = True) -> str:
-        """The next line, by default the next that is not blank; empty at the end."""
+    def line(self) -> str:
+        """The rest of the line, without blanks around it."""
         self.file.seek(self.place)
-        while raw := self.file.readline(65536):
-            self.place = self.file.tell()
-            text = raw.decode("latin-1").strip()
-            if text or not skip_blank:
-                self.latest = text
-                return text
-        return ""
+        text = self.file.readline(65536)
+        self.place = self.file.tell()
+        return text.decode("latin-1").strip()
+
+    def words(self, count: int) -> list[str]:
+        """The next words, fewer at the end of the file; line ends are blanks like others."""
+        found: list[str] = []
+        while len(found) < count:
+            self.file.seek(self.place)
+            chunk = self.file.read(1024)
+            word = re.match(rb"\s*(\S*)", chunk)
+            if not word or not chunk:
+                break
+            self.place += word.end()
+            if word[1]:
+                found.append(word[1].decode("latin-1"))
+        self.latest = " ".join(found)
+        return found
 
     def header(self) -> None:
-        first = self.line(skip_blank=False).lower()
+        first = self.line().lower()
         if not first.startswith("# vtk datafile version"):
             raise InputError(
                 f"{self.path} is no legacy file of VTK: it does not begin with its first line",
@@ -97,19 +116,21 @@ class _Walker:
             )
         version = first.split()[-1]
         self.offsets_apart = version[0].isdigit() and float(version) >= 5
-        self.line(skip_blank=False)  # the title
-        encoding = self.line().upper()
+        self.line()  # the title
+        encoding = "".join(self.words(1)).upper()
         if encoding not in ("ASCII", "BINARY"):
             raise Bad(f"the third line is '{encoding[:40]}', not ASCII or BINARY")
         self.binary = encoding == "BINARY"
 
     def section(self) -> bool:
         """Pass one section; False at the end of the file."""
-        words = self.line().split()
-        if not words:
+        first = self.words(1)
+        if not first:
             self._check_end()
             return False
-        key = words[0].upper()
+        key = first[0].upper()
+        words = [*first, *self.words(_WORDS.get(key, 0))]
+        self.latest = " ".join(words)
         if key == "DATASET":
             self._dataset(words[1].upper())
         elif key == "METADATA":
@@ -117,12 +138,12 @@ class _Walker:
         elif key == "FIELD":
             self._field(_count(words[2]))
         elif not self.declared.kind:
-            raise Bad(f"'{words[0][:40]}' stands before the data set")
+            raise Bad(f"'{key[:40]}' stands before the data set")
         elif key == "POINTS":
             self.components = 3
             self._skip(3 * _count(words[1]), words[2])
         elif key in _CELLS[self.declared.kind]:
-            self._cells(_count(words[1]), _count(words[2]))
+            self._cells(key, _count(words[1]), _count(words[2]))
         elif key == "CELL_TYPES":
             self._skip(_count(words[1]), "int")
         elif key in ("POINT_DATA", "CELL_DATA"):
@@ -133,10 +154,11 @@ class _Walker:
 
     def _metadata(self) -> None:
         """Pass what is said about the latest array, up to a blank line."""
-        while line := self.line(skip_blank=False):
+        self.line()
+        while line := self.line():
             if line.upper() == "COMPONENT_NAMES":
                 for _ in range(self.components):  # a name may be blank
-                    self.line(skip_blank=False)
+                    self.line()
 
     def _check_end(self) -> None:
         if not self.declared.kind:
@@ -155,16 +177,15 @@ class _Walker:
             )
         self.declared.kind = kind
 
-    def _cells(self, number: int, length: int) -> None:
+    def _cells(self, key: str, number: int, length: int) -> None:
         if self.offsets_apart:
             for expected, values in (("OFFSETS", number), ("CONNECTIVITY", length)):
-                words = self.line().split()
-                if not words or words[0].upper() != expected:
+                words = self.words(2)
+                if words[:1] != [expected]:
                     raise Bad(f"'{self.latest[:40]}' stands where {expected} belongs")
                 self._skip(values, words[1])
             return
-        start = self.place
-        self._skip(length, "int")
+        start = self._skip(length, "int")
         self.file.seek(start)
         data = self.file.read(self.place - start)
         if self.binary:
@@ -172,18 +193,19 @@ class _Walker:
         else:
             stream = np.array(data.split(), dtype=np.int64)
         if _cells_in(stream) != number:
-            raise Bad(f"the {self.latest.split()[0]} are not {number} cells in {length} numbers")
+            raise Bad(f"the {key} are not {number} cells in {length} numbers")
 
     def _attribute(self, key: str, words: list[str]) -> None:
         if not self.data:
-            raise Bad(f"'{words[0][:40]}' stands before POINT_DATA or CELL_DATA")
+            raise Bad(f"'{key[:40]}' stands before POINT_DATA or CELL_DATA")
         if key == "LOOKUP_TABLE":
             self._skip(4 * _count(words[2]), "unsigned_char")
             return
         if key == "SCALARS":
-            components, kind = _count(words[3]) if len(words) > 3 else 1, words[2]
+            rest = self.line()
+            components, kind = _count(rest) if rest else 1, words[2]
             before = self.place
-            if not self.line().upper().startswith("LOOKUP_TABLE"):
+            if [word.upper() for word in self.words(2)][:1] != ["LOOKUP_TABLE"]:
                 self.place = before
         elif key == "COLOR_SCALARS":
             components, kind = _count(words[2]), "unsigned_char"
@@ -192,27 +214,27 @@ class _Walker:
         elif key in _FIXED:
             components, kind = _FIXED[key], words[2]
         else:
-            raise Bad(f"'{words[0][:40]}' begins no section of such a file")
+            raise Bad(f"'{key[:40]}' begins no section of such a file")
         self._declare(words[1], kind)
         self.components = components
         self._skip(components * self.tuples, kind)
 
     def _field(self, arrays: int) -> None:
         for _ in range(arrays):
-            words = self.line().split()
-            if words and words[0].upper() == "METADATA":
+            first = self.words(1)
+            if first == ["METADATA"]:
                 self._metadata()
-                words = self.line().split()
-            if words == ["NULL_ARRAY"]:
+                first = self.words(1)
+            if first == ["NULL_ARRAY"]:
                 continue
-            name, components, tuples, kind = words
+            name, components, tuples, kind = [*first, *self.words(3)]
+            self.latest = f"{name} {components} {tuples} {kind}"
             if self.data:
                 if _count(tuples) != self.tuples:
                     raise Bad(f"array '{name}' has {tuples} tuples for {self.tuples} {self.data}s")
                 self._declare(name, kind)
             self.components = _count(components)
-            start = self.place
-            self._skip(self.components * _count(tuples), kind)
+            start = self._skip(self.components * _count(tuples), kind)
             if not (self.binary or self.data or kind.lower() in _TEXTS):
                 self._require_numbers(start, kind.lower())
 
@@ -227,12 +249,14 @@ class _Walker:
         plain = unquote_to_bytes(name.encode("latin-1")).decode("utf-8", "replace")
         self.declared.declare(self.data, plain, kind.lower() in _TEXTS)
 
-    def _skip(self, values: int, kind: str) -> None:
-        """Pass this many values of one number type."""
+    def _skip(self, values: int, kind: str) -> int:
+        """Pass this many values of one number type; the place where they began."""
         kind = kind.lower()
+        if self.binary or kind in _TEXTS:
+            self.line()  # values begin on the next line
         if kind in _TEXTS:
             self._skip_texts(values)
-            return
+            return self.place
         if kind not in _BYTES and kind != "bit":
             raise Bad(f"'{kind[:40]}' is no number type of such a file")
         if self.binary:
@@ -244,7 +268,8 @@ class _Walker:
             end = skip_words(self.file, self.place, values)
         if end < 0 or end > self.size:
             raise Bad(f"the values after '{self.latest[:60]}' are cut short")
-        self.place = end
+        start, self.place = self.place, end
+        return start
 
     def _skip_texts(self, number: int) -> None:
         if number > self.size:

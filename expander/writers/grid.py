@@ -18,6 +18,7 @@ def build_grid(arrays: Iterable[BodyArray], field_data: FieldData) -> pyvista.Un
     """All arrays of one result, block after block, into one `pyvista.UnstructuredGrid`."""
     import pyvista
     from vtkmodules.util.numpy_support import numpy_to_vtk, numpy_to_vtkIdTypeArray
+    from vtkmodules.vtkCommonCore import vtkStringArray
     from vtkmodules.vtkCommonDataModel import vtkCellArray
 
     whole: dict[tuple[str, str], Any] = {}
@@ -49,5 +50,12 @@ def build_grid(arrays: Iterable[BodyArray], field_data: FieldData) -> pyvista.Un
             for k, component in enumerate(array.components):
                 vtk_array.SetComponentName(k, component)
     for name, value in field_data.items():
-        grid.field_data[name] = value if isinstance(value, np.ndarray) else np.array(value)
+        if isinstance(value, np.ndarray):
+            grid.field_data[name] = value
+            continue
+        words = vtkStringArray()  # pyvista's own strings hold ASCII only
+        words.SetName(name)
+        for text in value:
+            words.InsertNextValue(text.encode("utf-8", "replace").decode())
+        grid.GetFieldData().AddArray(words)
     return grid

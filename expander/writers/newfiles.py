@@ -43,13 +43,7 @@ class NewFiles:
     def open(self, path: Path, size: int = 0) -> IO[bytes]:
         """A new unbuffered binary file that will be called `path`, of about `size` bytes."""
         self._opening = path
-        if path.is_dir():
-            raise InputError(f"{path} is a folder.", "Expected a file name for output.file.")
-        if not path.parent.is_dir():
-            raise InputError(
-                f"{path}: the folder {path.parent} does not exist.",
-                "Create it, or choose another output.file.",
-            )
+        check_place(path)
         free = shutil.disk_usage(path.parent).free
         if free < size:
             raise InputError(
@@ -86,10 +80,21 @@ class NewFiles:
         if isinstance(error, OSError):
             raise InputError(
                 f"{self._opening} cannot be written: {error.strerror or error}.",
-                "Free some space or choose another folder."
+                "Free some space or choose another folder (output.file)."
                 if error.errno in _FULL
-                else "Choose another folder, or make this one writable.",
+                else "Choose another folder (output.file), or make this one writable.",
             ) from None
+
+
+def check_place(path: Path) -> None:
+    """Refuse a path that cannot become a file, before anything is computed."""
+    if path.is_dir():
+        raise InputError(f"{path} is a folder.", "Expected a file name for output.file.")
+    if not path.parent.is_dir():
+        raise InputError(
+            f"{path}: the folder {path.parent} does not exist.",
+            "Create it, or choose another output.file.",
+        )
 
 
 def _umask() -> int:

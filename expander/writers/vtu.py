@@ -153,7 +153,7 @@ def _layout(arrays: list[BodyArray], field_data: FieldData) -> tuple[bytes, list
                 lines.append(_array_line(array, offset))
         lines.append(f"      </{tag}>")
     lines += ["    </Piece>", "  </UnstructuredGrid>", '  <AppendedData encoding="raw">']
-    header = ("\n".join(lines) + "\n   _").encode()
+    header = _bytes("\n".join(lines) + "\n   _")
     starts = [len(header) + offset for offset in offsets]
     return header, starts, len(header) + total + len(_END)
 
@@ -165,6 +165,11 @@ def _array_line(array: BodyArray, offset: int) -> str:
         f'        <DataArray type="{_VTK_TYPES[array.dtype.name]}" Name={_quoted(array.name)}'
         f'{width}{names} format="appended" offset="{offset}"/>'
     )
+
+
+def _bytes(text: str) -> bytes:
+    """UTF-8; a file name that is not Unicode keeps a question mark for what cannot be said."""
+    return text.encode("utf-8", "replace")
 
 
 def _quoted(text: str) -> str:
@@ -180,7 +185,7 @@ def _field_data(field_data: FieldData) -> Iterator[str]:
             kind = f'type="{_VTK_TYPES[value.dtype.name]}" NumberOfComponents="{table.shape[1]}"'
             tuples = len(table)
         else:
-            words = [str(code) for text in value for code in (*text.encode(), 0)]
+            words = [str(code) for text in value for code in (*_bytes(text), 0)]
             kind, tuples = 'type="String"', len(value)
         yield (
             f'      <DataArray {kind} Name={_quoted(name)} NumberOfTuples="{tuples}" '
