@@ -64,7 +64,7 @@ class FieldTable(Table):
     follows: Literal["load", "body"] | None = None
     frame: str = "global"
     arrays: Annotated[Names, Field(min_length=1)] | None = None
-    columns: Annotated[list[int], Field(min_length=1)] | None = None
+    columns: list[int] | None = None
     on: Literal["points", "cells"] | None = None
     unit: str | None = None
 
@@ -240,7 +240,7 @@ def _check_names(case: CaseFile, where: str) -> None:
     planes = plane_names(case)
     for name in [*planes, *(c.name for c in case.case), *(s.name for s in case.sum), *case.fields,
                  *case.frames]:  # fmt: skip
-        if any(unicodedata.category(letter) == "Cc" for letter in name):
+        if not writable(name):
             raise InputError(
                 f"{where}: the name {name!r} holds control characters, which no file or table can "
                 "show.",
@@ -296,6 +296,11 @@ def _check_names(case: CaseFile, where: str) -> None:
             )
 
 
+def writable(name: str) -> bool:
+    """Whether XML can hold the name: it has no control characters but tabs and line ends."""
+    return not any(unicodedata.category(c) == "Cc" and c not in "\t\n\r" for c in name)
+
+
 def plane_names(case: CaseFile) -> list[str]:
     """Names of the cut planes, "plane 1", "plane 2", .. where none is given."""
     return [m.name or f"plane {k + 1}" for k, m in enumerate(case.mirror)]
@@ -313,9 +318,9 @@ def assign(raw: dict[str, Any], dotted: str, value: Any) -> None:
     target: Any = raw
     try:
         for key in keys[:-1]:
-            target = target[int(key)] if isinstance(target, list) else target.setdefault(key, {})
+            target = target[_place(key)] if isinstance(target, list) else target.setdefault(key, {})
         if isinstance(target, list):
-            target[int(keys[-1])] = value
+            target[_place(keys[-1])] = value
         else:
             target[keys[-1]] = value
     except (ValueError, IndexError, AttributeError, TypeError):
@@ -323,6 +328,12 @@ def assign(raw: dict[str, Any], dotted: str, value: Any) -> None:
             f"--set {dotted}: there is no such place in the case.",
             "Expected dotted keys of the case file, lists counted from 0: mirror.0.load=...",
         ) from None
+
+
+def _place(key: str) -> int:
+    if not key.isdecimal():
+        raise ValueError(key)
+    return int(key)
 
 
 def _walk(value: Any, path: str = "") -> list[tuple[str, Any]]:
@@ -393,7 +404,9 @@ def _reason(kind: str, message: str, named: list[Any]) -> str:
             table = "[fields.NAME] for each field"
         keys = ", ".join(_TABLES.get(name, CaseFile).model_fields)
         if table is None:  # load = {..}, terms = {..}
-            return "expected names with a value for each: { name = value }"
+            return f"expected names with a value for each: {named[-1]} = {{ name = value }}"
+        if name == "fields":
+            return f'expected a table {table} with kind = "..." and, if needed, {keys[6:]}'
         return f"expected a table {table} with the keys {keys}"
     return message.replace("Input should be", "expected").replace("List should", "the list should")
 

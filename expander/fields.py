@@ -9,7 +9,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import NDArray
 
-from expander.casefile import CaseFile, FieldTable
+from expander.casefile import CaseFile, FieldTable, writable
 from expander.cells import dimensions
 from expander.errors import InputError, NotYetError
 from expander.frames import Cylindrical, Frame, Global
@@ -135,7 +135,9 @@ def fields_of(
                 word = None  # whether it changes sign must be said, not guessed
             if word is not None and solid and (word.kind, size) in _OF_PLANE_MODELS:
                 word = None  # a plane storage on solids may be something else
-            clash = name in ADDED_ARRAYS or any(f.name == name for f in fields)
+            clash = (
+                name in ADDED_ARRAYS or any(f.name == name for f in fields) or not writable(name)
+            )
             if word is not None and not clash:
                 fields.append(_by_name(name, on, array, size, frames["global"]))
             elif (
@@ -168,10 +170,12 @@ def _declared(
     columns = None
     size = shapes[0] if len(arrays) == 1 else len(arrays)
     if table.columns is not None:
-        bad = [c for c in table.columns if not 1 <= c <= size or table.columns.count(c) > 1]
-        if bad or len(arrays) > 1 or not table.columns:
+        bad = [c for c in table.columns if not 1 <= c <= size]
+        twice = len(set(table.columns)) < len(table.columns)
+        if bad or twice or len(arrays) > 1 or not table.columns:
             raise InputError(
-                f"{path}.columns = {table.columns} does not fit {arrays[0]!r} of {size} columns.",
+                f"{path}.columns = {table.columns} does not fit {arrays[0]!r} of {size} columns"
+                + (": a column is named twice." if twice else "."),
                 f"Expected different numbers from 1 to {size}, for a single array.",
             )
         columns = tuple(c - 1 for c in table.columns)
@@ -275,8 +279,8 @@ def _undeclared(model: Model, unknown: list[tuple[str, str, int]], case: CaseFil
     for on, name, size in unknown:
         other = model.cell_data if on == "points" else model.point_data
         key = name
-        if name in ADDED_ARRAYS or name in other or key in taken or not name.isprintable():
-            key = f"{name}_on_{on}" if name.isprintable() else f"array_on_{on}"
+        if name in ADDED_ARRAYS or name in other or key in taken or not writable(name):
+            key = f"{name}_on_{on}" if writable(name) else f"array_on_{on}"
         taken.add(key)
         kinds = _KINDS_BY_SIZE.get(size, "label, or parts of it with columns = [..]")
         lines.append(f'[fields.{_toml_key(key)}]\n  kind = "..."  # {size} component(s): {kinds}')

@@ -156,13 +156,12 @@ def _turned(placement: Placement) -> str:
 
 def _scale(planes: tuple[CutPlane, ...], axis: CyclicAxis | None) -> float:
     points = [p.point for p in planes] + ([axis.point] if axis else [])
-    return max(float(np.abs(points).max()), 1e-30)
+    # Points read off a model carry round-off: below this, a distance is none in any length unit.
+    return max(float(np.abs(points).max()), 1e-6)
 
 
 def _same(a: Placement, b: Placement, scale: float) -> bool:
-    return bool(
-        np.abs(a.Q - b.Q).max() < _SAME and np.abs(a.t - b.t).max() < _SAME * max(scale, 1e-30)
-    )
+    return bool(np.abs(a.Q - b.Q).max() < _SAME and np.abs(a.t - b.t).max() < _SAME * scale)
 
 
 def _check_planes(planes: tuple[CutPlane, ...]) -> None:
@@ -174,7 +173,7 @@ def _check_planes(planes: tuple[CutPlane, ...]) -> None:
             angle = float(np.rad2deg(np.arctan2(sine, abs(cosine))))
             if angle < 1e-4:
                 gap = abs(float(a.normal @ (a.point - b.point)))
-                if gap <= 1e-9 * max(_scale(planes, None), 1e-30):
+                if gap <= 1e-6 * _scale(planes, None):
                     raise InputError(
                         f"Planes {b.name!r} and {a.name!r} are the same plane.",
                         f"Remove one of the two [[mirror]] tables, for example {a.name!r}.",

@@ -267,8 +267,8 @@ def _checked_names(row: Kind, components: str, size: int) -> tuple[str, ...]:
     doubled = [n for n in names if row.symmetric and n != n[::-1] and n[::-1] in names]
     if doubled and len(names) != 9:
         raise InputError(
-            f"components = {components!r} names {doubled[0]!r} and {doubled[0][::-1]!r}, which are one "
-            "component of a symmetric tensor.",
+            f"components = {components!r} names {doubled[0]!r} and {doubled[0][::-1]!r}, which are "
+            "one component of a symmetric tensor.",
             "Name each shear component once.",
         )
     return names

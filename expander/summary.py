@@ -30,8 +30,8 @@ def summary(
     """Everything a reviewer needs to follow what was done.
 
     Keys: schema, program, source, unit, copies, planes, axis, seams, points, cells, fields,
-    results, notes, cautions; all values are plain data. Extended with new keys only; `schema` counts
-    changes that are not extensions.
+    results, notes, cautions; all values are plain data. Extended with new keys only; `schema`
+    counts changes that are not extensions.
     """
     group, seams = body.group, body.seams
     points, cells = body.point_numbering, body.cell_numbering
