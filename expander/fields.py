@@ -15,8 +15,15 @@ from expander.errors import InputError, NotYetError
 from expander.frames import Cylindrical, Frame, Global
 from expander.model import Model
 from expander.placements import Floats, Placement
-from expander.quantities import Quantity, quantity
-from expander.tradewords import not_linear, stress_odd, trade_word
+from expander.quantities import KINDS, Quantity, quantity
+from expander.tradewords import (
+    TradeWord,
+    component_order,
+    names_a_rotation,
+    not_linear,
+    stress_odd,
+    trade_word,
+)
 
 ADDED_ARRAYS = ("copy", "sector_cell", "sector_point")
 _OF_PLANE_MODELS = {("polar vector", 2), ("axial vector", 1), ("symmetric tensor", 3),
@@ -124,6 +131,7 @@ def fields_of(
     solid = bool((dimensions(model.mesh.types) == 3).any())
     unknown: list[tuple[str, str, int]] = []
     notes: list[str] = []
+    rotations: dict[str, str] = {}
     for on, data in (("points", model.point_data), ("cells", model.cell_data)):
         other = model.cell_data if on == "points" else model.point_data
         for name, array in data.items():
@@ -138,8 +146,16 @@ def fields_of(
             clash = (
                 name in ADDED_ARRAYS or any(f.name == name for f in fields) or not writable(name)
             )
+            named = model.component_names.get((on, name), ())
+            if (
+                word is not None
+                and word.kind == "polar vector"
+                and any(names_a_rotation(n) for n in named)
+            ):
+                rotations[name] = " ".join(named)
+                word = None
             if word is not None and not clash:
-                fields.append(_by_name(name, on, array, size, frames["global"]))
+                fields.append(_by_name(name, on, word, size, named, frames["global"]))
             elif (
                 size == 1 and name not in other and not clash
                 and (np.issubdtype(array.dtype, np.integer) or not odd)
@@ -148,7 +164,7 @@ def fields_of(
             else:
                 unknown.append((on, name, size))
     if unknown and not skip_undeclared:
-        raise _undeclared(model, unknown, case, odd)
+        raise _undeclared(model, unknown, case, odd, rotations)
     notes += [f"array {n!r} on {on} is undeclared and was left out" for on, n, _ in unknown]
     return fields, notes
 
@@ -190,7 +206,10 @@ def _declared(
             'Add components = "xx yy zz xy yz zx" in the order of arrays.',
         )
     try:
-        q = quantity(table.kind, size, components, table.shear or "tensor")
+        named = model.component_names.get((on, arrays[0]), ()) if len(arrays) == 1 else ()
+        if columns is not None:
+            named = tuple(named[c] for c in columns) if named else ()
+        q, order = _ordered(table.kind, size, components, named, table.shear or "tensor")
     except NotYetError as error:
         raise NotYetError(f"{path}: {error.found}", error.remedy) from None
     except InputError as error:
@@ -213,7 +232,7 @@ def _declared(
             f'{path}: seam = "sum" does not go with kind = "{q.kind.name}".',
             "Only linear quantities such as forces, heat flows and masses add up at a seam.",
         )
-    decided = "declared"
+    decided = f"declared{order}"
     if word is not None and word.kind != q.kind.name:
         decided += f" (by name it would be a {word.kind})"
     return Field(name, q, follows, seam, frame, on, arrays, columns,
@@ -245,12 +264,27 @@ def _where(arrays: tuple[str, ...], on: str | None, model: Model, path: str) -> 
     )
 
 
-def _by_name(name: str, on: str, array: NDArray[np.generic], size: int, frame: Frame) -> Field:
-    word = trade_word(name, size)
-    assert word is not None
+def _by_name(
+    name: str, on: str, word: TradeWord, size: int, named: tuple[str, ...], frame: Frame
+) -> Field:
+    q, order = _ordered(word.kind, size, None, named, "tensor")
+    decided = f"by name{order}"
     seam = "lowest copy" if word.follows == "body" and word.seam != "sum" else word.seam
-    return Field(name, quantity(word.kind, size), word.follows, seam, frame, on,
-                 (name,), None, "", "by name", True)  # fmt: skip
+    return Field(name, q, word.follows, seam, frame, on, (name,), None, "", decided, True)
+
+
+def _ordered(
+    kind: str, size: int, components: str | None, named: tuple[str, ...], shear: str
+) -> tuple[Quantity, str]:
+    """The quantity in the declared order, else in the order that the file itself names."""
+    if components is None and kind in KINDS:
+        order = component_order(named, KINDS[kind].rank)
+        if order is not None and len(order.split()) == size:
+            try:
+                return quantity(kind, size, order, shear), ", order by the file"
+            except InputError:
+                pass  # names that mean something else; the usual order of this size
+    return quantity(kind, size, components, shear), ""
 
 
 def _plain(name: str, on: str, array: NDArray[np.generic], frame: Frame) -> Field:
@@ -272,8 +306,13 @@ _KINDS_BY_SIZE = {
 }  # fmt: skip
 
 
-def _undeclared(model: Model, unknown: list[tuple[str, str, int]], case: CaseFile,
-                odd: bool) -> InputError:  # fmt: skip
+def _undeclared(
+    model: Model,
+    unknown: list[tuple[str, str, int]],
+    case: CaseFile,
+    odd: bool,
+    rotations: Mapping[str, str],
+) -> InputError:
     lines = []
     taken = set(case.fields)
     for on, name, size in unknown:
@@ -295,6 +334,12 @@ def _undeclared(model: Model, unknown: list[tuple[str, str, int]], case: CaseFil
         if odd and any(s == 1 for _, _, s in unknown)
         else ""
     )
+    for name, components in rotations.items():
+        because += (
+            f" The file names the components of {name!r} {components}: translations and rotations "
+            "in one array are two fields, a polar vector and an axial vector, each with its "
+            "columns."
+        )
     option = (
         "" if case.source else '\n  or give options such as --field "NAME=polar vector",'
     )  # fmt: skip

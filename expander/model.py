@@ -64,6 +64,7 @@ class Model:
         further axis (components); the number type is that of the file.
     source : the file it came from.
     notes : what the reader assumed or left out, each a sentence for the user.
+    component_names : by ("points" or "cells", array), where the file names its components.
     """
 
     mesh: Mesh
@@ -71,3 +72,4 @@ class Model:
     cell_data: Mapping[str, NDArray[np.generic]]
     source: Path
     notes: tuple[str, ...] = field(default=())
+    component_names: Mapping[tuple[str, str], tuple[str, ...]] = field(default_factory=dict)

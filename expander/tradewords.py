@@ -81,6 +81,33 @@ STRESS_ODD = re.compile(r"(.+_)?(principal|signed|interaction|failure_index|rese
 NOT_LINEAR = re.compile(r"(.+_)?(deformation_gradient|stretch)(_.+)?")
 
 
+_ROTATION = re.compile(r"(u|d|dof)?_?(rot|rx|ry|rz|th|theta|phi|r_?)_?[xyz123]?")
+_INDEX = {"1": "x", "2": "y", "3": "z", "x": "x", "y": "y", "z": "z"}
+
+
+def names_a_rotation(component: str) -> bool:
+    """Whether a component's name is that of a rotation.
+
+    >>> [names_a_rotation(name) for name in ("UX", "ROTZ", "rz", "Z")]
+    [False, True, True, False]
+    """
+    return bool(_ROTATION.fullmatch(component.lower()))
+
+
+def component_order(names: tuple[str, ...], rank: int) -> str | None:
+    """Stored order of a vector or tensor from the names of its components in a file.
+
+    >>> component_order(("S11", "S22", "S33", "S12", "S23", "S13"), 2)
+    'xx yy zz xy yz xz'
+    """
+    found = []
+    for name in names:
+        letters = re.sub(r"[^xyz123]", "", name.lower())[-rank:] if rank else ""
+        found.append("".join(_INDEX[letter] for letter in letters))
+    plain = all(len(f) == rank for f in found) and len(set(found)) == len(found)
+    return " ".join(found) if rank and plain else None
+
+
 def normalised(name: str) -> str:
     """The name as it is compared.
 

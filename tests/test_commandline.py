@@ -442,6 +442,23 @@ def test_console_script(tmp_path: Path) -> None:
     assert ran.stderr.startswith("seamfold: none.vtu does not exist")
 
 
+def test_reader_that_stops_listening_is_no_failed_check(tmp_path: Path) -> None:
+    """As in `seamfold expand .. | head -1`: status 1 would say that a check failed."""
+    box().save(tmp_path / "half.vtu")
+    ours, theirs = os.pipe()
+    os.close(ours)
+    try:
+        ran = subprocess.run(
+            [sys.executable, "-m", "expander.commandline", "expand", "half.vtu", "--mirror", "x"],
+            cwd=tmp_path, stdout=theirs, stderr=subprocess.PIPE, timeout=60,
+        )  # fmt: skip
+    finally:
+        os.close(theirs)
+    assert ran.stderr == b""
+    assert ran.returncode != 1
+    assert read(tmp_path / "half_full.vtu").n_cells == 16
+
+
 def test_exit_status_of_usage(seamfold: Seamfold) -> None:
     ran = seamfold("expand")
     assert (ran.status, ran.out) == (2, "")

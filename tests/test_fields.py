@@ -389,6 +389,45 @@ def test_columns_in_another_order(tmp_path: Path) -> None:
     )
 
 
+def named(grid: pyvista.UnstructuredGrid, array: str, components: str) -> None:
+    """Give the components of a cell array their names in the file."""
+    for k, name in enumerate(components.split()):
+        grid.GetCellData().GetArray(array).SetComponentName(k, name)
+
+
+@pytest.mark.parametrize("components", ["S11 S22 S33 S12 S13 S23", "XX YY ZZ XY XZ YZ"])
+@pytest.mark.parametrize("declared", [False, True])
+def test_order_that_the_file_names(tmp_path: Path, components: str, declared: bool) -> None:
+    """Another order than the usual one, told by the file: used, or refused, never passed over."""
+    grid = box()
+    grid.cell_data["stress"] = np.tile(np.arange(1.0, 7.0), (8, 1))
+    named(grid, "stress", components)
+    fields = {"stress": {"kind": "symmetric tensor"}} if declared else {}
+    case = case_of(tmp_path, grid, fields=fields)
+    try:
+        body = expand(case)
+    except InputError as error:
+        assert "stress" in str(error)  # noqa: PT017  one of two right outcomes
+        return
+    one = body.cell_data["stress"][body.cell_data["copy"] == 1]
+    np.testing.assert_array_equal(one, [[1, 2, 3, -4, -5, 6]] * 8)
+
+
+@pytest.mark.parametrize(("name", "components"), [
+    ("stress", "rr tt zz rt tz zr"), ("displacement", "r t z"), ("displacement", "r theta z"),
+])  # fmt: skip
+def test_cylindrical_components_that_the_file_names(
+    tmp_path: Path, name: str, components: str
+) -> None:
+    """As this program writes them itself; by the name alone they would be taken for global."""
+    grid = box()
+    grid.cell_data[name] = np.zeros((8, len(components.split())))
+    named(grid, name, components)
+    with pytest.raises(InputError, match=name) as caught:
+        plan(case_of(tmp_path, grid))
+    assert "frame" in str(caught.value)
+
+
 def test_engineering_shear(tmp_path: Path) -> None:
     grid = wedge(30.0)
     epsilon = RANDOM.normal(size=(grid.n_cells, 6))

@@ -12,6 +12,7 @@ import os
 import re
 from collections.abc import Iterator, Mapping, Sequence
 from contextlib import contextmanager
+from dataclasses import replace
 from pathlib import Path
 from typing import Any
 
@@ -97,10 +98,21 @@ def _output(reader: Any, path: Path, prepare: Any = None) -> Any:
             prepare()
         reader.Update()
         output = reader.GetOutput()
-        complaint = _text(window.GetOutput())
+        complaint = _without_ranges(_text(window.GetOutput()))
     if complaint or reader.GetErrorCode() or output is None:
         raise InputError(f"{path} cannot be read: {_reason(complaint)}", assemble.AGAIN)
     return output
+
+
+def _without_ranges(complaint: str) -> str:
+    """VTK's report without what it says of value ranges, which it writes beside arrays that hold
+    infinity and then cannot read; the values themselves are there."""
+    lines = complaint.splitlines()
+    other = [k for k, line in enumerate(lines) if line.strip() and "_RANGE" not in line]
+    told = [lines[k] for k in other if not lines[k].lstrip().startswith(("ERROR:", "vtk"))]
+    if any("_RANGE" in line and "InformationKey" in line for line in lines) and not told:
+        return ""
+    return complaint
 
 
 def _text(value: Any) -> str:
@@ -187,7 +199,21 @@ def _model(path: Path, mesh: Mesh, output: Any, declared: Declared) -> Model:
     notes = list(declared.notes)
     points = _arrays(path, "point", output.GetPointData(), declared, notes)
     cells = _arrays(path, "cell", output.GetCellData(), declared, notes)
-    return assemble.model(path, mesh, points, cells, notes)
+    model = assemble.model(path, mesh, points, cells, notes)
+    names = _component_names("points", output.GetPointData())
+    return replace(model, component_names=names | _component_names("cells", output.GetCellData()))
+
+
+def _component_names(on: str, data: Any) -> dict[tuple[str, str], tuple[str, ...]]:
+    """Names that the file gives to the components of its arrays, where it names all of them."""
+    found = {}
+    for index in range(data.GetNumberOfArrays()):
+        array = data.GetAbstractArray(index)
+        if array.HasAComponentName() and array.GetNumberOfComponents() > 1:
+            names = [array.GetComponentName(k) for k in range(array.GetNumberOfComponents())]
+            if all(names):
+                found[on, _text(array.GetName())] = tuple(_text(n) for n in names)
+    return found
 
 
 def _arrays(
