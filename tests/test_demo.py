@@ -17,6 +17,8 @@ from expander.errors import InputError
 from expander.expansion import plan
 from viewer.commands import demo
 
+pytestmark = pytest.mark.usefixtures("opengl")
+
 
 def run(*arguments: str | Path) -> Result:
     return CliRunner().invoke(demo, [*map(str, arguments), "--size", "480x270"])
@@ -99,3 +101,14 @@ def test_folder_that_cannot_be_made(tmp_path: Path) -> None:
     result = run(next(iter(available())), "--folder", tmp_path / "file" / "demo")
     assert isinstance(result.exception, InputError)
     assert "cannot be made" in str(result.exception)
+
+
+def test_without_opengl_the_body_is_written_all_the_same(
+    tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    monkeypatch.setattr("viewer.offscreen.Trial.succeeds", lambda self: False)
+    result = run("baffle", "--folder", tmp_path)
+    assert result.exit_code == 0
+    assert "libegl1" in result.output
+    assert read(tmp_path / "baffle_whole.vtu").n_cells == 4 * 294
+    assert not list(tmp_path.glob("*.png"))

@@ -29,6 +29,8 @@ from viewer.scene import MOVED, VALUE, Scene, scene_of
 from viewer.surfaces import skin_of
 from viewer.views import View, automatic, turning_axis
 
+pytestmark = pytest.mark.usefixtures("opengl")
+
 SIZE = (480, 270)
 FRONT = [0.0, -1.0, 0.0]
 STRESS = {"kind": "symmetric tensor", "components": "xx yy zz xy yz zx", "seam": "recovered"}

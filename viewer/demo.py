@@ -11,7 +11,7 @@ from expander.commandline.tables import Progress, print_summary
 from expander.errors import InputError
 from expander.expansion import Expansion, plan
 from expander.writers.newfiles import NewFiles
-from viewer.offscreen import Trial
+from viewer.offscreen import HOW_TO_GET_IT, NO_OPENGL, Trial
 from viewer.pictures import draw
 from viewer.scene import scene_of
 
@@ -45,7 +45,9 @@ def run(source: Path, folder: Path, size: tuple[int, int], trial: Trial) -> list
         progress.start(f"writing {expansion.targets[0].file.name}", size_in_bytes)
         expansion.write(progress.advance)
     print_summary({**expansion.summary(), "written": True, "bytes": size_in_bytes})
-    trial.require()
+    if not trial.succeeds():  # the whole body is there; only its picture is not
+        click.echo(f"no picture: {NO_OPENGL}\n  {HOW_TO_GET_IT}", err=True)
+        return files + [f for f in written if f not in pictures]
     _draw(expansion, pictures, size)
     return files + written
 
@@ -80,8 +82,8 @@ def copy_files(source: Path, folder: Path) -> list[Path]:
 
 
 def _files(source: Path) -> list[Path]:
-    """The demo's files; the program that computed them is no part of it."""
-    return sorted(f for f in source.iterdir() if f.is_file() and f.suffix != ".py")
+    """The demo's files, without the program that computed them and the picture of the README."""
+    return sorted(f for f in source.iterdir() if f.is_file() and f.suffix not in (".py", ".png"))
 
 
 def _same(a: Path, b: Path) -> bool:

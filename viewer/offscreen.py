@@ -21,6 +21,15 @@ window.Render()
 """
 _PATIENCE = 60.0
 
+NO_OPENGL = (
+    "Pictures cannot be drawn on this machine: no OpenGL was found, neither of a graphics card nor "
+    "in software."
+)
+HOW_TO_GET_IT = (
+    "Install Mesa's software OpenGL (Debian and Ubuntu: apt install libegl1 libgl1-mesa-dri; "
+    "Fedora: dnf install mesa-libEGL mesa-dri-drivers). A screen is not needed."
+)
+
 
 class Trial:
     """A picture of nothing, drawn by another process.
@@ -53,19 +62,16 @@ class Trial:
         InputError
             With what has to be installed.
         """
+        if not self.succeeds():
+            raise InputError(NO_OPENGL, HOW_TO_GET_IT)
+
+    def succeeds(self) -> bool:
+        """Whether pictures can be drawn here."""
         try:
-            status = self._process.wait(_PATIENCE)
+            return self._process.wait(_PATIENCE) == 0
         except subprocess.TimeoutExpired:
             self._process.kill()
-            status = -1
-        if status != 0:
-            raise InputError(
-                "Pictures cannot be drawn on this machine: no OpenGL was found, neither of a "
-                "graphics card nor in software.",
-                "Install Mesa's software OpenGL (Debian and Ubuntu: apt install libegl1 "
-                "libgl1-mesa-dri; Fedora: dnf install mesa-libEGL mesa-dri-drivers). A screen is "
-                "not needed.",
-            )
+            return False
 
 
 @contextmanager
