@@ -616,6 +616,18 @@ def test_nodes_farther_off_are_merged_on_request(name: str, part: float, tmp_pat
     )
 
 
+def test_the_tolerance_is_that_of_the_local_edge(tmp_path: Path) -> None:
+    """2e-5 off the plane is nothing to edges of 1, and far to edges of 0.01 in the same model."""
+    coarse, fine = box((1, 1, 1)), box((1, 1, 1), (0.01, 0.01, 0.01), corner=(0, 5, 0))
+    sector = coarse.beside(fine)
+    nodes = np.flatnonzero(sector.points[:, 0] == 0.0)
+    plan = prepare(case_of(tmp_path, shaken(sector, nodes, 2e-5, [1.0, 0.0, 0.0]), HALF))
+    assert plan.point_numbering.merged == 4
+    assert set(plan.seams.nodes.items.tolist()) == set(nodes[:4].tolist())
+    assert plan.seams.worst_distance == pytest.approx(4e-5, rel=1e-6)
+    assert any("4 nodes lie close to" in n and "not merged" in n for n in plan.notes)
+
+
 @pytest.mark.parametrize("part", [1e-6, 1e-3, 1e-2])
 def test_nodes_a_little_beyond_the_plane(part: float, tmp_path: Path) -> None:
     """On the wrong side of the plane: merged within the tolerance, else refused with the node."""
