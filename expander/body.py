@@ -185,6 +185,11 @@ def prepare(
         notes.append(_double_cells(cells))
     notes += _frame_notes(fields, mesh)
     notes += derived_notes(fields, case.output.derived)
+    if case.output.copies is not None and any(f.seam == "sum" for f in fields):
+        notes.append(
+            "only some copies are built: values at their open sides are those of the whole body, "
+            "so the forces of the part do not balance"
+        )
     return WholeBody(case, group, mesh, tuple(fields), cases, results, _copies(case, group),
                      seams, nodes, cells, resolved, tuple(openings), tuple(notes),
                      invalid)  # fmt: skip

@@ -155,9 +155,14 @@ def _turned(placement: Placement) -> str:
 
 
 def _scale(planes: tuple[CutPlane, ...], axis: CyclicAxis | None) -> float:
-    points = [p.point for p in planes] + ([axis.point] if axis else [])
+    """Largest distance of a plane or the axis from the origin: where along itself the point of a
+    plane lies says nothing."""
+    away = [abs(float(p.normal @ p.point)) for p in planes]
+    if axis is not None:
+        along = (axis.point @ axis.axis) * axis.axis
+        away.append(float(np.linalg.norm(axis.point - along)))
     # Points read off a model carry round-off: below this, a distance is none in any length unit.
-    return max(float(np.abs(points).max()), 1e-6)
+    return max(*away, 1e-6)
 
 
 def _same(a: Placement, b: Placement, scale: float) -> bool:

@@ -108,6 +108,8 @@ class Tolerance:
 
     def at(self, nodes: Ints) -> Floats:
         """Tolerance at `nodes`, (k,)."""
+        if self.size == 0.0:  # a single point
+            return np.full(len(nodes), self.spacing)
         edge = np.minimum(local_edges(self.mesh, nodes), self.size)
         if self.given is not None:
             tolerance = np.full(len(nodes), self.given)

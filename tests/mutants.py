@@ -1,7 +1,7 @@
 """Mutants made by hand: sign rules flipped and checks dropped, each of which a test must notice.
 
-`mutants.toml` lists them. Each is applied to a copy of the sources, never to the sources themselves,
-and the tests named beside it are run there; they have to fail. Run from anywhere:
+`mutants.toml` lists them. Each is applied to a copy of the sources, never to the sources, and the
+tests named beside it are run there; they have to fail. Run from anywhere:
 
     python tests/mutants.py                # all; exit status 1 if one survives or is stale
     python tests/mutants.py --list
@@ -91,7 +91,7 @@ def read_list(path: Path) -> list[Mutant]:
     mutants = []
     for number, table in enumerate(tomllib.loads(path.read_text(encoding="utf-8"))["mutant"], 1):
         if set(table) != KEYS or not table["tests"] or table["find"] == table["replace"]:
-            raise SystemExit(f"{path.name}: entry {number} ({table.get('name')!r}) is not complete.")
+            raise SystemExit(f"{path.name}: entry {number}, {table.get('name')!r}, is incomplete.")
         mutants.append(Mutant(**{**table, "tests": tuple(table["tests"])}))
     names = [m.name for m in mutants]
     twice = sorted({n for n in names if names.count(n) > 1})
@@ -117,14 +117,12 @@ def run(folder: Path, arguments: list[str]) -> subprocess.CompletedProcess[str]:
     environment = {k: v for k, v in os.environ.items() if not k.startswith("PYTEST_")}
     environment["PYTHONPATH"] = str(folder)
     return subprocess.run(
-        [sys.executable, *arguments], cwd=folder, env=environment, text=True, timeout=MUTANT_SECONDS,
-        stdout=subprocess.PIPE, stderr=subprocess.STDOUT, stdin=subprocess.DEVNULL, check=False,
+        [sys.executable, *arguments], cwd=folder, env=environment, timeout=MUTANT_SECONDS,
+        text=True, stdin=subprocess.DEVNULL, stdout=subprocess.PIPE, stderr=subprocess.STDOUT,
     )  # fmt: skip
 
 
-def run_tests(
-    folder: Path, tests: list[str], workers: int = 0
-) -> subprocess.CompletedProcess[str]:
+def run_tests(folder: Path, tests: list[str], workers: int = 0) -> subprocess.CompletedProcess[str]:
     options = ["-x", "-q", "-p", "no:cacheprovider", "--tb=line", "-rfE"]
     options += ["-o", f"timeout={TEST_SECONDS}", "-n", str(workers)]
     return run(folder, ["-m", "pytest", *options, *tests])
@@ -132,7 +130,8 @@ def run_tests(
 
 def check_unchanged(folder: Path, mutants: list[Mutant], jobs: int) -> None:
     """The tests must run the copy, and pass on it: one that fails anyway notices nothing."""
-    where = run(folder, ["-c", "import expander, viewer; print(expander.__file__, viewer.__file__)"])
+    ask = "import expander, viewer; print(expander.__file__, viewer.__file__)"
+    where = run(folder, ["-c", ask])
     if where.stdout.count(str(folder)) != 2:
         raise SystemExit(f"The copy in {folder} is not what is imported there:\n{where.stdout}")
     tests = sorted({t for m in mutants for t in m.tests})
