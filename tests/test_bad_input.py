@@ -1009,6 +1009,21 @@ def test_single_numbers_must_be_declared_under_an_antisymmetric_load(bench: Benc
         np.testing.assert_array_equal(back.point_data["quality"], right)
 
 
+@pytest.mark.parametrize("name", ["temperature", "pressure", "electric_potential"])
+def test_scalars_by_name_must_be_declared_under_an_antisymmetric_load(
+    bench: Bench, name: str
+) -> None:
+    """A difference changes its sign, an absolute temperature or pressure does not."""
+    grid = box()
+    grid.cell_data[name] = np.ones(grid.n_cells)
+    grid.point_data.clear()
+    bench.model(grid)
+    bench.case(ODD)
+    bench.refuses("case.toml", says=[f"'{name}'", "antisymmetric"])
+    bench.case(HALF)
+    bench.accepts("case.toml")
+
+
 def test_single_numbers_must_be_declared_at_half_the_sectors(bench: Bench) -> None:
     grid = wedge(30.0)
     grid.point_data["displacement"] = np.zeros((grid.n_points, 3))

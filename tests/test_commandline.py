@@ -391,7 +391,7 @@ def test_streams_that_are_no_terminal(tmp_path: Path) -> None:
 
 def test_progress_is_shown_on_a_terminal_only_on_the_error_stream(tmp_path: Path) -> None:
     box().save(tmp_path / "half.vtu")
-    words = ["expand", "half.vtu", "--mirror", "x", "--json"]
+    words = ["expand", "half.vtu", "--mirror", "x", "--json", "-o", "[bold]whole.vtu"]
     quiet = process(*words, cwd=tmp_path)
     ours, theirs = pty.openpty()
     shown: list[bytes] = []
@@ -417,7 +417,7 @@ def test_progress_is_shown_on_a_terminal_only_on_the_error_stream(tmp_path: Path
         os.close(ours)
     assert ran.returncode == 0
     assert ran.stdout == quiet.stdout
-    assert b"half_full.vtu" in b"".join(shown)
+    assert b"[bold]whole.vtu" in b"".join(shown), "the name as it is, not taken for a style"
 
 
 def test_exit_status_of_a_process(tmp_path: Path) -> None:
