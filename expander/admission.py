@@ -76,8 +76,11 @@ def check_same_mesh(first: Model, other: Model, name: str) -> None:
     )
     if same and float(np.abs(a.points - b.points).max()) <= 1e-6 * a.size:
         return
+    counts = (a.point_count, a.cell_count) == (b.point_count, b.cell_count)
     what = (
-        f"{b.point_count} nodes and {b.cell_count} cells against {a.point_count} and "
+        "as many nodes and cells, but in another order"
+        if counts and not same
+        else f"{b.point_count} nodes and {b.cell_count} cells against {a.point_count} and "
         f"{a.cell_count}" if not same else "the same cells, but nodes in other places"
     )  # fmt: skip
     raise InputError(

@@ -139,12 +139,13 @@ def prepare(
     notes = [note for m in dict.fromkeys(models) for note in m.notes]
     frames = frames_of(case, {n: _direction(t.axis, f"frames.{n}.axis")
                               for n, t in case.frames.items()})  # fmt: skip
-    fields, left_out = fields_of(models[0], case, frames, skip_undeclared, odd)
+    scaled = bool(case.sum) or any(c.factor != 1.0 for c in cases)
+    fields, left_out = fields_of(models[0], case, frames, skip_undeclared, odd or scaled)
     notes += left_out
     check_shear(fields, group.placements)
     for c in cases:
         if c.chi.min() < 0:
-            check_load_odd(fields, f"the antisymmetric case {c.name!r}")
+            check_load_odd(fields, f"case {c.name!r} ({c.behaviour.words()}), antisymmetric")
     if case.sum:
         check_invariants(fields, f"the sum {case.sum[0].name!r}")
     check_storage(fields, group)

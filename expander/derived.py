@@ -64,6 +64,17 @@ def derived_notes(fields: Iterable[Field], wanted: Iterable[str]) -> list[str]:
                 f"output.derived: {word!r} was asked for, but no field gives it (a stress is a "
                 "symmetric tensor with the word stress in its name)"
             )
+        flat = [
+            f.name
+            for f in listed
+            for e in derived_fields(f, [word])
+            if e.values is von_mises and not any("z" in c for c in f.quantity.components)
+        ]
+        notes += [
+            f"output.derived: {word!r} of {name!r} takes stresses out of the plane as zero (plane "
+            "stress)"
+            for name in flat
+        ]
         own = {f.name for f in listed}
         notes += [
             f"output.derived: {e.name!r} is an array of the model already, which is kept where it "

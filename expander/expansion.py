@@ -9,6 +9,7 @@ from concurrent.futures import Future, ThreadPoolExecutor
 from dataclasses import dataclass
 from importlib.metadata import PackageNotFoundError, version
 from pathlib import Path
+from threading import Event
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
@@ -53,14 +54,19 @@ def input_files(case: CaseFile) -> list[Path]:
     return files + ([case.source] if case.source else [])
 
 
-def digests(files: list[Path]) -> dict[str, str]:
-    """SHA-256 of each file by name."""
+def digests(files: list[Path], stop: Event | None = None) -> dict[str, str]:
+    """SHA-256 of each file by name; empty if `stop` is set meanwhile."""
     found = {}
     for file in files:
         if not file.is_file():
             continue  # a pipe would never end; what is missing is reported by the reader
+        digest = hashlib.sha256()
         with file.open("rb") as stream:
-            found[file.name] = hashlib.file_digest(stream, "sha256").hexdigest()
+            while piece := stream.read(1 << 20):
+                if stop is not None and stop.is_set():
+                    return {}
+                digest.update(piece)
+        found[file.name] = digest.hexdigest()
     return found
 
 
@@ -205,11 +211,16 @@ def plan(
     step: Step = lambda words: None,
 ) -> Expansion:
     """Read and check a case; raises as `body.prepare` does."""
+    stop = Event()
     with ThreadPoolExecutor(1) as pool:
         # Hashing reads the files once more, while the main thread thinks.
-        hashes = pool.submit(digests, input_files(case))
-        body = prepare(case, skip_undeclared, allow_nan, step)
-        chosen, index = targets(case, body.results)
+        hashes = pool.submit(digests, input_files(case), stop)
+        try:
+            body = prepare(case, skip_undeclared, allow_nan, step)
+            chosen, index = targets(case, body.results)
+        except BaseException:
+            stop.set()
+            raise
     return Expansion(body, chosen, index, hashes)
 
 

@@ -18,8 +18,10 @@ from expander.placements import Floats, Placement
 from expander.quantities import KINDS, Quantity, quantity
 from expander.tradewords import (
     TradeWord,
+    component_of,
     component_order,
     names_a_rotation,
+    names_cylindrical,
     not_linear,
     stress_odd,
     trade_word,
@@ -117,7 +119,8 @@ def fields_of(
 
     Parameters
     ----------
-    odd : whether any case has a copy with chi = -1; scalars must then be declared.
+    odd : whether a case has a copy with chi = -1, or is scaled or added; scalars must then be
+        declared.
 
     Raises
     ------
@@ -131,7 +134,8 @@ def fields_of(
     solid = bool((dimensions(model.mesh.types) == 3).any())
     unknown: list[tuple[str, str, int]] = []
     notes: list[str] = []
-    rotations: dict[str, str] = {}
+    notices: list[str] = []
+    parts: dict[tuple[str, str], list[str]] = {}
     for on, data in (("points", model.point_data), ("cells", model.cell_data)):
         other = model.cell_data if on == "points" else model.point_data
         for name, array in data.items():
@@ -140,7 +144,8 @@ def fields_of(
             size = 1 if array.ndim == 1 else array.shape[1]
             word = None if name in other else trade_word(name, size)
             if word is not None and odd and word.kind == "scalar" and word.follows == "load":
-                word = None  # whether it changes sign must be said, not guessed
+                # whether it follows the load must be said, not guessed
+                word = word if stress_odd(name) else None
             if word is not None and solid and (word.kind, size) in _OF_PLANE_MODELS:
                 word = None  # a plane storage on solids may be something else
             clash = (
@@ -152,7 +157,26 @@ def fields_of(
                 and word.kind == "polar vector"
                 and any(names_a_rotation(n) for n in named)
             ):
-                rotations[name] = " ".join(named)
+                notices.append(
+                    f" The file names the components of {name!r} {' '.join(named)}: translations "
+                    "and rotations in one array are two fields, a polar vector and an axial "
+                    "vector, each with its columns."
+                )
+                word = None
+            if word is not None and names_cylindrical(named):
+                notices.append(
+                    f" The file names the components of {name!r} {' '.join(named)}: these are "
+                    'cylindrical. Declare the field with frame = "...", and the frame with a '
+                    "[frames] table."
+                )
+                word = None
+            part = (
+                component_of(name)
+                if size == 1 and np.issubdtype(array.dtype, np.floating)
+                else None
+            )
+            if part is not None:
+                parts.setdefault((on, part), []).append(name)
                 word = None
             if word is not None and not clash:
                 fields.append(_by_name(name, on, word, size, named, frames["global"]))
@@ -164,7 +188,12 @@ def fields_of(
             else:
                 unknown.append((on, name, size))
     if unknown and not skip_undeclared:
-        raise _undeclared(model, unknown, case, odd, rotations)
+        notices += [
+            f" {', '.join(names)} on {on} look like components of one field: declare it with "
+            f"arrays = {json.dumps(names)}."
+            for (on, _), names in parts.items()
+        ]
+        raise _undeclared(model, unknown, case, odd, notices)
     notes += [f"array {n!r} on {on} is undeclared and was left out" for on, n, _ in unknown]
     return fields, notes
 
@@ -209,6 +238,11 @@ def _declared(
         named = model.component_names.get((on, arrays[0]), ()) if len(arrays) == 1 else ()
         if columns is not None:
             named = tuple(named[c] for c in columns) if named else ()
+        if names_cylindrical(named) and components is None and isinstance(frame, Global):
+            raise InputError(
+                f"the file names its components {' '.join(named)}: these are cylindrical.",
+                'Add frame = "..." and a [frames] table, or components = "..." if they are not.',
+            )
         q, order = _ordered(table.kind, size, components, named, table.shear or "tensor")
     except NotYetError as error:
         raise NotYetError(f"{path}: {error.found}", error.remedy) from None
@@ -311,7 +345,7 @@ def _undeclared(
     unknown: list[tuple[str, str, int]],
     case: CaseFile,
     odd: bool,
-    rotations: Mapping[str, str],
+    notices: list[str],
 ) -> InputError:
     lines = []
     taken = set(case.fields)
@@ -329,17 +363,12 @@ def _undeclared(
             lines.append(f'on = "{on}"')
     names = ", ".join(f"{n!r} on {on} ({s})" for on, n, s in unknown)
     because = (
-        " With an antisymmetric load even a single number must be declared: a scalar changes "
-        "sign, an invariant and a property of the body do not."
+        " With an antisymmetric load, a factor or a sum even a single number must be declared: a "
+        "scalar follows the load, an invariant and a property of the body do not."
         if odd and any(s == 1 for _, _, s in unknown)
         else ""
     )
-    for name, components in rotations.items():
-        because += (
-            f" The file names the components of {name!r} {components}: translations and rotations "
-            "in one array are two fields, a polar vector and an axial vector, each with its "
-            "columns."
-        )
+    because += "".join(notices)
     option = (
         "" if case.source else '\n  or give options such as --field "NAME=polar vector",'
     )  # fmt: skip

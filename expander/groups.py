@@ -241,7 +241,8 @@ def make_group(planes: list[CutPlane], axis: CyclicAxis | None) -> Group:
     if not cuts and axis is None:
         raise InputError(
             "The case has neither a cut plane nor an axis: there is nothing to copy.",
-            'Add a [[mirror]] table (normal = "x") or a [cyclic] table (sectors = 12).',
+            'Add a [[mirror]] table (normal = "x") or a [cyclic] table (sectors = 12); for a model '
+            "file the options --mirror x or --sectors 12.",
         )
     _check_planes(cuts)
     if axis is not None:

@@ -76,12 +76,21 @@ TRADE_WORDS = (
 )  # fmt: skip
 
 # Odd in the response though not linear: no rule copies one of them under an antisymmetric load.
-STRESS_ODD = re.compile(r"(.+_)?(principal|signed|interaction|failure_index|reserve_factor)(_.+)?")
+STRESS_ODD = re.compile(
+    r"(.+_)?(principal|signed|interaction|failure_index|reserve_factor"
+    r"|tsai_wu|hoffman|triaxiality)(_.+)?"
+)
 # Not linear in the response, whatever its kind: F is one plus a gradient.
 NOT_LINEAR = re.compile(r"(.+_)?(deformation_gradient|stretch)(_.+)?")
 
 
-_ROTATION = re.compile(r"(u|d|dof)?_?(rot|rx|ry|rz|th|theta|phi|r_?)_?[xyz123]?")
+_ROTATION = re.compile(r"(u|d|dof)?_?(rot(_?[xyz123])?|(r|th|theta|phi)_?[xyz123])")
+_CYLINDRICAL = re.compile(r"(r|t|th|theta|z){1,2}")
+_COMPONENT = re.compile(
+    r"(u|v|a|d|f|rf|rm|r|ur|rot|s|e|le|ee|pe|n|m|q|b|sig|sigma|eps|epsilon|gamma|tau|stress|strain"
+    r"|disp|displacement|velocity|acceleration|force|reaction|moment|rotation|heat_flux)_?"
+    r"([xyz]{1,2}|[123]{1,2})"
+)
 _INDEX = {"1": "x", "2": "y", "3": "z", "x": "x", "y": "y", "z": "z"}
 
 
@@ -92,6 +101,27 @@ def names_a_rotation(component: str) -> bool:
     [False, True, True, False]
     """
     return bool(_ROTATION.fullmatch(component.lower()))
+
+
+def names_cylindrical(components: tuple[str, ...]) -> bool:
+    """Whether components are named after the directions of a cylindrical frame.
+
+    >>> names_cylindrical(("rr", "tt", "zz", "rt", "tz", "zr")), names_cylindrical(("x", "y", "z"))
+    (True, False)
+    """
+    plain = [c.lower().replace("_", "") for c in components]
+    fits = all(_CYLINDRICAL.fullmatch(c) for c in plain)
+    return bool(plain) and fits and any(set(c) - {"z"} for c in plain)
+
+
+def component_of(name: str) -> str | None:
+    """What an array of a single number seems to be one component of; None if nothing.
+
+    >>> component_of("UX"), component_of("S12"), component_of("temperature")
+    ('u', 's', None)
+    """
+    found = _COMPONENT.fullmatch(normalised(name))
+    return found[1] if found else None
 
 
 def component_order(names: tuple[str, ...], rank: int) -> str | None:

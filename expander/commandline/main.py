@@ -57,6 +57,9 @@ def _terminated(*_: Any) -> None:
 def main() -> None:
     """Entry point of the console command."""
     signal.signal(signal.SIGTERM, _terminated)
+    if hasattr(signal, "SIGPIPE"):
+        # The table is printed when the files are whole: a reader that stops is no failed check.
+        signal.signal(signal.SIGPIPE, signal.SIG_DFL)
     for stream in (sys.stdout, sys.stderr):
         if isinstance(stream, io.TextIOWrapper):  # a terminal may not know every letter
             stream.reconfigure(errors="backslashreplace")
@@ -71,9 +74,6 @@ def main() -> None:
     except (KeyboardInterrupt, click.Abort):
         _say("seamfold: stopped; nothing was left behind.")
         sys.exit(130)
-    except BrokenPipeError:
-        sys.stderr.close()
-        sys.exit(1)
     except MemoryError:
         _say("seamfold: not enough memory for this model; nothing was written.")
         sys.exit(2)

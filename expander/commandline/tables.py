@@ -97,9 +97,10 @@ def print_summary(found: dict[str, Any]) -> None:
         terms = " + ".join(f"{a:g} {name}" for name, a in result["terms"].items())
         mark = "wrote" if found["written"] else "would write"
         left = f"; left out: {', '.join(result['left_out'])}" if result["left_out"] else ""
-        console.print(escape(f"{mark} {result['file']}  ({result['name']} = {terms}{left})"))
+        line = escape(f"{mark} {result['file']}  ({result['name']} = {terms}{left})")
+        console.print(line, soft_wrap=True)  # a path must stay in one piece
     if found["index"]:
-        console.print(escape(f"index {found['index']}"))
+        console.print(escape(f"index {found['index']}"), soft_wrap=True)
     for name, count in found["not_finite"].items():
         console.print(escape(f"note: {name} holds {count} values that are not finite numbers"))
     for note in found["notes"]:

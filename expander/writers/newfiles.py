@@ -47,8 +47,7 @@ class NewFiles:
         free = shutil.disk_usage(path.parent).free
         if free < size:
             raise InputError(
-                f"{path}: the file needs {size / 1e9:.3g} GB, the disk has {free / 1e9:.3g} GB "
-                "free.",
+                f"{path}: the file needs {_in_words(size)}, the disk has {_in_words(free)} free.",
                 "Choose another folder (output.file), or fewer copies (output.copies).",
             )
         handle, name = tempfile.mkstemp(prefix=".seamfold-", suffix=".part", dir=path.parent)
@@ -84,6 +83,18 @@ class NewFiles:
                 if error.errno in _FULL
                 else "Choose another folder (output.file), or make this one writable.",
             ) from None
+
+
+def _in_words(size: int) -> str:
+    """A number of bytes.
+
+    >>> _in_words(1_500_000), _in_words(300)
+    ('1.5 MB', '0.3 kB')
+    """
+    for unit, name in ((1e9, "GB"), (1e6, "MB")):
+        if size >= unit:
+            return f"{size / unit:.3g} {name}"
+    return f"{size / 1e3:.3g} kB"
 
 
 def check_place(path: Path) -> None:
