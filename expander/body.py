@@ -140,7 +140,7 @@ def prepare(
     frames = frames_of(case, {n: _direction(t.axis, f"frames.{n}.axis")
                               for n, t in case.frames.items()})  # fmt: skip
     scaled = bool(case.sum) or any(c.factor != 1.0 for c in cases)
-    fields, left_out = fields_of(models[0], case, frames, skip_undeclared, odd or scaled)
+    fields, left_out = fields_of(models[0], case, frames, skip_undeclared, odd, scaled)
     notes += left_out
     check_shear(fields, group.placements)
     for c in cases:

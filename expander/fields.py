@@ -113,14 +113,19 @@ def frames_of(case: CaseFile, directions: Mapping[str, Floats]) -> dict[str, Fra
 
 
 def fields_of(
-    model: Model, case: CaseFile, frames: Mapping[str, Frame], skip_undeclared: bool, odd: bool
+    model: Model,
+    case: CaseFile,
+    frames: Mapping[str, Frame],
+    skip_undeclared: bool,
+    odd: bool,
+    scaled: bool,
 ) -> tuple[list[Field], list[str]]:
     """All fields of the model, and notes on arrays that were left out.
 
     Parameters
     ----------
-    odd : whether a case has a copy with chi = -1, or is scaled or added; scalars must then be
-        declared.
+    odd : whether a case has a copy with chi = -1: scalars must then be declared.
+    scaled : whether a case is scaled or added: scalars without a trade word must be declared.
 
     Raises
     ------
@@ -182,7 +187,7 @@ def fields_of(
                 fields.append(_by_name(name, on, word, size, named, frames["global"]))
             elif (
                 size == 1 and name not in other and not clash
-                and (np.issubdtype(array.dtype, np.integer) or not odd)
+                and (np.issubdtype(array.dtype, np.integer) or not (odd or scaled))
             ):  # fmt: skip
                 fields.append(_plain(name, on, array, frames["global"]))
             else:
@@ -193,7 +198,7 @@ def fields_of(
             f"arrays = {json.dumps(names)}."
             for (on, _), names in parts.items()
         ]
-        raise _undeclared(model, unknown, case, odd, notices)
+        raise _undeclared(model, unknown, case, odd or scaled, notices)
     notes += [f"array {n!r} on {on} is undeclared and was left out" for on, n, _ in unknown]
     return fields, notes
 
