@@ -25,6 +25,7 @@ from expander.admission import (
 from expander.behaviours import factors
 from expander.casefile import CaseFile, CaseTable, Direction, plane_names
 from expander.closing import Opening, check_closing
+from expander.declarations import fields_of
 from expander.derived import derived_notes
 from expander.errors import InputError
 from expander.fields import (
@@ -32,7 +33,6 @@ from expander.fields import (
     check_invariants,
     check_load_odd,
     check_shear,
-    fields_of,
     frames_of,
 )
 from expander.groups import CutPlane, CyclicAxis, Group, make_group

@@ -18,6 +18,7 @@ class TradeWord:
     ----------
     sizes : numbers of components for which the name decides.
     seam, follows : as in the case file.
+    on : "points" where the word means something else on cells, such as a section's resultant.
     """
 
     pattern: str
@@ -25,6 +26,7 @@ class TradeWord:
     sizes: tuple[int, ...] = (1,)
     seam: str = "agree"
     follows: str = "load"
+    on: str = ""
 
 
 _FORCE = "nodal|internal|external|applied|reaction|contact|residual"
@@ -40,9 +42,14 @@ TRADE_WORDS = (
     ),
     TradeWord(r"(.+_)?energy(_density)?", "invariant", seam="recovered"),
     TradeWord(
-        r"(.+_)?principal(_.+)?|(.+_)?principals", "principal values", (3,), seam="recovered"
+        r"(.+_)?principal_(stress|stresses|strain|strains|values?)|principals?"
+        r"|(stress|strain)_principals?",
+        "principal values", (3,), seam="recovered",
     ),
-    TradeWord(r"(.+_)?principal(_.+)?", "invariant", (1,), seam="recovered"),
+    TradeWord(
+        r"(?!.*(direction|axis|axes|vector|normal|angle))(.+_)?principal(_.+)?",
+        "invariant", (1,), seam="recovered",
+    ),
     # Primary fields
     TradeWord(r"(total_)?displacements?|disp|u|translations?", "polar vector", (2, 3)),
     TradeWord(r"rotations?|angular_(displacement|velocity|acceleration)s?", "axial vector", (1, 3)),
@@ -51,10 +58,11 @@ TRADE_WORDS = (
     # Extensive nodal quantities
     TradeWord(
         rf"(({_FORCE})_)?(forces?)|({_FORCE})_(forces?|loads?)|reactions?",
-        "polar vector", (2, 3), seam="sum",
+        "polar vector", (2, 3), seam="sum", on="points",
     ),
     TradeWord(
-        rf"({_FORCE})_moments?(_of_force)?|moments?_of_force", "axial vector", (1, 3), seam="sum"
+        r"(nodal|applied|reaction|contact|residual)_moments?(_of_force)?|moments?_of_force",
+        "axial vector", (1, 3), seam="sum", on="points",
     ),
     TradeWord(r"(.+_)?heat_flow", "scalar", seam="sum"),
     TradeWord(r"(lumped_|nodal_)?mass", "scalar", seam="sum", follows="body"),
@@ -124,18 +132,28 @@ def component_of(name: str) -> str | None:
     return found[1] if found else None
 
 
-def component_order(names: tuple[str, ...], rank: int) -> str | None:
+def component_order(names: tuple[str, ...], rank: int, cylindrical: bool = False) -> str | None:
     """Stored order of a vector or tensor from the names of its components in a file.
 
     >>> component_order(("S11", "S22", "S33", "S12", "S23", "S13"), 2)
     'xx yy zz xy yz xz'
+    >>> component_order(("SX", "SY", "SZ", "SXY", "SXZ", "SYZ"), 2)
+    'xx yy zz xy xz yz'
+    >>> component_order(("rr", "tt", "zz", "rz"), 2, cylindrical=True)
+    'xx yy zz xz'
     """
+    letters = "rtz" if cylindrical else "xyz"
+    to_xyz = {**dict(zip(letters, "xyz", strict=True)), **dict(zip("123", "xyz", strict=True))}
     found = []
     for name in names:
-        letters = re.sub(r"[^xyz123]", "", name.lower())[-rank:] if rank else ""
-        found.append("".join(_INDEX[letter] for letter in letters))
-    plain = all(len(f) == rank for f in found) and len(set(found)) == len(found)
-    return " ".join(found) if rank and plain else None
+        plain = name.lower().replace("theta", "t").replace("_", "").replace(" ", "")
+        end = re.search(rf"([{letters}123]+)$", plain)
+        index = end[1][-rank:] if end else ""
+        if rank == 2 and len(index) == 1:
+            index *= 2  # a normal component, named once
+        found.append("".join(to_xyz[letter] for letter in index))
+    whole = all(len(f) == rank for f in found) and len({*found}) == len(found)
+    return " ".join(found) if rank and whole else None
 
 
 def normalised(name: str) -> str:
@@ -149,8 +167,8 @@ def normalised(name: str) -> str:
     return re.sub(r"[^a-z0-9]+", "_", name.lower()).strip("_")
 
 
-def trade_word(name: str, size: int) -> TradeWord | None:
-    """The first trade word that fits a name and number of components.
+def trade_word(name: str, size: int, on: str = "points") -> TradeWord | None:
+    """The first trade word that fits a name, a number of components and a place.
 
     >>> trade_word("Reaction Force", 3).seam
     'sum'
@@ -159,9 +177,24 @@ def trade_word(name: str, size: int) -> TradeWord | None:
     """
     plain = normalised(name)
     for word in TRADE_WORDS:
-        if size in word.sizes and re.fullmatch(word.pattern, plain):
+        if size in word.sizes and re.fullmatch(word.pattern, plain) and word.on in ("", on):
             return word
     return None
+
+
+_LABELS = re.compile(
+    r"(.+_)?(ids?|numbers?|index|label|tag|part|material|property|section|region|set|component"
+    r"|block|layer|physical|geometrical|ref)"
+)
+
+
+def label_word(name: str) -> bool:
+    """Whether an integer array is by its name a number of something.
+
+    >>> label_word("node_id"), label_word("gmsh:physical"), label_word("temperature")
+    (True, True, False)
+    """
+    return bool(_LABELS.fullmatch(normalised(name)))
 
 
 def not_linear(name: str) -> bool:

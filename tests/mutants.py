@@ -112,7 +112,7 @@ def copy_to(folder: Path) -> Path:
     return folder
 
 
-def run(folder: Path, arguments: list[str]) -> subprocess.CompletedProcess[str]:
+def run(folder: Path, *arguments: str) -> subprocess.CompletedProcess[str]:
     """Python in a copy; processes that tests start use the copy too."""
     environment = {k: v for k, v in os.environ.items() if not k.startswith("PYTEST_")}
     environment["PYTHONPATH"] = str(folder)
@@ -122,22 +122,24 @@ def run(folder: Path, arguments: list[str]) -> subprocess.CompletedProcess[str]:
     )  # fmt: skip
 
 
-def run_tests(folder: Path, tests: list[str], workers: int = 0) -> subprocess.CompletedProcess[str]:
+def run_tests(folder: Path, *arguments: str, workers: int = 0) -> subprocess.CompletedProcess[str]:
     options = ["-x", "-q", "-p", "no:cacheprovider", "--tb=line", "-rfE"]
     options += ["-o", f"timeout={TEST_SECONDS}", "-n", str(workers)]
-    return run(folder, ["-m", "pytest", *options, *tests])
+    return run(folder, "-m", "pytest", *options, *arguments)
 
 
 def check_unchanged(folder: Path, mutants: list[Mutant], jobs: int) -> None:
     """The tests must run the copy, and pass on it: one that fails anyway notices nothing."""
-    ask = "import expander, viewer; print(expander.__file__, viewer.__file__)"
-    where = run(folder, ["-c", ask])
+    where = run(folder, "-c", "import expander, viewer; print(expander.__file__, viewer.__file__)")
     if where.stdout.count(str(folder)) != 2:
         raise SystemExit(f"The copy in {folder} is not what is imported there:\n{where.stdout}")
     tests = sorted({t for m in mutants for t in m.tests})
-    ran = run_tests(folder, tests, jobs if jobs > 1 else 0)
-    if ran.returncode:
-        raise SystemExit(f"{ran.stdout}\nThe tests fail without any mutant; mend them first.")
+    for ran in (
+        run_tests(folder, "--collect-only", *tests),  # names the tests that are not there
+        run_tests(folder, *tests, workers=jobs if jobs > 1 else 0),
+    ):
+        if ran.returncode:
+            raise SystemExit(f"{ran.stdout}\nThe tests do not pass without mutants; mend them.")
 
 
 def outcome_of(mutant: Mutant, unchanged: Path) -> Outcome:
@@ -150,7 +152,7 @@ def outcome_of(mutant: Mutant, unchanged: Path) -> Outcome:
         if wrong:
             return Outcome("stale", wrong, time.perf_counter() - start)
         try:
-            ran = run_tests(folder, list(mutant.tests))
+            ran = run_tests(folder, *mutant.tests)
         except subprocess.TimeoutExpired:
             return Outcome("noticed", "does not come to an end", time.perf_counter() - start)
     seconds = time.perf_counter() - start
