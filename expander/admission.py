@@ -89,6 +89,33 @@ def check_same_mesh(first: Model, other: Model, name: str) -> None:
     )
 
 
+def check_same_arrays(first: Model, other: Model, name: str, skip: bool) -> list[str]:
+    """Refuse arrays that a later case holds alone, or holds in another order of components."""
+    notes = []
+    for on, mine, theirs in (
+        ("points", first.point_data, other.point_data),
+        ("cells", first.cell_data, other.cell_data),
+    ):
+        extra = [a for a in theirs if a not in mine]
+        if extra and not skip:
+            raise InputError(
+                f"{other.source} (case {name!r}) has arrays on {on} that {first.source} has not: "
+                f"{', '.join(map(repr, extra))}.",
+                "All cases of one body hold the same fields; leave the others out with "
+                "--skip-undeclared.",
+            )
+        notes += [f"array {a!r} on {on} is in case {name!r} alone and was left out" for a in extra]
+        for array in mine:
+            key = (on, array)
+            if array in theirs and first.component_names.get(key) != other.component_names.get(key):
+                raise InputError(
+                    f"{other.source} (case {name!r}): array {array!r} names other components than "
+                    f"in {first.source}.",
+                    "All cases of one body store their components in one order.",
+                )
+    return notes
+
+
 def check_linear(case: CaseFile, cases: tuple[LoadCase, ...]) -> None:
     if case.model.linear:
         return

@@ -18,6 +18,7 @@ from expander.admission import (
     check_linear,
     check_mesh,
     check_numbers,
+    check_same_arrays,
     check_same_mesh,
     check_storage,
     read_models,
@@ -44,7 +45,7 @@ from expander.resolve import Resolved, resolve
 from expander.seams import Classes, Seams, find_seams
 from expander.surroundings import not_averaged
 from expander.tiling import check_sides, check_touch, check_turns
-from expander.topology import cell_centres, cells_at_nodes
+from expander.topology import Ints, cell_centres, cells_at_nodes
 
 
 @dataclass(frozen=True, eq=False)
@@ -126,9 +127,11 @@ def prepare(
     step("reading")
     models = read_models(case, tables, allow_nan)
     mesh = models[0].mesh
+    notes = [note for m in dict.fromkeys(models) for note in m.notes]
     check_mesh(models[0])
     for name, model in zip([t.name for t in tables][1:], models[1:], strict=True):
         check_same_mesh(models[0], model, name)
+        notes += check_same_arrays(models[0], model, name, skip_undeclared)
     cases = tuple(
         LoadCase(t.name, m, b, chi, t.factor)
         for t, m, b, chi in zip(tables, models, behaviours, signs, strict=True)
@@ -136,7 +139,6 @@ def prepare(
     results = results_of(case, cases)
     check_linear(case, cases)
     odd = any(c.chi.min() < 0 for c in cases)
-    notes = [note for m in dict.fromkeys(models) for note in m.notes]
     frames = frames_of(case, {n: _direction(t.axis, f"frames.{n}.axis")
                               for n, t in case.frames.items()})  # fmt: skip
     scaled = bool(case.sum) or any(c.factor != 1.0 for c in cases)
@@ -161,25 +163,30 @@ def prepare(
     notes += check_turns(mesh, group, seams, tolerance)
     step("resolving seams")
     nodes = seams.nodes
-    kept_apart, words = not_averaged(mesh, models[0], fields, nodes, group)
+    apart, words = not_averaged(mesh, models[0], fields, nodes, group)
     notes += words
-    resolved = _resolved(mesh, fields, cases, nodes, group, "points")
+    resolved = _resolved(mesh, fields, cases, nodes, group, "points", apart)
     openings = check_closing(mesh, group, fields, cases, nodes, resolved, case.seam.limit,
                              keep_apart=case.seam.open == "keep apart")  # fmt: skip
-    opened = sorted({n for o in openings for n in o.nodes})
-    kept_apart = np.union1d(kept_apart, opened).astype(np.int64)
-    if openings:
+    for o in openings:
         notes.append(
-            f"the seam is open at {len(opened)} nodes, which were kept apart "
-            '(seam.open = "keep apart"); their values are the sector\'s own'
+            f"the seam is open at {len(o.nodes)} nodes for {o.field!r} in case {o.case!r} (worst "
+            f"jump {100 * o.worst:.3g} % of the largest value): they were kept apart there "
+            '(seam.open = "keep apart"), with the sector\'s own values'
         )
     if not case.output.merge:
+        twice = shared_cells(mesh, nodes, group)
         nodes = Classes.none()
         notes.append("the copies are not merged (output.merge = false); values are the sector's")
-    elif len(kept_apart):
-        nodes = nodes.without(kept_apart)
-    if len(nodes.item) != len(seams.nodes.item):
-        resolved = _resolved(mesh, fields, cases, nodes, group, "points")
+        if len(twice.item):
+            notes.append(
+                f"{len(twice.items)} cells lie in a cut plane or on the axis and stand there once "
+                "for every copy, since nothing was merged"
+            )
+    elif openings:
+        nodes = nodes.without(np.unique([e for o in openings for e in o.entries]), group)
+    if nodes is not seams.nodes:
+        resolved = _resolved(mesh, fields, cases, nodes, group, "points", apart)
     cells = shared_cells(mesh, nodes, group)
     if len(cells.item):
         resolved |= _resolved(mesh, fields, cases, cells, group, "cells")
@@ -223,11 +230,13 @@ def _resolved(
     classes: Classes,
     group: Group,
     on: str,
+    apart: Ints | None = None,
 ) -> dict[tuple[str, int], Resolved]:
     items = classes.items
     places = mesh.points[items] if on == "points" else cell_centres(mesh)[items]
     weights = cells_at_nodes(mesh, items) if on == "points" and len(items) else None
     on_axis = _on_axis(mesh)
+    own = None if apart is None else np.isin(items, apart)
     found = {}
     for k, c in enumerate(cases):
         for f in fields:
@@ -235,7 +244,7 @@ def _resolved(
             if f.on == on and (on == "points" or f.seam == "sum"):
                 values = f.values(c.model)[items]
                 found[f.name, k] = resolve(f, values, places, classes, group, c.chi, weights,
-                                           on_axis)  # fmt: skip
+                                           on_axis, own)  # fmt: skip
     return found
 
 
@@ -255,7 +264,7 @@ def _frame_notes(fields: list[Field], mesh: Mesh) -> list[str]:
     from expander.frames import Cylindrical
 
     notes = []
-    for frame in {f.frame for f in fields if isinstance(f.frame, Cylindrical)}:
+    for frame in dict.fromkeys(f.frame for f in fields if isinstance(f.frame, Cylindrical)):
         near = frame.radius(mesh.points.astype(float))
         if near.min() <= 1e-9 * near.max():
             notes.append(

@@ -51,6 +51,9 @@ def input_files(case: CaseFile) -> list[Path]:
         names.append(table.file or case.model.file or "")
         names += table.results if table.results is not None else case.model.results
     files = [case.folder / n for n in dict.fromkeys(names) if n]
+    # The numbers of an XDMF file usually stand in an HDF5 file beside it.
+    beside = [f.with_suffix(".h5") for f in files if f.suffix.lower() in (".xdmf", ".xmf")]
+    files += [f for f in beside if f.is_file()]
     return files + ([case.source] if case.source else [])
 
 
@@ -66,7 +69,7 @@ def digests(files: list[Path], stop: Event | None = None) -> dict[str, str]:
                 if stop is not None and stop.is_set():
                     return {}
                 digest.update(piece)
-        found[file.name] = digest.hexdigest()
+        found[file.as_posix()] = digest.hexdigest()
     return found
 
 
@@ -156,8 +159,16 @@ def field_data(body: WholeBody, result: Result, hashes: dict[str, str]) -> dict[
         "cautions": list(CAUTIONS),
         "unit": [body.case.model.unit or ""],
         "program": [f"seamfold {program_version()}"],
-        "input_sha256": [f"{name} {digest}" for name, digest in hashes.items()],
+        "input_sha256": [
+            f"{_relative(name, body.case.folder)} {digest}" for name, digest in hashes.items()
+        ],
     }
+
+
+def _relative(name: str, folder: Path) -> str:
+    """A file as the case names it, so that the bytes do not depend on where the case lies."""
+    path = Path(name)
+    return path.relative_to(folder).as_posix() if path.is_relative_to(folder) else path.name
 
 
 def _matrix(body: WholeBody, copy: int) -> np.ndarray:

@@ -73,9 +73,9 @@ class Cylindrical:
         along = float(self.axis @ g.Q @ self.axis)
         moved = g.apply(self.point[None])[0] - self.point
         off = moved - (moved @ self.axis) * self.axis
-        if abs(abs(along) - 1.0) > 1e-12 or np.abs(off).max() > 1e-12 * max(
-            1e-30, float(np.abs(self.point).max())
-        ):
+        # Round-off of points, as in groups: below this, a distance is none in any length unit.
+        allowed = 1e-12 * max(1.0, float(np.abs(self.point).max()), float(np.abs(g.t).max()))
+        if abs(abs(along) - 1.0) > 1e-12 or np.abs(off).max() > allowed:
             return None
         sz = float(np.sign(along))
         return np.diag([1.0, g.det * sz, sz])

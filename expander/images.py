@@ -33,11 +33,9 @@ from expander.loadcases import Result
 from expander.numbering import Numbering
 from expander.placements import Floats
 from expander.quantities import Quantity
-from expander.resolve import acting, from_global, to_global
+from expander.resolve import acting, from_global, product, to_global
 
 Block = NDArray[np.generic]
-
-_BLAS_ALONE = 200_000  # multiplications of one product
 
 
 @dataclass(eq=False)
@@ -93,7 +91,9 @@ def arrays_of(body: WholeBody, result: Result) -> Iterator[BodyArray]:
         if copy == 0:
             return x
         g = body.group.placements[copy]
-        return (times(x.astype(float, copy=False), g.Q) + g.t).astype(coordinates.dtype, copy=False)
+        return (product(x.astype(float, copy=False), g.Q) + g.t).astype(
+            coordinates.dtype, copy=False
+        )
 
     yield BodyArray("Points", "coordinates", coordinates.dtype, ("x", "y", "z"), points.first,
                     points.total, place)  # fmt: skip
@@ -150,6 +150,13 @@ class _Signed:
         self.body, self.result, self.field = body, result, f
         self._known: dict[tuple[float, ...], Block] = {}
         self._lock = Lock()
+        kinds = [f.values(body.cases[k].model).dtype for k, _ in result.terms]
+        self.plain = f.constant or (len(kinds) == 1 and result.terms[0][1] == 1.0)
+        if self.plain or all(np.issubdtype(k, np.integer) for k in kinds):
+            self.dtype = np.result_type(*kinds[: 1 if self.plain else None])
+        else:  # a float of the widest kind
+            floats = [k if np.issubdtype(k, np.floating) else np.float64 for k in kinds]
+            self.dtype = np.result_type(*floats)
 
     def pattern(self, copy: int) -> tuple[float, ...]:
         """Signs of chi relative to the first term, whose own sign goes into the matrix."""
@@ -171,7 +178,7 @@ class _Signed:
         f, terms = self.field, self.result.terms
         items = (self.body.nodes if f.on == "points" else self.body.cells).items
         first = f.values(self.body.cases[terms[0][0]].model)
-        if f.constant or (len(terms) == 1 and terms[0][1] == 1.0):
+        if self.plain:
             terms = ((terms[0][0], 1.0),)
             total = first
         else:
@@ -182,11 +189,11 @@ class _Signed:
         for (k, a), sign in zip(terms, signs, strict=False):
             resolved = self.body.resolved.get((f.name, k))
             if resolved is None or resolved.patch is None:
-                return _as(total, first.dtype, f)
+                return _as(total, self.dtype, f)
             patch += (a * sign) * resolved.patch
         total = np.array(total)
         total[items] = _as(patch, total.dtype, f)
-        return _as(total, first.dtype, f)
+        return _as(total, self.dtype, f)
 
     def release(self) -> None:
         self._known.clear()
@@ -210,7 +217,7 @@ def _as(values: Block, dtype: np.dtype[np.generic], f: Field) -> Block:
 def _field_arrays(body: WholeBody, result: Result, f: Field) -> Iterator[BodyArray]:
     numbering = body.point_numbering if f.on == "points" else body.cell_numbering
     signed = _Signed(body, result, f)
-    dtype = f.values(body.cases[result.terms[0][0]].model).dtype
+    dtype = signed.dtype
     image = _local_image if isinstance(f.frame, Cylindrical) else _global_image
 
     def block(copy: int, rows: slice) -> Block:
@@ -249,20 +256,9 @@ def image_values(q: Quantity, Q: Floats, chi: float, follows: str, values: Block
     if np.array_equal(A, np.diag(signs)):
         if (signs == 1.0).all():
             return values
-        if (np.abs(signs) == 1.0).all() and not np.issubdtype(values.dtype, np.unsignedinteger):
+        if (np.abs(signs) == 1.0).all() and np.issubdtype(values.dtype, np.floating):
             return values * signs.astype(values.dtype)
-    return times(values.astype(float, copy=False), A)
-
-
-def times(values: Floats, A: Floats) -> Floats:
-    """``values @ A.T`` in pieces that stay in the cache and below the size from which BLAS starts
-    threads of its own, which would wait for the writers' threads."""
-    out = np.empty((len(values), len(A)))
-    step = max(1, _BLAS_ALONE // A.size)
-    with np.errstate(invalid="ignore"):  # values that are not finite were accepted before
-        for row in range(0, len(values), step):
-            np.matmul(values[row : row + step], A.T, out=out[row : row + step])
-    return out
+    return product(values.astype(float, copy=False), A)
 
 
 def _global_image(
@@ -302,7 +298,7 @@ def _local_image(
         out, general = image.astype(float), np.flatnonzero(frame.radius(here) <= body.on_axis)
     if len(general):
         turned = to_global(f, values[general], here[general], body.on_axis)
-        moved = turned @ acting(f.quantity.complete, placement.Q, chi, f.follows).T
+        moved = product(turned, acting(f.quantity.complete, placement.Q, chi, f.follows))
         out[general] = from_global(f, moved, placement.apply(here[general]), body.on_axis)
     return out
 
@@ -326,7 +322,7 @@ def _derived_array(
         known.clear()
         signed.release()
 
-    dtype = f.values(body.cases[signed.result.terms[0][0]].model).dtype
+    dtype = signed.dtype
     if not np.issubdtype(dtype, np.floating):
         dtype = np.dtype(np.float64)
     return BodyArray(extra.name, f.on, dtype, extra.components, numbering.first, numbering.total,

@@ -32,6 +32,31 @@ def turn_each(q: Quantity, values: Floats, bases: Floats) -> Floats:
     return np.asarray(moved.reshape(len(values), -1) @ q.gather.T)
 
 
+# Multiplications of one product: below this BLAS starts no threads of its own, which would wait
+# for the threads that write.
+_BLAS_ALONE = 200_000
+
+
+def product(values: Floats, A: Floats) -> Floats:
+    """``values @ A.T`` for rows of components, (n, k), in pieces that stay in the cache.
+
+    A value that is not finite spoils only components that depend on it: zero times infinity
+    would make NaN of the others.
+    """
+    out = np.empty((len(values), len(A)))
+    step = max(1, _BLAS_ALONE // A.size)
+    with np.errstate(invalid="ignore", over="ignore"):
+        for row in range(0, len(values), step):
+            np.matmul(values[row : row + step], A.T, out=out[row : row + step])
+        if np.isfinite(out.sum()):
+            return out
+        bad = np.flatnonzero(~np.isfinite(values).all(axis=1))
+        for i, weights in enumerate(A):
+            used = np.flatnonzero(weights)
+            out[bad, i] = (values[bad][:, used] * weights[used]).sum(axis=1)
+    return out
+
+
 def acting(q: Quantity, Q: Floats, chi: float, follows: str) -> Floats:
     """``chi(g) * rho(Q)`` on stored components, (k, k)."""
     A = q.matrix(Q)
@@ -47,7 +72,8 @@ class Resolved:
     patch : (s, k) resolved values in the field's own frame, or None where the sector's stay.
     own : (s, k) the sector's values, in global directions.
     other_side : (s, k) the term of the class farthest from the own value.
-    jumps : (s,) distance between the two.
+    jumps : (s,) distance between the two, over the components that are finite on both sides.
+    apart : (entries,) the same for each entry of the classes.
     through : (s,) number of the placement that brings the farthest term.
     """
 
@@ -55,6 +81,7 @@ class Resolved:
     own: Floats
     other_side: Floats
     jumps: Floats
+    apart: Floats
     through: NDArray[np.int64]
 
 
@@ -67,6 +94,7 @@ def resolve(
     chi: Floats,
     weights: NDArray[np.int64] | None,
     on_axis: float,
+    not_averaged: NDArray[np.bool_] | None = None,
 ) -> Resolved:
     """Resolve one field at the shared items.
 
@@ -77,11 +105,12 @@ def resolve(
     chi : (copies,) of the case.
     weights : (s,) elements at each shared node, for "recovered".
     on_axis : distance within which a node counts as on the axis of a cylindrical frame.
+    not_averaged : (s,) shared nodes where recovered values stay the sector's own.
     """
     q = field.quantity if field.frame.letters == "x y z" else field.quantity.complete
     if not len(classes.item):
         none = np.empty((0, q.size))
-        return Resolved(None, none, none, np.empty(0), np.empty(0, dtype=np.int64))
+        return Resolved(None, none, none, np.empty(0), np.empty(0), np.empty(0, dtype=np.int64))
     own = to_global(field, values, places, on_axis)
     source = np.searchsorted(classes.items, classes.source)  # sources are shared items too
     terms = np.empty((len(classes.item), q.size))
@@ -89,12 +118,14 @@ def resolve(
     vias, first = np.unique(classes.via[order], return_index=True)
     for s, rows in zip(vias.tolist(), np.split(order, first[1:]), strict=True):
         A = acting(q, group.placements[s].Q, float(chi[s]), field.follows)
-        with np.errstate(invalid="ignore"):  # values that are not finite were accepted before
-            terms[rows] = own[source[rows]] @ A.T
-    apart = np.linalg.norm(terms - own[classes.row], axis=1)
+        terms[rows] = product(own[source[rows]], A)
+    with np.errstate(invalid="ignore"):
+        difference = terms - own[classes.row]
+    # Components that are not finite were accepted and counted before; they show no jump.
+    difference[~np.isfinite(difference)] = 0.0
+    apart = np.linalg.norm(difference, axis=1)
     farthest = _largest(apart, classes)
-    # Values that are not finite were accepted and counted before; they show no jump.
-    jumps = np.nan_to_num(apart[farthest], nan=0.0, posinf=0.0)
+    jumps = apart[farthest]
     patch = None
     if field.seam == "sum":
         patch = np.add.reduceat(terms, classes.starts, axis=0)
@@ -105,14 +136,15 @@ def resolve(
         total = np.add.reduceat(w, classes.starts)
         patch = np.add.reduceat(terms * w[:, None], classes.starts, axis=0) / total[:, None]
     if patch is not None:
+        if field.seam == "recovered" and not_averaged is not None:
+            patch[not_averaged] = own[not_averaged]
         patch = from_global(field, patch, places, on_axis)
-    return Resolved(patch, own, terms[farthest], jumps, classes.via[farthest])
+    return Resolved(patch, own, terms[farthest], jumps, apart, classes.via[farthest])
 
 
 def _largest(apart: Floats, classes: Classes) -> NDArray[np.int64]:
     """Entry with the largest distance of each class, (s,)."""
-    key = np.nan_to_num(apart, nan=-1.0, posinf=-1.0)
-    order = np.lexsort((key, classes.row))
+    order = np.lexsort((apart, classes.row))
     last = np.append(classes.starts[1:], len(apart)) - 1
     return np.asarray(order[last])
 

@@ -18,7 +18,14 @@ from expander.errors import InputError
 from expander.groups import Group
 from expander.model import Mesh
 from expander.placements import Floats, Placement
-from expander.topology import Ints, boundary_nodes, local_edges, pieces
+from expander.topology import (
+    Ints,
+    boundary_faces,
+    boundary_nodes,
+    faces_met,
+    local_edges,
+    pieces,
+)
 
 OF_EDGE = 1e-4
 OF_SPACING = 8
@@ -59,10 +66,23 @@ class Classes:
         least = np.minimum.reduceat(keys, self.starts) if len(keys) else keys
         return least // size, least % size
 
-    def without(self, items: Ints) -> Classes:
-        """The same without these items: they are kept apart."""
-        keep = ~np.isin(self.item, items) & ~np.isin(self.source, items)
-        return Classes(self.item[keep], self.via[keep], self.source[keep])
+    def without(self, entries: Ints, group: Group) -> Classes:
+        """The classes that remain when the two sides of these entries are kept apart."""
+        keep = np.ones(len(self.item), dtype=bool)
+        keep[entries] = False
+        keep &= self.via != 0
+        pairs = np.stack([self.item[keep], self.via[keep], self.source[keep]], axis=1)
+        reverse = np.stack([pairs[:, 2], group.inverse[pairs[:, 1]], pairs[:, 0]], axis=1)
+        known = {tuple(p) for p in reverse.tolist()}  # a pair stays only if both sides close
+        both = np.array([tuple(p) in known for p in pairs.tolist()], dtype=bool)
+        pairs = pairs[both] if len(pairs) else pairs
+        count = int(max(self.item.max(initial=0), self.source.max(initial=0))) + 1
+        none = np.empty(0)
+        found = [
+            (s, pairs[pairs[:, 1] == s, 0], pairs[pairs[:, 1] == s, 2], none, none)
+            for s in np.unique(pairs[:, 1]).tolist()
+        ]
+        return close_classes(found, group, count)
 
     @staticmethod
     def none() -> Classes:
@@ -81,6 +101,9 @@ class Seams:
     tolerance : (smallest, largest) distance within which nodes were taken for one.
     pairs : number of node pairs found for each placement searched, by copy number.
     near_misses : (node, distance) of nodes that lie close to a partner but outside the tolerance.
+    unmatched : copies whose faces lie against the sector's with another mesh: (copy, nodes that
+        happen to coincide); they are not merged.
+    overlapping : copies some of whose faces lie on faces of the sector from the same side.
     """
 
     nodes: Classes
@@ -89,6 +112,8 @@ class Seams:
     tolerance: tuple[float, float]
     pairs: dict[int, int]
     near_misses: tuple[tuple[int, float], ...]
+    unmatched: tuple[tuple[int, int], ...] = ()
+    overlapping: tuple[int, ...] = ()
 
 
 class Tolerance:
@@ -145,6 +170,8 @@ def find_seams(mesh: Mesh, group: Group, given_tolerance: float | None) -> Seams
     tolerance = Tolerance(mesh, given_tolerance)
     found: list[tuple[int, Ints, Ints, Floats, Floats]] = []
     misses: list[tuple[int, float]] = []
+    unmatched: list[tuple[int, int]] = []
+    overlapping: list[int] = []
     for g, normal, level in group.mirrors:
         off = np.abs(mesh.points @ normal - level)
         near = np.flatnonzero(off <= tolerance.reach)
@@ -155,23 +182,34 @@ def find_seams(mesh: Mesh, group: Group, given_tolerance: float | None) -> Seams
         misses += _near_misses(mesh, on, off, tolerance)
     if not group.is_reflection_group:
         boundary = boundary_nodes(mesh)
+        faces = boundary_faces(mesh)
         mirrors = {g for g, _, _ in group.mirrors}
         piece = None
         for g in _touching(mesh.points[boundary].astype(float), group, tolerance.reach, mirrors):
             placement = group.placements[g]
-            i, j, distance = _match(mesh.points, boundary, boundary, placement, tolerance.reach)
+            i, j, distance = match(mesh.points, boundary, boundary, placement, tolerance.reach)
             allowed = np.minimum(tolerance.at(i), tolerance.at(j))
             fits = distance <= allowed
             i, j, distance, allowed = i[fits], j[fits], distance[fits], allowed[fits]
             if len(np.unique(i)) < len(i) or len(np.unique(j)) < len(j):
                 piece = pieces(mesh) if piece is None else piece
                 i, j, distance, allowed = _one_to_one(mesh, i, j, distance, allowed, piece)
-            misses += _near_pairs(mesh, boundary, placement, i, j)
+            whole, met, same = faces_met(mesh, faces, i, j, placement)
+            if same:
+                overlapping.append(g)
+                continue
+            nearly = _near_pairs(mesh, boundary, placement, i, j)
+            neighbour = group.axis is not None and g in (1, group.axis.sectors - 1)
+            lines_only = neighbour and bool(faces) and not whole and bool((i != j).any())
+            if whole > met or (lines_only and not nearly):
+                unmatched.append((g, len(i)))
+                continue
+            misses += nearly
             found.append((g, i, j, distance, allowed))
             inverse = int(group.inverse[g])
             if inverse != g:
                 found.append((inverse, j, i, distance, allowed))
-    classes = _closed(found, group, mesh.point_count)
+    classes = close_classes(found, group, mesh.point_count)
     distance = np.concatenate([f[3] for f in found]) if found else np.empty(0)
     node = np.concatenate([f[1] for f in found]) if found else np.empty(0, dtype=np.int64)
     allowed = np.concatenate([f[4] for f in found]) if found else np.empty(0)
@@ -183,6 +221,8 @@ def find_seams(mesh: Mesh, group: Group, given_tolerance: float | None) -> Seams
         (float(allowed.min(initial=np.inf)), float(allowed.max(initial=0.0))),
         {f[0]: len(f[1]) for f in found},
         tuple(misses),
+        tuple(unmatched),
+        tuple(overlapping),
     )
 
 
@@ -210,7 +250,7 @@ def _near_pairs(
     if not np.isfinite(reach):
         return []
     mine, theirs = np.setdiff1d(boundary, i), np.setdiff1d(boundary, j)
-    a, b, distance = _match(mesh.points, mine, theirs, placement, reach)
+    a, b, distance = match(mesh.points, mine, theirs, placement, reach)
     edge = np.minimum(local_edges(mesh, a), local_edges(mesh, b))
     close = (distance <= MOST_OF_EDGE * edge) & (a != b)
     return [(int(n), float(d)) for n, d in zip(a[close], distance[close], strict=True)]
@@ -242,7 +282,7 @@ def _touching(points: Floats, group: Group, reach: float, skip: set[int]) -> lis
     return wanted
 
 
-def _match(
+def match(
     points: NDArray[np.floating], mine: Ints, theirs: Ints, placement: Placement, reach: float
 ) -> tuple[Ints, Ints, Floats]:
     """All pairs with ``|s x_j - x_i| <= reach``, i of `mine`, j of `theirs`: i, j, distance."""
@@ -272,6 +312,16 @@ def _one_to_one(
     counts_i, counts_j = np.bincount(i), np.bincount(j)
     doubled = (counts_i[i] > 1) | (counts_j[j] > 1)
     keep = ~doubled | (piece[i] == piece[j])
+    lost = np.setdiff1d(i, i[keep])
+    if len(lost):
+        node = int(lost[0])
+        at = ", ".join(f"{c:.6g}" for c in mesh.points[node])
+        raise InputError(
+            f"Node {node} at ({at}) lies on a seam where nodes of several connected pieces lie on "
+            "top of each other, none of them of its own piece, so it cannot be told which of them "
+            "continues it in the next copy.",
+            "Join tied pieces in the model, or expand without stitching (output.merge = false).",
+        )
     i, j, distance, allowed = i[keep], j[keep], distance[keep], allowed[keep]
     again = np.flatnonzero(np.bincount(i, minlength=1) > 1)
     if not len(again):
@@ -288,7 +338,7 @@ def _one_to_one(
     return i, j, distance, allowed
 
 
-def _closed(
+def close_classes(
     found: list[tuple[int, Ints, Ints, Floats, Floats]], group: Group, count: int
 ) -> Classes:
     """Pairs closed to classes: if s y = x and t z = y then (s t) z = x."""

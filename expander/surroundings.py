@@ -1,4 +1,8 @@
-"""Where recovered values must not be averaged: between different parts and over folds of shells."""
+"""Where recovered values must not be averaged: between different parts and over folds of shells.
+
+One array holds one value at a node, so such a node keeps the value of the lowest copy there; the
+mesh, and every other field, is joined as elsewhere.
+"""
 
 from __future__ import annotations
 
@@ -21,10 +25,7 @@ _FOLD_COSINE = np.cos(np.deg2rad(30.0))  # feature angle, common practice
 def not_averaged(
     mesh: Mesh, model: Model, fields: list[Field], classes: Classes, group: Group
 ) -> tuple[Ints, list[str]]:
-    """Seam nodes whose two sides are different parts or fold, and notes that say so.
-
-    Such nodes are kept apart, so that each side keeps its own recovered value.
-    """
+    """Seam nodes whose two sides are different parts or fold, and notes that say so."""
     none = np.empty(0, dtype=np.int64)
     if not len(classes.item) or not any(f.seam == "recovered" and f.on == "points" for f in fields):
         return none, []
@@ -39,7 +40,7 @@ def not_averaged(
             apart = np.union1d(apart, found)
             notes.append(
                 f"{len(found)} seam nodes join different values of {f.name!r}: recovered values "
-                "are not averaged there and the nodes are kept apart"
+                "are not averaged there, each is that of the lowest copy"
             )
     normals, flat = _shell_normals(mesh, classes.items)
     source = np.searchsorted(classes.items, classes.source)
@@ -51,7 +52,7 @@ def not_averaged(
         apart = np.union1d(apart, found)
         notes.append(
             f"{len(found)} seam nodes lie on a fold of shells: recovered values are not averaged "
-            "there and the nodes are kept apart"
+            "there, each is that of the lowest copy"
         )
     return apart, notes
 

@@ -9,14 +9,24 @@ from typing import Any, cast
 
 import numpy as np
 
+from expander.cells import dimensions
 from expander.errors import InputError
 from expander.groups import Group, direction_words
 from expander.model import Mesh
-from expander.placements import Floats
-from expander.seams import Seams, Tolerance
-from expander.topology import Ints, boundary_nodes, cell_centres, local_edges
+from expander.placements import Floats, Placement
+from expander.seams import Seams, Tolerance, match
+from expander.topology import (
+    Ints,
+    boundary_faces,
+    boundary_nodes,
+    cell_centres,
+    faces_met,
+    local_edges,
+    pieces,
+)
 
 _SAMPLES = 400
+_ANGLES_TRIED = 12
 
 
 def check_sides(mesh: Mesh, group: Group, given_tolerance: float | None) -> None:
@@ -106,8 +116,9 @@ def check_touch(mesh: Mesh, group: Group, seams: Seams, keep_apart: bool) -> lis
                 f"{2 * off[node]:.3g} if the nodes are off; if the clearance is meant, "
                 'seam.open = "keep apart".',
             )
-        if group.axis is not None and abs(float(normal @ group.axis.axis)) < 1e-6:
-            _check_half_sector(mesh, group)
+        for other in _walls(group, mesh):
+            if other != g:
+                _check_span(mesh, group, g, other)
         notes.append(
             f"the model stays clear of {name} (nearest: node {node}, "
             f"{off[node]:.6g} away): its copies do not touch there"
@@ -150,30 +161,41 @@ def _plane_words(group: Group, g: int) -> str:
     return f"the implied cut plane with normal {direction_words(normal)}"
 
 
-def _check_half_sector(mesh: Mesh, group: Group) -> None:
-    """Refuse a half-sector whose plane faces lie at another angle than 180/N."""
-    assert group.axis is not None
-    points = mesh.points.astype(float) - group.axis.point
-    height = points @ group.axis.axis
-    radial = points - np.outer(height, group.axis.axis)
+def _check_span(mesh: Mesh, group: Group, g: int, other: int) -> None:
+    """Refuse a model between two plane faces that meet at a smaller angle than their planes."""
+    (n, level), (m, other_level) = (
+        next((n, d) for k, n, d in group.mirrors if k == copy) for copy in (g, other)
+    )
+    line = np.cross(n, m)
+    if np.linalg.norm(line) < 1e-6:
+        return
+    axis = line / np.linalg.norm(line)
+    point = np.linalg.solve(np.stack([n, m, axis]), [level, other_level, 0.0])
+    points = mesh.points.astype(float) - point
+    radial = points - np.outer(points @ axis, axis)
     radius = np.linalg.norm(radial, axis=1)
     off_axis = radius > 1e-6 * radius.max()
     middle = radial[off_axis].mean(axis=0)
     middle /= np.linalg.norm(middle)
-    across = np.cross(group.axis.axis, middle)
+    across = np.cross(axis, middle)
     theta = np.rad2deg(np.arctan2(radial[off_axis] @ across, radial[off_axis] @ middle))
     low, high = float(theta.min()), float(theta.max())
-    on_faces = min((theta < low + 1e-6).sum(), (theta > high - 1e-6).sum())
-    span = high - low
-    if on_faces < 3 or abs(span - group.axis.degrees / 2) < 1e-4 * span:
+    for end in (low, high):  # a face spans radii, the edge of a block does not
+        face = np.abs(theta - end) < 1e-6
+        if face.sum() < 3 or np.ptp(radius[off_axis][face]) < 1e-3 * radius.max():
+            return
+    a, b = (float(np.rad2deg(np.arccos(np.clip(abs(v @ across), 0, 1)))) for v in (n, m))
+    span, expected = high - low, a + b
+    if abs(span - expected) < 1e-4 * expected:
         return
-    n = 180.0 / span
-    fit = f" sectors = {round(n)} would fit." if abs(n - round(n)) < 1e-3 * n else ""
+    fit = 180.0 / span
+    advice = f" sectors = {round(fit)} would fit." if group.axis is not None and abs(
+        fit - round(fit)) < 1e-3 * fit else ""  # fmt: skip
     raise InputError(
-        f"The model lies between two planes through the axis {span:.6g} degrees apart, but "
-        f"cyclic.sectors = {group.axis.sectors} with a cut plane through the axis asks for half "
-        f"a sector, {group.axis.degrees / 2:.6g} degrees.{fit}",
-        "Correct cyclic.sectors, or the planes.",
+        f"The model lies between two planes {span:.6g} degrees apart, but "
+        f"{_plane_words(group, g)} and {_plane_words(group, other)} ask for "
+        f"{expected:.6g} degrees.{advice}",
+        "Correct mirror.normal" + (", or cyclic.sectors." if group.axis is not None else "."),
     )
 
 
@@ -191,29 +213,32 @@ def check_turns(mesh: Mesh, group: Group, seams: Seams, given: float | None) -> 
     turned = [g for g in range(1, len(group)) if not group.placements[g].mirrored]
     nodes = seams.nodes
     by_turn = np.array([not p.mirrored for p in group.placements])[nodes.via]
+    if group.axis is not None:
+        by_turn &= nodes.via == 1  # the next sector; a wrong N may meet a later one by chance
     touching = bool((by_turn & (nodes.item != nodes.source)).any())  # on the axis says nothing
-    angle = _face_angle(mesh, group, given) if group.axis is not None else None
-    expected = group.axis.degrees if group.axis is not None else 0.0
-    agrees = angle is not None and abs(angle - expected) < 1e-4 * expected
-    if touching and agrees:
-        return []
-    if not touching and angle is not None and not agrees:
-        raise _wrong_angle(group, angle)
-    overlap = _overlap(mesh, group, turned)
-    if overlap is not None:
-        if angle is not None and not agrees:
+    notes = [
+        f"the faces towards the copy {group.words(g)} lie against each other with different "
+        f"meshes ({count} nodes happen to coincide): they do not pair and were not merged"
+        for g, count in seams.unmatched
+    ]
+    solid = bool((dimensions(mesh.types) == 3).any())
+    copy: int | None = seams.overlapping[0] if seams.overlapping else None
+    if copy is None and (not touching or not solid):
+        copy = _overlap(mesh, group, turned, nodes.items)
+    if group.axis is not None and (copy is not None or not touching):
+        angle = _face_angle(mesh, group, given)
+        if angle is not None and abs(angle - group.axis.degrees) > 1e-4 * group.axis.degrees:
             raise _wrong_angle(group, angle)
-        copy, cell = overlap
+    if copy is not None:
         raise InputError(
-            f"Copies overlap: the centre of cell {cell}, {group.words(copy)}, lies inside the "
-            "model.",
-            "Expected a sector of 360/N degrees about cyclic.axis through cyclic.point; check "
-            "cyclic.sectors, axis and point.",
+            f"Copies overlap: part of the model, {group.words(copy)}, lies inside the model.",
+            "Expected a sector of 360/N degrees about cyclic.axis through cyclic.point, and each "
+            "part on one side of the seam only; check cyclic.sectors, axis and point.",
         )
-    if touching:
-        return []
-    return ["no node of one sector meets a node of another: the turned copies do not touch, "
-            "nothing was merged between them"]  # fmt: skip
+    if not touching and not notes:
+        notes.append("no node of one sector meets a node of another: the turned copies do not "
+                     "touch, nothing was merged between them")  # fmt: skip
+    return notes
 
 
 def _wrong_angle(group: Group, angle: float) -> InputError:
@@ -229,16 +254,18 @@ def _wrong_angle(group: Group, angle: float) -> InputError:
 
 
 def _face_angle(mesh: Mesh, group: Group, given: float | None) -> float | None:
-    """Angle between the two faces of the sector that match when turned, in degrees.
+    """Angle by which the sector must be turned so that one of its faces meets another, in degrees.
 
-    Nodes of the second face have the radius and height of nodes of the first; the angle that most
-    of such pairs share, and no larger one does, is the sector's. None if there is none.
+    Nodes of the second face have the radius and height of nodes of the first, so the angles
+    between such nodes are tried, the most frequent first: faces must meet faces, since single
+    rows of nodes meet at other angles too. None if there is no such angle.
     """
     from scipy.spatial import cKDTree
 
     axis = group.axis
     assert axis is not None
     nodes = boundary_nodes(mesh)
+    faces = boundary_faces(mesh)
     points = mesh.points[nodes].astype(float) - axis.point
     height = points @ axis.axis
     radial = points - np.outer(height, axis.axis)
@@ -249,29 +276,39 @@ def _face_angle(mesh: Mesh, group: Group, given: float | None) -> float | None:
         return None
     e1 = radial[np.argmax(radius)] / size
     e2 = np.cross(axis.axis, e1)
-    theta = np.rad2deg(np.arctan2(radial @ e2, radial @ e1))
-    tolerance = Tolerance(mesh, given)
+    theta = np.rad2deg(np.arctan2(radial @ e2, radial @ e1))[off]
     ring = np.stack([radius, height], axis=1)[off]
-    theta = theta[off]
+    tolerance = Tolerance(mesh, given)
     if len(ring) > 20_000:  # a sample of rings is enough to read an angle
         order = np.lexsort(np.round(ring / max(tolerance.reach, 1e-12)).T)
         ring, theta = ring[order[:20_000]], theta[order[:20_000]]
     pairs = cKDTree(ring).query_pairs(max(tolerance.reach * 0.1, tolerance.spacing),
                                       output_type="ndarray")  # fmt: skip
-    if not len(pairs):
-        return None
-    apart = np.abs(theta[pairs[:, 0]] - theta[pairs[:, 1]])
+    apart = np.abs(theta[pairs[:, 0]] - theta[pairs[:, 1]]) if len(pairs) else np.empty(0)
     apart = np.minimum(apart, 360.0 - apart)
     apart = apart[apart > 1e-6]
-    if not len(apart):
-        return None
-    bins, counts = np.unique(np.round(apart, 4), return_counts=True)
-    common = bins[counts >= max(2, 0.25 * counts.max())]
-    return float(common.max()) if len(common) else None
+    grain = 1e-5 * axis.degrees
+    bins, which, counts = np.unique(
+        np.round(apart / grain), return_inverse=True, return_counts=True
+    )
+    likely = np.argsort(-counts, kind="stable")[:_ANGLES_TRIED]
+    for k in likely[np.argsort(-bins[likely])].tolist():  # a face within the body meets none
+        angle = float(apart[which == k].mean())
+        turn = Placement.turn(axis.axis, angle, axis.point)
+        i, j, distance = match(mesh.points, nodes, nodes, turn, tolerance.reach)
+        fits = (distance <= np.minimum(tolerance.at(i), tolerance.at(j))) & (i != j)
+        _, met, same = faces_met(mesh, faces, i[fits], j[fits], turn)
+        met = met - same if faces else int(fits.sum()) // 2
+        if met:
+            return angle
+    return None
 
 
-def _overlap(mesh: Mesh, group: Group, copies: list[int]) -> tuple[int, int] | None:
-    """A copy and a cell whose centre lies inside the model, from a sample of cells."""
+def _overlap(mesh: Mesh, group: Group, copies: list[int], shared: Ints) -> int | None:
+    """A copy of which the centre of some cell lies inside the model, from a sample of cells.
+
+    Cells all of whose nodes are `shared` may lie in a seam and coincide with others there.
+    """
     from vtkmodules.util.numpy_support import numpy_to_vtk, numpy_to_vtkIdTypeArray
     from vtkmodules.vtkCommonCore import mutable, vtkPoints
     from vtkmodules.vtkCommonDataModel import (
@@ -294,11 +331,18 @@ def _overlap(mesh: Mesh, group: Group, copies: list[int]) -> tuple[int, int] | N
     locator = vtkStaticCellLocator()
     locator.SetDataSet(grid)
     locator.BuildLocator()
-    sample = np.unique(np.linspace(0, mesh.cell_count - 1, _SAMPLES).astype(np.int64))
+    sample = np.linspace(0, mesh.cell_count - 1, _SAMPLES).astype(np.int64)
+    first_of_piece = np.unique(
+        pieces(mesh)[mesh.connectivity[mesh.offsets[:-1]]], return_index=True
+    )[1]
+    sample = np.unique(np.concatenate([sample, first_of_piece[:_SAMPLES]]))
+    own = np.ones(mesh.point_count, dtype=bool)
+    own[shared] = False
+    sample = sample[np.logical_or.reduceat(own[mesh.connectivity], mesh.offsets[:-1])[sample]]
     centres = cell_centres(mesh)[sample]
-    first = mesh.points[mesh.connectivity[mesh.offsets[:-1][sample]]].astype(float)
-    inside = 0.02 * np.linalg.norm(first - centres, axis=1)
-    middle = centres.mean(axis=0)
+    inside = 0.02 * local_edges(mesh, mesh.connectivity[mesh.offsets[:-1][sample]])
+    inside[~np.isfinite(inside)] = 0.0  # a point mass has no inside
+    middle = mesh.bounds.mean(axis=0)
     reach = float(np.linalg.norm(mesh.points - middle, axis=1).max())
     generic = vtkGenericCell()
     cell_id, sub_id, d2 = (cast(Any, mutable(start)) for start in (0, 0, 0.0))
@@ -310,5 +354,5 @@ def _overlap(mesh: Mesh, group: Group, copies: list[int]) -> tuple[int, int] | N
         for k in near.tolist():  # a bounded sample, not all cells
             locator.FindClosestPoint(images[k], closest, generic, cell_id, sub_id, d2)
             if float(d2) ** 0.5 < inside[k]:
-                return g, int(sample[k])
+                return g
     return None

@@ -6,13 +6,14 @@ All of it works on whole blocks of cells of one type; nothing loops over cells o
 from __future__ import annotations
 
 from collections.abc import Iterator
+from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
 
 from expander.cells import CELL_TYPES, dimensions
 from expander.model import Mesh
-from expander.placements import Floats
+from expander.placements import Floats, Placement
 
 Ints = NDArray[np.int64]
 
@@ -91,9 +92,7 @@ def boundary_nodes(mesh: Mesh) -> Ints:
     instead of sorting rows of node numbers. Two different faces share a key with a probability
     of about (number of faces)^2 / 2^64.
     """
-    token = np.random.default_rng(20).integers(
-        0, 2**64, size=mesh.point_count, dtype=np.uint64, endpoint=False
-    )
+    token = _tokens(mesh)
     marked = np.ones(mesh.point_count, dtype=bool)
     marked[mesh.connectivity] = False
     keys, owners = [], []
@@ -123,6 +122,88 @@ def boundary_nodes(mesh: Mesh) -> Ints:
             marked[nodes[picked][:, on_face]] = True
             start += len(key)
     return np.flatnonzero(marked)
+
+
+@dataclass(frozen=True, eq=False)
+class Faces:
+    """Faces of one size that belong to one solid cell only.
+
+    Attributes
+    ----------
+    corners : (k, 3) or (k, 4) nodes.
+    inside : (k, 3) the mean of the cell's corners, a point on the material's side of the face.
+    """
+
+    corners: Ints
+    inside: Floats
+
+
+def boundary_faces(mesh: Mesh) -> list[Faces]:
+    """Faces that belong to one solid cell only, by size."""
+    token = _tokens(mesh)
+    found: dict[int, list[tuple[Ints, Ints]]] = {}
+    for vtk_id, _, nodes in blocks(mesh):
+        kind = CELL_TYPES.get(vtk_id)
+        for face in kind.shape.faces if kind is not None and kind.dimension == 3 else ():
+            corners = nodes[:, : len(kind.shape.mirrored)] if kind is not None else nodes
+            found.setdefault(len(face), []).append((nodes[:, face], corners))
+    alone = []
+    for parts in found.values():
+        keys = np.concatenate([token[f].sum(axis=1, dtype=np.uint64) for f, _ in parts])
+        _, first, counts = np.unique(keys, return_index=True, return_counts=True)
+        single = np.zeros(len(keys), dtype=bool)
+        single[first[counts == 1]] = True
+        outer, inside, start = [], [], 0
+        for block, nodes in parts:
+            picked = single[start : start + len(block)]
+            outer.append(block[picked])
+            inside.append(mesh.points[nodes[picked]].astype(float).mean(axis=1))
+            start += len(block)
+        alone.append(Faces(np.concatenate(outer), np.concatenate(inside)))
+    return alone
+
+
+def _tokens(mesh: Mesh) -> NDArray[np.uint64]:
+    """A random number for each node, the same on every run, to know sets of nodes by their sum."""
+    return np.random.default_rng(20).integers(0, 2**64, size=mesh.point_count, dtype=np.uint64)
+
+
+def faces_met(
+    mesh: Mesh, faces: list[Faces], i: Ints, j: Ints, g: Placement
+) -> tuple[int, int, int]:
+    """How faces of the copy made by `g` meet those of the sector, when node ``j`` of the copy is
+    node ``i`` of the sector.
+
+    Returns
+    -------
+    The number of faces all of whose corners are among `j`; how many of them meet a face of the
+    sector; and at how many of these the material of both lies on the same side, as it does where
+    copies overlap.
+    """
+    token = _tokens(mesh)
+    partner = np.full(mesh.point_count, -1, dtype=np.int64)
+    partner[j] = i
+    whole = met = same = 0
+    for f in faces:
+        images = partner[f.corners]
+        theirs = np.flatnonzero((images >= 0).all(axis=1))
+        whole += len(theirs)
+        mine = token[f.corners].sum(axis=1, dtype=np.uint64)
+        order = np.argsort(mine)
+        wanted = token[images[theirs]].sum(axis=1, dtype=np.uint64)
+        place = np.minimum(np.searchsorted(mine[order], wanted), max(0, len(mine) - 1))
+        hit = mine[order][place] == wanted if len(mine) else np.zeros(len(wanted), dtype=bool)
+        here, there = order[place[hit]], theirs[hit]
+        met += len(here)
+        p = mesh.points[f.corners[here]].astype(float)
+        normal = np.cross(p[:, 1] - p[:, 0], p[:, 2] - p[:, 0])
+        own = f.inside[here] - p.mean(axis=1)
+        copied = g.apply(f.inside[there]) - p.mean(axis=1)
+        side = np.einsum("fi,fi->f", own, normal) * np.einsum("fi,fi->f", copied, normal)
+        # A quadrilateral may be more warped than its cell is thick: there both tests must agree.
+        along = np.einsum("fi,fi->f", own, copied) if p.shape[1] > 3 else side
+        same += int(((side > 0) & (along > 0)).sum())
+    return whole, met, same
 
 
 def pieces(mesh: Mesh) -> NDArray[np.int32]:

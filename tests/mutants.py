@@ -156,7 +156,7 @@ def outcome_of(mutant: Mutant, unchanged: Path) -> Outcome:
         except subprocess.TimeoutExpired:
             return Outcome("noticed", "does not come to an end", time.perf_counter() - start)
     seconds = time.perf_counter() - start
-    failed = re.search(r"^(?:FAILED|ERROR) (\S+(?: \S+)*?)(?: - |$)", ran.stdout, re.M)
+    failed = re.search(r"^(?:FAILED|ERROR) (.*)", ran.stdout, re.M)
     if ran.returncode == 0:
         return Outcome("SURVIVED", ", ".join(mutant.tests), seconds)
     if failed is None:  # no test failed: none was found, or pytest itself could not go on

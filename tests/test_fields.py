@@ -145,6 +145,12 @@ def test_name_that_decides_nothing(name: str, size: int) -> None:
     assert trade_word(name, size) is None
 
 
+def extensive(name: str, size: int) -> bool:
+    """Forces and their moments, which add up at nodes."""
+    word = trade_word(name, size)
+    return word is not None and word.seam == "sum" and word.kind.endswith("vector")
+
+
 @pytest.mark.parametrize("plane", [False, True])
 def test_trade_words_in_a_model(tmp_path: Path, plane: bool) -> None:
     """What a name decides reaches the summary, with the reason."""
@@ -161,12 +167,16 @@ def test_trade_words_in_a_model(tmp_path: Path, plane: bool) -> None:
         if only_plane == plane:
             chosen[name] = (size, kind, seam, follows)
     for name, (size, *_) in chosen.items():
-        grid.cell_data[name] = np.zeros((8, size)) if size > 1 else np.zeros(8)
+        # Forces and moments on cells are mostly resultants of sections: nothing by name there.
+        place = grid.point_data if extensive(name, size) else grid.cell_data
+        count = grid.n_points if extensive(name, size) else 8
+        place[name] = np.zeros((count, size)) if size > 1 else np.zeros(count)
     found = decided(case_of(tmp_path, grid))
     assert found.keys() == chosen.keys()
     for name, (_, kind, seam, follows) in chosen.items():
         f = found[name]
-        assert (f["kind"], f["decided"], f["on"]) == (kind, "by name", "cells"), name
+        on = "points" if extensive(name, chosen[name][0]) else "cells"
+        assert (f["kind"], f["decided"], f["on"]) == (kind, "by name", on), name
         own = follows == "body" and seam != "sum"
         assert f["seam"] == ("lowest copy" if own else seam), name
         expected = {"body": "body", "load": "nothing" if kind == "invariant" else "load"}
@@ -305,9 +315,10 @@ def test_kind_on_the_mirrored_copy(
 def test_order_of_components(tmp_path: Path, order: str, separate: bool) -> None:
     """A turn by 40 degrees about a skew axis, against Q T Q^T on the full tensor."""
     axis = np.array([1.0, 2.0, 2.0]) / 3.0
-    R = Rotation.from_rotvec(axis * 0.3).as_matrix() @ Rotation.align_vectors(
-        [axis], [[0.0, 0.0, 1.0]]
-    )[0].as_matrix()
+    R = (
+        Rotation.from_rotvec(axis * 0.3).as_matrix()
+        @ Rotation.align_vectors([axis], [[0.0, 0.0, 1.0]])[0].as_matrix()
+    )
     grid = wedge(40.0)
     grid.points[:] = grid.points @ R.T
     letters = order.lower().replace(",", "")
@@ -489,16 +500,37 @@ def test_unit_of_the_model_is_recorded(tmp_path: Path) -> None:
 @pytest.mark.parametrize("load", ["symmetric", "antisymmetric"])
 def test_integers_are_labels(tmp_path: Path, dtype: type, load: str) -> None:
     grid = box()
-    grid.cell_data["colour"] = np.arange(8, dtype=dtype)
+    colour = "colour" if load == "symmetric" else "colour_number"
+    grid.cell_data[colour] = np.arange(8, dtype=dtype)
     grid.point_data["number"] = np.arange(100, 127, dtype=dtype)
     case = case_of(tmp_path, grid, mirror=[{"normal": "x", "load": load}])
     found = decided(case)
-    assert found["colour"]["kind"] == found["number"]["kind"] == "label"
-    assert found["colour"]["follows"] == "body"
+    assert found[colour]["kind"] == found["number"]["kind"] == "label"
+    assert found[colour]["follows"] == "body"
     body = expand(case)
-    assert body.cell_data["colour"].dtype == dtype
-    np.testing.assert_array_equal(body.cell_data["colour"], body.cell_data["sector_cell"])
+    assert body.cell_data[colour].dtype == dtype
+    np.testing.assert_array_equal(body.cell_data[colour], body.cell_data["sector_cell"])
     np.testing.assert_array_equal(body.point_data["number"], 100 + body.point_data["sector_point"])
+
+
+@pytest.mark.parametrize("name", ["colour", "temperature"])
+def test_integers_that_nothing_explains_are_refused_where_signs_matter(
+    tmp_path: Path, name: str
+) -> None:
+    """A temperature may well be stored in whole degrees; with an antisymmetric load it changes
+    sign, a label does not."""
+    grid = box()
+    grid.cell_data[name] = np.arange(8, dtype=np.int32)
+    case = case_of(tmp_path, grid, mirror=[{"normal": "x", "load": "antisymmetric"}])
+    with pytest.raises(InputError, match=name):
+        plan(case)
+
+
+def test_members_of_a_set_are_a_label_under_any_load(tmp_path: Path) -> None:
+    grid = box()
+    grid.cell_data["upper"] = np.arange(8, dtype=np.int8) % 2
+    case = case_of(tmp_path, grid, mirror=[{"normal": "x", "load": "antisymmetric"}])
+    assert decided(case)["upper"]["kind"] == "label"
 
 
 def test_label_of_several_components(tmp_path: Path) -> None:
@@ -544,8 +576,11 @@ def local_bases(points: np.ndarray) -> np.ndarray:
     return np.stack([np.c_[c, s, o], np.c_[-s, c, o], np.c_[o, o, e]], axis=2)
 
 
-@pytest.mark.parametrize("planes", [[], [[0.0, 1.0, 0.0]], [[0.0, 0.0, 1.0]]],
-                         ids=["turns", "plane through the axis", "plane normal to the axis"])
+@pytest.mark.parametrize(
+    "planes",
+    [[], [[0.0, 1.0, 0.0]], [[0.0, 0.0, 1.0]]],
+    ids=["turns", "plane through the axis", "plane normal to the axis"],
+)
 @pytest.mark.parametrize("kind", ["polar vector", "axial vector", "symmetric tensor", "tensor",
                                   "axial tensor"])  # fmt: skip
 def test_cylindrical_components_against_global_ones(
