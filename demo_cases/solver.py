@@ -37,10 +37,30 @@ _LEVI_CIVITA[[0, 2, 1], [2, 1, 0], [1, 0, 2]] = -1.0
 
 # --- reference shapes ---------------------------------------------------------------------------
 
-_HEX_CORNERS = [[0, 0, 0], [1, 0, 0], [1, 1, 0], [0, 1, 0], [0, 0, 1], [1, 0, 1], [1, 1, 1],
-                [0, 1, 1]]
-_HEX_EDGES = [[0, 1], [1, 2], [2, 3], [3, 0], [4, 5], [5, 6], [6, 7], [7, 4], [0, 4], [1, 5],
-              [2, 6], [3, 7]]
+_HEX_CORNERS = [
+    [0, 0, 0],
+    [1, 0, 0],
+    [1, 1, 0],
+    [0, 1, 0],
+    [0, 0, 1],
+    [1, 0, 1],
+    [1, 1, 1],
+    [0, 1, 1],
+]
+_HEX_EDGES = [
+    [0, 1],
+    [1, 2],
+    [2, 3],
+    [3, 0],
+    [4, 5],
+    [5, 6],
+    [6, 7],
+    [7, 4],
+    [0, 4],
+    [1, 5],
+    [2, 6],
+    [3, 7],
+]
 _HEX_FACES = [[0, 4, 7, 3], [1, 2, 6, 5], [0, 1, 5, 4], [3, 7, 6, 2], [0, 3, 2, 1], [4, 5, 6, 7]]
 _TET_CORNERS = [[0, 0, 0], [1, 0, 0], [0, 1, 0], [0, 0, 1]]
 _TET_EDGES = [[0, 1], [1, 2], [2, 0], [0, 3], [1, 3], [2, 3]]
@@ -68,8 +88,16 @@ class Shape:
     centre : (3, 1) reference coordinates of the centroid.
     """
 
-    def __init__(self, vtk_type: int, element: skfem.Element, face_element: skfem.Element,
-                 corners: ArrayLike, edges: ArrayLike, faces: ArrayLike, order: int) -> None:
+    def __init__(
+        self,
+        vtk_type: int,
+        element: skfem.Element,
+        face_element: skfem.Element,
+        corners: ArrayLike,
+        edges: ArrayLike,
+        faces: ArrayLike,
+        order: int,
+    ) -> None:
         corner_points = np.array(corners, dtype=float)
         self.vtk_type = vtk_type
         self.edges = np.array(edges)
@@ -94,17 +122,22 @@ class Shape:
     def basis(self, X: Floats) -> tuple[Floats, Floats]:
         """Values (k, q) and reference gradients (k, 3, q) of the shape functions at X (3, q)."""
         values, gradients = zip(*(self._element.lbasis(X, j) for j in self._order), strict=True)
-        return (np.stack([np.broadcast_to(v, X.shape[1:]) for v in values]),
-                np.stack([np.broadcast_to(g, X.shape) for g in gradients]))
+        return (
+            np.stack([np.broadcast_to(v, X.shape[1:]) for v in values]),
+            np.stack([np.broadcast_to(g, X.shape) for g in gradients]),
+        )
 
     def face_basis(self) -> tuple[Floats, Floats]:
         """Values (j, q) and gradients (j, 2, q) on a face at its quadrature points."""
         X = self.face_quadrature[0]
         count = len(self._face_element.doflocs)
         values, gradients = zip(
-            *(self._face_element.lbasis(X, j) for j in range(count)), strict=True)
-        return (np.stack([np.broadcast_to(v, X.shape[1:]) for v in values]),
-                np.stack([np.broadcast_to(g, X.shape) for g in gradients]))
+            *(self._face_element.lbasis(X, j) for j in range(count)), strict=True
+        )
+        return (
+            np.stack([np.broadcast_to(v, X.shape[1:]) for v in values]),
+            np.stack([np.broadcast_to(g, X.shape) for g in gradients]),
+        )
 
 
 @cache
@@ -124,6 +157,7 @@ def shape_of(nodes_per_cell: int) -> Shape:
 
 
 # --- meshes -------------------------------------------------------------------------------------
+
 
 @dataclass(frozen=True)
 class Mesh:
@@ -158,8 +192,7 @@ class Mesh:
     def keep(self, cells: Bools | Ints) -> Mesh:
         """The chosen cells with the nodes they use."""
         used, cells_new = np.unique(self.cells[cells], return_inverse=True)
-        return Mesh(self.points[used], cells_new.reshape(-1, self.cells.shape[1]),
-                    self.part[cells])
+        return Mesh(self.points[used], cells_new.reshape(-1, self.cells.shape[1]), self.part[cells])
 
     def centroids(self) -> Floats:
         """(m, 3) images of the reference centroids."""
@@ -186,18 +219,31 @@ def block(u: int | ArrayLike, v: int | ArrayLike, w: int | ArrayLike) -> Mesh:
     Each of u, v, w is a number of equal divisions of [0, 1] or the rising coordinates of the
     grid lines. Curved bodies are made from it with `Mesh.mapped`.
     """
-    lines = [np.linspace(0.0, 1.0, int(a) + 1) if np.ndim(a) == 0 else np.asarray(a, dtype=float)
-             for a in (u, v, w)]
+    lines = [
+        np.linspace(0.0, 1.0, int(a) + 1) if np.ndim(a) == 0 else np.asarray(a, dtype=float)
+        for a in (u, v, w)
+    ]
     number = np.arange(np.prod([len(a) for a in lines])).reshape([len(a) for a in lines])
     points = np.stack([a.ravel() for a in np.meshgrid(*lines, indexing="ij")], axis=1)
-    corner = [number[i: number.shape[0] - 1 + i, j: number.shape[1] - 1 + j,
-                     k: number.shape[2] - 1 + k].ravel() for i, j, k in _HEX_CORNERS]
+    corner = [
+        number[
+            i : number.shape[0] - 1 + i, j : number.shape[1] - 1 + j, k : number.shape[2] - 1 + k
+        ].ravel()
+        for i, j, k in _HEX_CORNERS
+    ]
     cells = np.stack(corner, axis=1).astype(np.int64)
     return Mesh(points, cells, np.zeros(len(cells), dtype=np.int64))
 
 
-def holed_square(centre: ArrayLike, half: float, radius: float, w: ArrayLike, side: int,
-                 layers: int, make: Callable[[Mesh], Mesh] = lambda mesh: mesh) -> Mesh:
+def holed_square(
+    centre: ArrayLike,
+    half: float,
+    radius: float,
+    w: ArrayLike,
+    side: int,
+    layers: int,
+    make: Callable[[Mesh], Mesh] = lambda mesh: mesh,
+) -> Mesh:
     """Hexahedra of a square in the xy plane with a round hole, between grid lines w in z.
 
     The square reaches `half` to each side of the centre (x, y); `side` divisions along each of
@@ -224,8 +270,9 @@ def tetrahedra(mesh: Mesh) -> Mesh:
     Opposite faces of a hexahedron get parallel diagonals, so the faces of a block still match
     those of its neighbour and of its image on a cyclic seam.
     """
-    cuts = np.array([[0, 1, 2, 6], [0, 2, 3, 6], [0, 3, 7, 6], [0, 7, 4, 6], [0, 4, 5, 6],
-                     [0, 5, 1, 6]])
+    cuts = np.array(
+        [[0, 1, 2, 6], [0, 2, 3, 6], [0, 3, 7, 6], [0, 7, 4, 6], [0, 4, 5, 6], [0, 5, 1, 6]]
+    )
     return Mesh(mesh.points, mesh.cells[:, cuts].reshape(-1, 4), np.repeat(mesh.part, len(cuts)))
 
 
@@ -251,8 +298,9 @@ def join(*meshes: Mesh, tolerance: float = 1e-6) -> Mesh:
 def _merge(points: Floats, distance: float) -> tuple[Floats, Ints]:
     """Points with near ones made one (the first of each class stays), and old -> new numbers."""
     pairs = cKDTree(points).query_pairs(distance, output_type="ndarray")
-    links = csr_matrix((np.ones(len(pairs)), (pairs[:, 0], pairs[:, 1])),
-                       shape=(len(points), len(points)))
+    links = csr_matrix(
+        (np.ones(len(pairs)), (pairs[:, 0], pairs[:, 1])), shape=(len(points), len(points))
+    )
     _, label = connected_components(links, directed=False)
     _, first, node = np.unique(label, return_index=True, return_inverse=True)
     order = np.argsort(first)
@@ -267,13 +315,15 @@ def boundary_faces(mesh: Mesh, where: Bools | None = None) -> Ints:
     With `where`, a truth value per node, only the faces all of whose nodes are chosen.
     """
     faces = mesh.cells[:, mesh.shape.faces].reshape(-1, mesh.shape.faces.shape[1])
-    _, group, count = np.unique(np.sort(faces, axis=1), axis=0, return_inverse=True,
-                                return_counts=True)
+    _, group, count = np.unique(
+        np.sort(faces, axis=1), axis=0, return_inverse=True, return_counts=True
+    )
     faces = faces[count[group.ravel()] == 1]
     return faces if where is None else faces[where[faces].all(axis=1)]
 
 
 # --- integration --------------------------------------------------------------------------------
+
 
 def _jacobians(mesh: Mesh, X: Floats) -> tuple[Floats, Floats]:
     """dx/dX (m, q, 3, 3) and its determinant (m, q) at reference points X (3, q)."""
@@ -402,8 +452,9 @@ def surface_load(mesh: Mesh, where: Bools, traction: VectorField) -> Floats:
     t = traction(x, area / size) if callable(traction) else np.asarray(traction)
     forces = np.einsum("fqa,q,jq->fja", np.broadcast_to(t, x.shape) * size, weight, value)
     flat = forces.reshape(-1, 3)
-    return np.stack([np.bincount(faces.ravel(), column, len(mesh.points)) for column in flat.T],
-                    axis=1)
+    return np.stack(
+        [np.bincount(faces.ravel(), column, len(mesh.points)) for column in flat.T], axis=1
+    )
 
 
 def pressure_load(mesh: Mesh, where: Bools, pressure: float) -> Floats:
@@ -429,6 +480,7 @@ def thermal_load(mesh: Mesh, material: Material, temperature: Floats) -> Floats:
 
 
 # --- seam conditions ----------------------------------------------------------------------------
+
 
 @dataclass(frozen=True)
 class CutPlane:
@@ -487,8 +539,11 @@ class Fixed:
         rows = np.atleast_2d(np.asarray(self.directions, dtype=float))
         rows = rows / np.linalg.norm(rows, axis=1, keepdims=True)
         values = np.broadcast_to(self.values, (len(nodes), len(rows)))
-        return (np.repeat(nodes, len(rows)), np.tile(rows, (len(nodes), 1)),
-                values.astype(float).ravel())
+        return (
+            np.repeat(nodes, len(rows)),
+            np.tile(rows, (len(nodes), 1)),
+            values.astype(float).ravel(),
+        )
 
 
 def on_plane(mesh: Mesh, normal: ArrayLike, point: ArrayLike = (0.0, 0.0, 0.0)) -> Bools:
@@ -516,8 +571,13 @@ def cyclic_pairs(mesh: Mesh, cyclic: Cyclic) -> tuple[Ints, Ints]:
     return first, second
 
 
-def elimination(mesh: Mesh, fixed: Sequence[Fixed] = (), planes: Sequence[CutPlane] = (),
-                cyclic: Cyclic | None = None, components: int = 3) -> tuple[csr_matrix, Floats]:
+def elimination(
+    mesh: Mesh,
+    fixed: Sequence[Fixed] = (),
+    planes: Sequence[CutPlane] = (),
+    cyclic: Cyclic | None = None,
+    components: int = 3,
+) -> tuple[csr_matrix, Floats]:
     """T and u0 with u = T q + u0 for every q exactly when supports and seam conditions hold.
 
     Displacements have 3 components; a temperature has 1, and its supports the direction (1,).
@@ -529,13 +589,20 @@ def elimination(mesh: Mesh, fixed: Sequence[Fixed] = (), planes: Sequence[CutPla
     conditions = [support.conditions() for support in fixed]
 
     def hold(nodes: Ints, held: Floats) -> None:
-        conditions.append((np.repeat(nodes, components), np.tile(held, (len(nodes), 1)),
-                           np.zeros(components * len(nodes))))
+        conditions.append(
+            (
+                np.repeat(nodes, components),
+                np.tile(held, (len(nodes), 1)),
+                np.zeros(components * len(nodes)),
+            )
+        )
 
     for plane in planes:
         along = np.outer(plane.unit, plane.unit) if components == 3 else 0.0 * identity
-        hold(np.flatnonzero(on_plane(mesh, plane.unit, plane.point)),
-             along if plane.parity == 1 else identity - along)
+        hold(
+            np.flatnonzero(on_plane(mesh, plane.unit, plane.point)),
+            along if plane.parity == 1 else identity - along,
+        )
     if cyclic is not None:
         first, second = cyclic_pairs(mesh, cyclic)
         turn = cyclic.parity * (cyclic.placement[0] if components == 3 else identity)
@@ -566,12 +633,14 @@ def elimination(mesh: Mesh, fixed: Sequence[Fixed] = (), planes: Sequence[CutPla
     free = ~held & (keeper == np.arange(count))[:, None]
     column = (np.cumsum(free) - 1).reshape(free.shape)
     values = np.einsum("nab,nbi->nai", carry, direction[keeper]) * free[keeper][:, None, :]
-    rows = np.broadcast_to(np.arange(values[..., 0].size).reshape(count, components, 1),
-                           values.shape)
+    rows = np.broadcast_to(
+        np.arange(values[..., 0].size).reshape(count, components, 1), values.shape
+    )
     columns = np.broadcast_to(column[keeper][:, None, :], values.shape)
     used = values != 0.0
-    T = csr_matrix((values[used], (rows[used], columns[used])),
-                   shape=(components * count, int(free.sum())))
+    T = csr_matrix(
+        (values[used], (rows[used], columns[used])), shape=(components * count, int(free.sum()))
+    )
     return T, np.einsum("nab,nb->na", carry, known[keeper]).ravel()
 
 
@@ -579,8 +648,12 @@ def _solve(K: csr_matrix, load: Floats, T: csr_matrix, known: Floats) -> Floats:
     """The u = T q + known that balances the load along every free direction."""
     reduced = csc_matrix(T.T @ K @ T)
     try:
-        factors = splu(reduced, permc_spec="MMD_AT_PLUS_A", diag_pivot_thresh=0.0,
-                       options={"SymmetricMode": True})
+        factors = splu(
+            reduced,
+            permc_spec="MMD_AT_PLUS_A",
+            diag_pivot_thresh=0.0,
+            options={"SymmetricMode": True},
+        )
     except RuntimeError as error:
         raise ValueError("the supports leave the body free to move") from error
     q = np.zeros(T.shape[1])
@@ -590,6 +663,7 @@ def _solve(K: csr_matrix, load: Floats, T: csr_matrix, known: Floats) -> Floats:
 
 
 # --- solutions ----------------------------------------------------------------------------------
+
 
 @dataclass(frozen=True)
 class Solution:
@@ -633,8 +707,7 @@ class Solution:
     def gradient(self, X: Floats) -> Floats:
         """(m, q, 3, 3) du_a/dx_b of each cell at reference points X (3, q)."""
         shape_gradient, _ = _gradients(self.mesh, X)
-        return np.einsum("mqkb,mka->mqab", shape_gradient,
-                         self.displacement[self.mesh.cells])
+        return np.einsum("mqkb,mka->mqab", shape_gradient, self.displacement[self.mesh.cells])
 
     def _stress(self, X: Floats, gradient: Floats) -> Floats:
         heat: Floats | float = 0.0
@@ -731,9 +804,16 @@ def moment(points: Floats, force: Floats, about: ArrayLike) -> Floats:
     return np.cross(points - np.asarray(about, dtype=float), force)
 
 
-def solve(mesh: Mesh, material: Material, load: Floats | None = None, *,
-          fixed: Sequence[Fixed] = (), planes: Sequence[CutPlane] = (),
-          cyclic: Cyclic | None = None, temperature: Floats | None = None) -> Solution:
+def solve(
+    mesh: Mesh,
+    material: Material,
+    load: Floats | None = None,
+    *,
+    fixed: Sequence[Fixed] = (),
+    planes: Sequence[CutPlane] = (),
+    cyclic: Cyclic | None = None,
+    temperature: Floats | None = None,
+) -> Solution:
     """Displacement of a sector under its seam conditions, or of a whole body without any."""
     force = np.zeros_like(mesh.points) if load is None else load
     T, known = elimination(mesh, fixed, planes, cyclic)
@@ -742,9 +822,15 @@ def solve(mesh: Mesh, material: Material, load: Floats | None = None, *,
     return Solution(mesh, material, u.reshape(-1, 3), force, temperature)
 
 
-def solve_temperature(mesh: Mesh, conductivity: float | Floats, heat: Floats | None = None, *,
-                      fixed: Sequence[Fixed] = (), planes: Sequence[CutPlane] = (),
-                      cyclic: Cyclic | None = None) -> Floats:
+def solve_temperature(
+    mesh: Mesh,
+    conductivity: float | Floats,
+    heat: Floats | None = None,
+    *,
+    fixed: Sequence[Fixed] = (),
+    planes: Sequence[CutPlane] = (),
+    cyclic: Cyclic | None = None,
+) -> Floats:
     """(n,) steady temperature; supports have the direction (1,), `heat` is nodal heat flow."""
     H = np.trace(_products(mesh), axis1=-2, axis2=-1)[..., None, None]
     K = _assemble(mesh, H * np.reshape(conductivity, (-1, 1, 1, 1, 1)))
@@ -754,8 +840,10 @@ def solve_temperature(mesh: Mesh, conductivity: float | Floats, heat: Floats | N
 
 # --- whole bodies by copying: an oracle for tests -----------------------------------------------
 
-def placements(planes: Sequence[CutPlane] = (),
-               cyclic: Cyclic | None = None) -> list[tuple[Floats, Floats, int]]:
+
+def placements(
+    planes: Sequence[CutPlane] = (), cyclic: Cyclic | None = None
+) -> list[tuple[Floats, Floats, int]]:
     """(Q, t, chi) of every copy, the identity first: the generators' products, closed."""
     generators = [(*plane.placement, plane.parity) for plane in planes]
     if cyclic is not None:
@@ -764,8 +852,10 @@ def placements(planes: Sequence[CutPlane] = (),
     for Q, t, chi in copies:  # grows while it is read
         for P, s, factor in generators:
             new = (P @ Q, P @ t + s, factor * chi)
-            if not any(np.allclose(new[0], a[0], atol=1e-9) and
-                       np.allclose(new[1], a[1], atol=1e-9) for a in copies):
+            if not any(
+                np.allclose(new[0], a[0], atol=1e-9) and np.allclose(new[1], a[1], atol=1e-9)
+                for a in copies
+            ):
                 copies.append(new)
             if len(copies) > 1000:
                 raise ValueError("the planes and the axis do not generate a finite group")
@@ -788,8 +878,13 @@ class WholeBody:
     cell: Ints
 
 
-def merge_copies(points: Floats, cells: Ints, copies: Sequence[Sequence[ArrayLike]],
-                 part: Ints | None = None, tolerance: float = 1e-5) -> WholeBody:
+def merge_copies(
+    points: Floats,
+    cells: Ints,
+    copies: Sequence[Sequence[ArrayLike]],
+    part: Ints | None = None,
+    tolerance: float = 1e-5,
+) -> WholeBody:
     """The whole mesh from placements (Q, t, ...), nodes within tolerance x edge made one."""
     sector = Mesh(points, cells, np.zeros(len(cells), dtype=np.int64) if part is None else part)
     moved, orders = [], []
@@ -806,8 +901,14 @@ def merge_copies(points: Floats, cells: Ints, copies: Sequence[Sequence[ArrayLik
 
 # --- files --------------------------------------------------------------------------------------
 
-def write_vtu(path: str | Path, mesh: Mesh, point_data: Mapping[str, NDArray[np.generic]],
-              cell_data: Mapping[str, NDArray[np.generic]], bits: int | None = 40) -> None:
+
+def write_vtu(
+    path: str | Path,
+    mesh: Mesh,
+    point_data: Mapping[str, NDArray[np.generic]],
+    cell_data: Mapping[str, NDArray[np.generic]],
+    bits: int | None = 40,
+) -> None:
     """A compressed VTU file, coordinates and results in double precision.
 
     Results are rounded to 2**-bits of the array's largest magnitude (None keeps all): the noise

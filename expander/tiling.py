@@ -225,7 +225,7 @@ def check_turns(mesh: Mesh, group: Group, seams: Seams, given: float | None) -> 
     copy: int | None = seams.overlapping[0] if seams.overlapping else None
     if copy is None and (not touching or not solid):
         copy = _overlap(mesh, group, turned, nodes.items)
-    if group.axis is not None and (copy is not None or not touching):
+    if group.axis is not None and (copy is not None or not (touching or seams.unmatched)):
         angle = _face_angle(mesh, group, given)
         if angle is not None and abs(angle - group.axis.degrees) > 1e-4 * group.axis.degrees:
             raise _wrong_angle(group, angle)

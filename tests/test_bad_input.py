@@ -1094,9 +1094,7 @@ def test_invariant_declared_a_scalar_in_a_sum(bench: Bench) -> None:
 
 
 @pytest.mark.parametrize("components", ["ux uy rz", "x y rz", "UX UY ROTZ"])
-def test_plane_translations_and_rotation_are_no_polar_vector(
-    bench: Bench, components: str
-) -> None:
+def test_plane_translations_and_rotation_are_no_polar_vector(bench: Bench, components: str) -> None:
     grid = pyvista.Plane(i_resolution=2, j_resolution=2, center=(1, 1, 0), i_size=2, j_size=2)
     grid = grid.cast_to_unstructured_grid()
     grid.clear_data()
@@ -1234,9 +1232,7 @@ def test_nodes_on_both_sides_of_a_plane(bench: Bench) -> None:
 
 
 @pytest.mark.parametrize(("degrees", "copies"), [(72.0, 10), (120.0, 6)])
-def test_nodes_on_both_sides_of_an_implied_plane(
-    bench: Bench, degrees: float, copies: int
-) -> None:
+def test_nodes_on_both_sides_of_an_implied_plane(bench: Bench, degrees: float, copies: int) -> None:
     """Planes at 72 degrees also make a finite group, but one that covers space twice."""
     bench.model(wedge(degrees, 6))
     a = np.deg2rad(degrees)
@@ -1616,9 +1612,7 @@ def test_folder_that_refuses_new_files(bench: Bench, monkeypatch: pytest.MonkeyP
 
 @pytest.mark.parametrize("code", [errno.ENOSPC, errno.EDQUOT, errno.EIO])
 @pytest.mark.parametrize("after", [0, 0.3, 0.9])
-def test_full_disk(
-    bench: Bench, monkeypatch: pytest.MonkeyPatch, after: float, code: int
-) -> None:
+def test_full_disk(bench: Bench, monkeypatch: pytest.MonkeyPatch, after: float, code: int) -> None:
     bench.model(box())
     bench.accepts("half.vtu", "--mirror", "x", "-o", "first.vtu")
     whole = (bench.folder / "first.vtu").stat().st_size
@@ -1715,9 +1709,7 @@ def interrupting(monkeypatch: pytest.MonkeyPatch, error: BaseException) -> None:
     monkeypatch.setattr(expander.images, "image_values", image_values)
 
 
-def test_interrupted_writing_leaves_nothing(
-    bench: Bench, monkeypatch: pytest.MonkeyPatch
-) -> None:
+def test_interrupted_writing_leaves_nothing(bench: Bench, monkeypatch: pytest.MonkeyPatch) -> None:
     grid = box()
     grid.point_data["velocity"] = 0.01 * grid.points
     bench.model(grid)

@@ -190,7 +190,7 @@ def test_options_are_the_case_file_for_planes(seamfold: Seamfold) -> None:
     Path("case.toml").write_text(
         '[model]\nfile = "half.vtu"\n'
         '[[mirror]]\nname = "mid"\nnormal = "x"\npoint = [0.0, 1.0, 0.0]\nload = "antisymmetric"\n'
-        '[[mirror]]\nnormal = [0.0, 2.0, 0.0]\n'
+        "[[mirror]]\nnormal = [0.0, 2.0, 0.0]\n"
         '[fields.temperature]\nkind = "scalar"\n'
         '[fields.stress]\nkind = "symmetric tensor"\nseam = "recovered"\nunit = "MPa"\n'
         '[seam]\nlimit = 1e-3\n[output]\nfile = "case.vtu"\nderived = ["von mises"]\n',
@@ -212,7 +212,7 @@ def test_options_are_the_case_file_for_sectors(seamfold: Seamfold) -> None:
     wedge(30.0).save("sector.vtu")
     Path("case.toml").write_text(
         '[model]\nfile = "sector.vtu"\n[cyclic]\nsectors = 12\naxis = [0.0, 0.0, 3.0]\n'
-        'point = [1.0, 0.0, 0.0]\nnodal_diameters = 6\n'
+        "point = [1.0, 0.0, 0.0]\nnodal_diameters = 6\n"
         '[fields.q]\nkind = "polar vector"\n[output]\nfile = "case.vtu"\n',
         encoding="utf-8",
     )
@@ -608,8 +608,10 @@ def test_table_in_a_cylindrical_frame(seamfold: Seamfold) -> None:
     grid.cell_data["r"] = np.ones((8, 3))
     grid.cell_data["s"] = np.ones((8, 6))
     grid.save("half.vtu")
-    fields = "".join(f'[fields.{n}]\nkind = "{k}"\nframe = "shaft"\n' for n, k in
-                     (("q", "polar vector"), ("r", "axial vector"), ("s", "symmetric tensor")))
+    fields = "".join(
+        f'[fields.{n}]\nkind = "{k}"\nframe = "shaft"\n'
+        for n, k in (("q", "polar vector"), ("r", "axial vector"), ("s", "symmetric tensor"))
+    )
     Path("case.toml").write_text(
         '[model]\nfile = "half.vtu"\n[[mirror]]\nname = "side"\nnormal = "y"\n'
         '[[mirror]]\nname = "end"\nnormal = "z"\n[frames.shaft]\ntype = "cylindrical"\n' + fields,
@@ -625,8 +627,18 @@ def test_table_in_a_cylindrical_frame(seamfold: Seamfold) -> None:
 def test_table_shows_units(seamfold: Seamfold) -> None:
     """Units are words shown in tables; that of the model is the unit of lengths."""
     box().save("half.vtu")
-    ran = seamfold("expand", "half.vtu", "--mirror", "x", "--field", "displacement=polar vector",
-                   "--set", "fields.displacement.unit=furlong", "--set", "model.unit=cubit")
+    ran = seamfold(
+        "expand",
+        "half.vtu",
+        "--mirror",
+        "x",
+        "--field",
+        "displacement=polar vector",
+        "--set",
+        "fields.displacement.unit=furlong",
+        "--set",
+        "model.unit=cubit",
+    )
     assert (ran.status, ran.err) == (0, "")  # fmt: skip
     assert "furlong" in ran.out
     assert "cubit" in ran.out

@@ -126,9 +126,11 @@ def test_number_types_are_kept(tmp_path: Path, dtype: type) -> None:
     back = read(tmp_path / "whole.vtu")
     cell = numbers(back.GetCellData(), "sector_cell")
     point = numbers(back.GetPointData(), "sector_point")
-    for data, name, own in ((back.GetCellData(), "one", grid.cell_data["one"][cell]),
-                            (back.GetCellData(), "three", grid.cell_data["three"][cell]),
-                            (back.GetPointData(), "nodal", grid.point_data["nodal"][point])):
+    for data, name, own in (
+        (back.GetCellData(), "one", grid.cell_data["one"][cell]),
+        (back.GetCellData(), "three", grid.cell_data["three"][cell]),
+        (back.GetPointData(), "nodal", grid.point_data["nodal"][point]),
+    ):
         assert numbers(data, name).dtype == dtype
         assert numbers(data, name).tobytes() == np.ascontiguousarray(own).tobytes(), name
 
@@ -444,13 +446,13 @@ def test_the_folder_does_not_change_the_bytes(tmp_path: Path) -> None:
 
 def test_index_of_several_results(tmp_path: Path) -> None:
     tables = two_results(tmp_path)
-    tables["case"].append({"name": "Fall <ä> & \"b\"", "file": "even.vtu"})
+    tables["case"].append({"name": 'Fall <ä> & "b"', "file": "even.vtu"})
     expansion = plan(validate_case(tables, tmp_path))
     expansion.write()
     reader = pyvista.PVDReader(tmp_path / "whole.pvd")
     assert list(reader.time_values) == [0.0, 1.0, 2.0]
-    assert [d.group for d in reader.datasets] == ["even", "odd", "Fall <ä> & \"b\""]
-    for k, name in enumerate(("even", "odd", "Fall <ä> & \"b\"")):
+    assert [d.group for d in reader.datasets] == ["even", "odd", 'Fall <ä> & "b"']
+    for k, name in enumerate(("even", "odd", 'Fall <ä> & "b"')):
         reader.set_active_time_value(float(k))
         (block,) = reader.read()
         direct = read(tmp_path / reader.active_datasets[0].path)

@@ -32,14 +32,14 @@ BASE = 0.016
 PIN_HEIGHT = 0.082
 PIN_RADIUS, EAR_RADIUS = 0.0125, 0.026
 BOLT_X, BOLT_Y, BOLT_RADIUS = 0.066, 0.067, 0.0075
-SQUARE = 0.016                       # half the side of the square that is meshed round a bolt
-FOOT = 0.042                         # half the length of the ear's foot
-RIM = 0.005                          # from that square to the edge of the base
-PULL = 20e3                          # N on each ear
-WARMTH = 60.0                        # K, the pin above the bolts
+SQUARE = 0.016  # half the side of the square that is meshed round a bolt
+FOOT = 0.042  # half the length of the ear's foot
+RIM = 0.005  # from that square to the edge of the base
+PULL = 20e3  # N on each ear
+WARMTH = 60.0  # K, the pin above the bolts
 STEEL = Material(young=210e9, poisson=0.3, expansion=12e-6)
-CONDUCTIVITY = 45.0                  # W/(m K)
-ABOUT = (0.0, CUT, 0.0)              # moments are taken about this point of the cut plane
+CONDUCTIVITY = 45.0  # W/(m K)
+ABOUT = (0.0, CUT, 0.0)  # moments are taken about this point of the cut plane
 
 
 def base() -> Mesh:
@@ -53,8 +53,10 @@ def base() -> Mesh:
     plate = block(x, y, z)
     off = np.abs(np.abs(plate.centroids()[:, :2]) - (BOLT_X, BOLT_Y))
     plate = plate.keep((off > SQUARE).any(axis=1))
-    return join(plate, *(holed_square((side * BOLT_X, BOLT_Y), SQUARE, BOLT_RADIUS, z, 8, 3)
-                         for side in (-1, 1)))
+    return join(
+        plate,
+        *(holed_square((side * BOLT_X, BOLT_Y), SQUARE, BOLT_RADIUS, z, 8, 3) for side in (-1, 1)),
+    )
 
 
 def ear() -> Mesh:
@@ -66,6 +68,7 @@ def ear() -> Mesh:
         def mapping(a, b, w):
             x, z = place(a, b)
             return x, -w, z
+
         return block(u, v, -depth[::-1]).mapped(mapping)
 
     def ring(first: float, last: float, rim: Callable) -> Callable:
@@ -74,6 +77,7 @@ def ear() -> Mesh:
             circle = np.stack([np.cos(angle), np.sin(angle)])
             x, z = (1 - u) * PIN_RADIUS * circle + u * EAR_RADIUS * rim(v, circle)
             return x, PIN_HEIGHT + z
+
         return place
 
     def chord(start: tuple[float, float], end: tuple[float, float]) -> Callable:
@@ -107,28 +111,37 @@ def model(parity: int) -> tuple[Solution, Mesh]:
     load = surface_load(mesh, in_bore, bearing)
     load *= PULL / load[:, 2].sum()
     temperature = solve_temperature(
-        mesh, CONDUCTIVITY, planes=planes,
-        fixed=[Fixed(in_bore, ((1,),), WARMTH), Fixed(in_bolts, ((1,),), 0.0)])
-    return solve(mesh, STEEL, load, fixed=[Fixed(in_bolts)], planes=planes,
-                 temperature=temperature), mesh
+        mesh,
+        CONDUCTIVITY,
+        planes=planes,
+        fixed=[Fixed(in_bore, ((1,),), WARMTH), Fixed(in_bolts, ((1,),), 0.0)],
+    )
+    return solve(
+        mesh, STEEL, load, fixed=[Fixed(in_bolts)], planes=planes, temperature=temperature
+    ), mesh
 
 
 def main() -> None:
     for name, parity in (("even", 1), ("odd", -1)):
         solution, mesh = model(parity)
-        write_vtu(HERE / f"clevis_{name}.vtu", mesh, {
-            "displacement": solution.displacement,
-            "rotation": solution.rotation,
-            "stress": solution.nodal_stress,
-            "von_mises": solution.nodal_von_mises,
-            "temperature": solution.temperature,
-            "nodal_force": solution.external_force,
-            "reaction": solution.reaction,
-            "reaction_moment": moment(mesh.points, solution.reaction, ABOUT),
-        }, {
-            "cell_stress": solution.cell_stress,
-            "part": mesh.part,
-        })
+        write_vtu(
+            HERE / f"clevis_{name}.vtu",
+            mesh,
+            {
+                "displacement": solution.displacement,
+                "rotation": solution.rotation,
+                "stress": solution.nodal_stress,
+                "von_mises": solution.nodal_von_mises,
+                "temperature": solution.temperature,
+                "nodal_force": solution.external_force,
+                "reaction": solution.reaction,
+                "reaction_moment": moment(mesh.points, solution.reaction, ABOUT),
+            },
+            {
+                "cell_stress": solution.cell_stress,
+                "part": mesh.part,
+            },
+        )
 
 
 if __name__ == "__main__":

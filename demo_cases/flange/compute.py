@@ -30,11 +30,11 @@ SIDE = np.array([2.0, 1.0, -2.0]) / 3
 ACROSS = np.cross(AXIS, SIDE)
 CENTRE = np.array([0.30, 0.10, -0.05])
 WEDGE = np.pi / 6
-BORE, NECK, WALL = 0.030, 0.045, 0.037   # radii: bore, neck at the disc, neck at its end
-THICK, HEIGHT = 0.016, 0.075             # of the disc, of the whole
+BORE, NECK, WALL = 0.030, 0.045, 0.037  # radii: bore, neck at the disc, neck at its end
+THICK, HEIGHT = 0.016, 0.075  # of the disc, of the whole
 BOLT_AT, BOLT_RADIUS = 0.080, 0.0065
-SQUARE = 0.0115                          # half the side of the patch that is meshed round a bolt
-PRESSURE = 8e6                           # Pa in the bore, with its thrust on the neck
+SQUARE = 0.0115  # half the side of the patch that is meshed round a bolt
+PRESSURE = 8e6  # Pa in the bore, with its thrust on the neck
 STEEL = Material(young=205e9, poisson=0.29)
 NORMALS = (ACROSS, ACROSS * np.cos(WEDGE) - SIDE * np.sin(WEDGE))
 
@@ -46,11 +46,11 @@ def contour(theta):
 
 def wedge() -> Mesh:
     """Part 1 is the neck, 2 the disc; x, y, z lead to the lobe, across it, along the axis."""
-    first = SQUARE / BOLT_AT         # angle of the patch round the bolt
+    first = SQUARE / BOLT_AT  # angle of the patch round the bolt
     disc = np.linspace(0.0, THICK, 4)
     theta = np.concatenate([np.linspace(0.0, first, 5)[:-1], np.linspace(first, WEDGE, 9)])
     level = np.array([BOLT_AT - SQUARE, BOLT_AT + SQUARE])
-    level = (level - NECK) / (contour(0.0) - NECK)   # the grid follows the edge by fractions
+    level = (level - NECK) / (contour(0.0) - NECK)  # the grid follows the edge by fractions
 
     def spot(s, t):
         r = NECK + s * (contour(t) - NECK)
@@ -63,13 +63,17 @@ def wedge() -> Mesh:
         def place(u, v, w):
             angle = np.radians(start + (end - start) * v)
             x, y = spot(*side(v))
-            return (u * x + (1 - u) * (BOLT_AT + BOLT_RADIUS * np.cos(angle)),
-                    u * y + (1 - u) * BOLT_RADIUS * np.sin(angle), w)
+            return (
+                u * x + (1 - u) * (BOLT_AT + BOLT_RADIUS * np.cos(angle)),
+                u * y + (1 - u) * BOLT_RADIUS * np.sin(angle),
+                w,
+            )
+
         return block(4, n, disc).mapped(place)
 
     def neck(u, v, w):
         rise = np.clip((w - THICK) / (HEIGHT - THICK), 0.0, 1.0)
-        r = BORE + u * (NECK + (WALL - NECK) * rise ** 0.6 - BORE)
+        r = BORE + u * (NECK + (WALL - NECK) * rise**0.6 - BORE)
         return r * np.cos(v), r * np.sin(v), w
 
     inner, outer = level
@@ -92,8 +96,11 @@ def model() -> tuple[Solution, Mesh]:
     bore = np.abs(np.hypot(x, y) - BORE) < 1e-6
     bolt = np.abs(np.hypot(x - BOLT_AT, y) - BOLT_RADIUS) < 1e-6
     end = np.abs(z - HEIGHT) < 1e-6
-    sector = local.mapped(lambda a, b, c: CENTRE[:, None] + np.outer(SIDE, a)
-                          + np.outer(ACROSS, b) + np.outer(AXIS, c))
+    sector = local.mapped(
+        lambda a, b, c: (
+            CENTRE[:, None] + np.outer(SIDE, a) + np.outer(ACROSS, b) + np.outer(AXIS, c)
+        )
+    )
     thrust = surface_load(sector, end, AXIS)
     thrust *= PRESSURE * np.pi * BORE**2 / 12 / (thrust.sum(axis=0) @ AXIS)
     load = pressure_load(sector, bore, PRESSURE) + thrust
@@ -103,18 +110,23 @@ def model() -> tuple[Solution, Mesh]:
 
 def main() -> None:
     solution, sector = model()
-    write_vtu(HERE / "flange.vtu", sector, {
-        "displacement": solution.displacement,
-        "rotation": solution.rotation,
-        "stress": solution.nodal_stress,
-        "strain": solution.nodal_strain,
-        "von_mises": solution.nodal_von_mises,
-        "nodal_force": solution.external_force,
-        "reaction": solution.reaction,
-    }, {
-        "cell_strain": solution.cell_strain,
-        "part": sector.part,
-    })
+    write_vtu(
+        HERE / "flange.vtu",
+        sector,
+        {
+            "displacement": solution.displacement,
+            "rotation": solution.rotation,
+            "stress": solution.nodal_stress,
+            "strain": solution.nodal_strain,
+            "von_mises": solution.nodal_von_mises,
+            "nodal_force": solution.external_force,
+            "reaction": solution.reaction,
+        },
+        {
+            "cell_strain": solution.cell_strain,
+            "part": sector.part,
+        },
+    )
 
 
 if __name__ == "__main__":

@@ -24,11 +24,11 @@ from demo_cases.solver import (  # noqa: E402
 
 # Millimetres, newtons, megapascals. The link lies in the xy plane about the origin, its long axis
 # along x; all three coordinate planes cut it. A straight leg leads from x = 0 to the bend.
-LEG, BEND = 17.0, 23.0               # half the leg's length, radius of the bend's middle line
-WIRE = 10.0                          # radius of the wire
-CORE = 0.5                           # half the side of the square inside the wire, per radius
-PULL = 30e3                          # N along x at each end
-TWIST = 200e3                        # N mm about x at each end, opposite at the two ends
+LEG, BEND = 17.0, 23.0  # half the leg's length, radius of the bend's middle line
+WIRE = 10.0  # radius of the wire
+CORE = 0.5  # half the side of the square inside the wire, per radius
+PULL = 30e3  # N along x at each end
+TWIST = 200e3  # N mm about x at each end, opposite at the two ends
 STEEL = Material(young=206e3, poisson=0.3)
 PLANES = ((1, 0, 0), (0, 1, 0), (0, 0, 1))
 
@@ -50,15 +50,19 @@ def mesh() -> Mesh:
 
     def shell(start: float, end: float, inside):
         """Between one side of the square, run through by p, and the circle; q goes outwards."""
+
         def section(p, q):
             angle = np.radians(start + (end - start) * p)
             a, b = inside(p)
             return ((1 - q) * a + q * np.cos(angle), (1 - q) * b + q * np.sin(angle))
+
         return section
 
-    right, top, left = (shell(0, 45, lambda p: (CORE, CORE * p)),
-                        shell(135, 45, lambda p: (CORE * (2 * p - 1), CORE)),
-                        shell(180, 135, lambda p: (-CORE, CORE * p)))
+    right, top, left = (
+        shell(0, 45, lambda p: (CORE, CORE * p)),
+        shell(135, 45, lambda p: (CORE * (2 * p - 1), CORE)),
+        shell(180, 135, lambda p: (-CORE, CORE * p)),
+    )
     # Each block's axes point so that the diagonals of the tetrahedra agree where blocks meet.
     return join(
         quarter(4, 2, lambda p, q: (CORE * (2 * p - 1), CORE * q)),
@@ -94,16 +98,21 @@ def model(name: str) -> tuple[Solution, Mesh]:
 def main() -> None:
     for name in ("pull", "twist"):
         solution, sector = model(name)
-        write_vtu(HERE / f"link_{name}.vtu", sector, {
-            "displacement": solution.displacement,
-            "rotation": solution.rotation,
-            "stress": solution.nodal_stress,
-            "von_mises": solution.nodal_von_mises,
-            "nodal_force": solution.external_force,
-            "reaction": solution.reaction,
-        }, {
-            "cell_stress": solution.cell_stress,
-        })
+        write_vtu(
+            HERE / f"link_{name}.vtu",
+            sector,
+            {
+                "displacement": solution.displacement,
+                "rotation": solution.rotation,
+                "stress": solution.nodal_stress,
+                "von_mises": solution.nodal_von_mises,
+                "nodal_force": solution.external_force,
+                "reaction": solution.reaction,
+            },
+            {
+                "cell_stress": solution.cell_stress,
+            },
+        )
 
 
 if __name__ == "__main__":

@@ -31,14 +31,14 @@ from demo_cases.solver import (  # noqa: E402
 BLADES = 8
 SECTOR = 2 * np.pi / BLADES
 SHAFT = 0.25
-BORE, HUB, TIP = 0.025, 0.060, 0.160     # radii
-WIDTH = 0.050                            # of the hub along the shaft
-TWIST = 10.0                             # rad per metre along the shaft
-SWEEP = 0.60                             # rad between bore and tip
-ROOT, EDGE = 0.013, 0.012               # blade thickness around the axis, at root and tip
-SPEED = 400.0                            # rad/s
-SWIRL, GUST = 20e3, 30e3                # Pa on the pressure side of the blades
-DENSITY = 2700.0                         # kg/m^3
+BORE, HUB, TIP = 0.025, 0.060, 0.160  # radii
+WIDTH = 0.050  # of the hub along the shaft
+TWIST = 10.0  # rad per metre along the shaft
+SWEEP = 0.60  # rad between bore and tip
+ROOT, EDGE = 0.013, 0.012  # blade thickness around the axis, at root and tip
+SPEED = 400.0  # rad/s
+SWIRL, GUST = 20e3, 30e3  # Pa on the pressure side of the blades
+DENSITY = 2700.0  # kg/m^3
 ALUMINIUM = Material(young=70e9, poisson=0.33)
 
 
@@ -46,8 +46,9 @@ def sector() -> tuple[Mesh, dict[str, np.ndarray]]:
     """Part 1 is the hub, 2 the blade; and which nodes lie in the bore and on the pressure side."""
     middle, half = SECTOR / 2, ROOT / HUB / 2
     r = np.concatenate([np.linspace(BORE, HUB, 4), np.linspace(HUB, TIP, 12)[1:]])
-    theta = np.concatenate([np.linspace(0.0, middle - half, 4), [middle],
-                            np.linspace(middle + half, SECTOR, 4)])
+    theta = np.concatenate(
+        [np.linspace(0.0, middle - half, 4), [middle], np.linspace(middle + half, SECTOR, 4)]
+    )
     grid = block(r, theta, np.linspace(0.0, WIDTH, 8))
     radius, angle, _ = grid.centroids().T
     blade = radius > HUB
@@ -55,8 +56,10 @@ def sector() -> tuple[Mesh, dict[str, np.ndarray]]:
     grid = quadratic(grid)
     grid = Mesh(grid.points, grid.cells, np.where(grid.centroids()[:, 0] > HUB, 2, 1))
     radius, angle, _ = grid.points.T
-    marks = {"bore": np.abs(radius - BORE) < 1e-6,
-             "pressure side": (radius > HUB - 1e-6) & (np.abs(angle - middle - half) < 1e-6)}
+    marks = {
+        "bore": np.abs(radius - BORE) < 1e-6,
+        "pressure side": (radius > HUB - 1e-6) & (np.abs(angle - middle - half) < 1e-6),
+    }
 
     def place(r, t, w):
         out = np.clip((r - HUB) / (TIP - HUB), 0.0, 1.0)
@@ -95,19 +98,24 @@ def main() -> None:
         solution, mesh = model(parity)
         E = cylindrical(mesh.points)
         turned = np.einsum("nia,nab,njb->nij", E, full(solution.nodal_stress), E)
-        write_vtu(HERE / f"rotor_{name}.vtu", mesh, {
-            "displacement": solution.displacement,
-            "displacement_polar": np.einsum("nia,na->ni", E, solution.displacement),
-            "rotation": solution.rotation,
-            "stress": solution.nodal_stress,
-            "stress_polar": six(turned),
-            "von_mises": solution.nodal_von_mises,
-            "nodal_force": solution.external_force,
-            "reaction": solution.reaction,
-            "reaction_moment": moment(mesh.points, solution.reaction, (0, 0, SHAFT)),
-        }, {
-            "part": mesh.part,
-        })
+        write_vtu(
+            HERE / f"rotor_{name}.vtu",
+            mesh,
+            {
+                "displacement": solution.displacement,
+                "displacement_polar": np.einsum("nia,na->ni", E, solution.displacement),
+                "rotation": solution.rotation,
+                "stress": solution.nodal_stress,
+                "stress_polar": six(turned),
+                "von_mises": solution.nodal_von_mises,
+                "nodal_force": solution.external_force,
+                "reaction": solution.reaction,
+                "reaction_moment": moment(mesh.points, solution.reaction, (0, 0, SHAFT)),
+            },
+            {
+                "part": mesh.part,
+            },
+        )
 
 
 if __name__ == "__main__":

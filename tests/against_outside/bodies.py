@@ -31,6 +31,7 @@ SHIFT = np.array([3.1, -2.3, 1.7])
 
 # --- storage ------------------------------------------------------------------------------------
 
+
 def stored(tensor: Floats, order: str = SIX, shear: float = 1.0) -> Floats:
     """(..., 3, 3) to stored components; shear = 2 for engineering shear strain."""
     parts = []
@@ -83,15 +84,21 @@ def turn(angle: float, axis: ArrayLike, point: ArrayLike) -> tuple[Floats, Float
 
 # --- meshes -------------------------------------------------------------------------------------
 
+
 def quads(nu: int, nv: int, order: int = 1) -> tuple[Floats, Ints]:
     """Grid points (n, 2) of the unit square and its quadrilaterals with 4 or 9 nodes, as VTK's."""
-    u, v = np.meshgrid(np.linspace(0, 1, order * nu + 1), np.linspace(0, 1, order * nv + 1),
-                       indexing="ij")
+    u, v = np.meshgrid(
+        np.linspace(0, 1, order * nu + 1), np.linspace(0, 1, order * nv + 1), indexing="ij"
+    )
     number = np.arange(u.size).reshape(u.shape)
-    i, j = (a.ravel() for a in np.meshgrid(order * np.arange(nu), order * np.arange(nv),
-                                           indexing="ij"))
-    steps = [(0, 0), (1, 0), (1, 1), (0, 1)] if order == 1 else [
-        (0, 0), (2, 0), (2, 2), (0, 2), (1, 0), (2, 1), (1, 2), (0, 1), (1, 1)]
+    i, j = (
+        a.ravel() for a in np.meshgrid(order * np.arange(nu), order * np.arange(nv), indexing="ij")
+    )
+    steps = (
+        [(0, 0), (1, 0), (1, 1), (0, 1)]
+        if order == 1
+        else [(0, 0), (2, 0), (2, 2), (0, 2), (1, 0), (2, 1), (1, 2), (0, 1), (1, 1)]
+    )
     cells = np.stack([number[i + a, j + b] for a, b in steps], axis=1)
     return np.stack([u.ravel(), v.ravel()], axis=1), cells
 
@@ -103,6 +110,7 @@ def centres(grid: pv.UnstructuredGrid) -> Floats:
 
 
 # --- files --------------------------------------------------------------------------------------
+
 
 def _toml(value: object) -> str:
     if isinstance(value, Mapping):
@@ -120,9 +128,13 @@ def _toml(value: object) -> str:
     return repr(float(value))  # type: ignore[arg-type]
 
 
-def write_sector(path: Path, points: Floats, cells: Mapping[int, Ints],
-                 point_data: Mapping[str, NDArray[np.generic]] | None = None,
-                 cell_data: Mapping[str, NDArray[np.generic]] | None = None) -> None:
+def write_sector(
+    path: Path,
+    points: Floats,
+    cells: Mapping[int, Ints],
+    point_data: Mapping[str, NDArray[np.generic]] | None = None,
+    cell_data: Mapping[str, NDArray[np.generic]] | None = None,
+) -> None:
     """A VTU file; cells by VTK type number, coordinates in the precision of `points`."""
     grid = pv.UnstructuredGrid(dict(cells), points)
     for name, values in (point_data or {}).items():
@@ -161,8 +173,13 @@ class Model:
         self.fields[name] = {"kind": kind, **words}
         return self
 
-    def values(self, case: str = "result", *, points: Mapping[str, NDArray] | None = None,
-               cells: Mapping[str, NDArray] | None = None) -> Model:
+    def values(
+        self,
+        case: str = "result",
+        *,
+        points: Mapping[str, NDArray] | None = None,
+        cells: Mapping[str, NDArray] | None = None,
+    ) -> Model:
         """The arrays of a load case."""
         self.data[case] = (dict(points or {}), dict(cells or {}))
         return self
@@ -175,18 +192,17 @@ class Model:
     def write(self, name: str = "case.toml") -> Path:
         """Write the sector files and the case file."""
         for case, (point_data, cell_data) in (self.data or {"result": ({}, {})}).items():
-            write_sector(self.folder / f"{case}.vtu", self.points, self.cells, point_data,
-                         cell_data)
+            write_sector(
+                self.folder / f"{case}.vtu", self.points, self.cells, point_data, cell_data
+            )
         model: dict[str, object] = {"linear": True}
         tables = dict(self.tables)
         if "case" in tables:
-            tables["case"] = [{"file": f"{case['name']}.vtu", **case}
-                              for case in tables["case"]]  # type: ignore[attr-defined]
+            tables["case"] = [{"file": f"{case['name']}.vtu", **case} for case in tables["case"]]  # type: ignore[attr-defined]
         else:
             model["file"] = "result.vtu"
         model.update(tables.pop("model", {}))  # type: ignore[call-overload]
-        return write_case(self.folder / name,
-                          {"model": model, **tables, "fields": self.fields})
+        return write_case(self.folder / name, {"model": model, **tables, "fields": self.fields})
 
     def expand(self, result: str | None = None) -> pv.UnstructuredGrid:
         """The whole body."""
@@ -194,6 +210,7 @@ class Model:
 
 
 # --- comparison ---------------------------------------------------------------------------------
+
 
 def miss(found: ArrayLike, expected: ArrayLike, scale: float | None = None) -> float:
     """Largest difference over the field's largest magnitude."""
@@ -221,5 +238,4 @@ def no_twins(grid: pv.UnstructuredGrid, distance: float) -> bool:
 
 def mirrors(*planes: Sequence[object]) -> list[dict[str, object]]:
     """Tables of cut planes from (name, normal, point, load)."""
-    return [dict(zip(("name", "normal", "point", "load"), plane, strict=False))
-            for plane in planes]
+    return [dict(zip(("name", "normal", "point", "load"), plane, strict=False)) for plane in planes]

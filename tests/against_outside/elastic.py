@@ -39,8 +39,12 @@ KINDS: dict[str, Mapping[str, object]] = {
     "displacement": {"kind": "polar vector"},
     "rotation": {"kind": "axial vector", "seam": "recovered"},
     "stress": {"kind": "symmetric tensor", "components": SIX, "seam": "recovered"},
-    "strain": {"kind": "symmetric tensor", "components": SIX, "shear": "engineering",
-               "seam": "recovered"},
+    "strain": {
+        "kind": "symmetric tensor",
+        "components": SIX,
+        "shear": "engineering",
+        "seam": "recovered",
+    },
     "von_mises": {"kind": "invariant", "seam": "recovered"},
     "nodal_force": {"kind": "polar vector", "seam": "sum"},
     "reaction": {"kind": "polar vector", "seam": "sum"},
@@ -102,8 +106,9 @@ class Body:
     def with_parities(self, *planes: int, cyclic: int = 1) -> Body:
         """The same body under another load."""
         new = [CutPlane(p.normal, p.point, s) for p, s in zip(self.planes, planes, strict=True)]
-        axis = self.cyclic and Cyclic(self.cyclic.sectors, self.cyclic.axis, self.cyclic.point,
-                                      cyclic)
+        axis = self.cyclic and Cyclic(
+            self.cyclic.sectors, self.cyclic.axis, self.cyclic.point, cyclic
+        )
         return Body(self.mesh, self.fixed, new, axis, self.about, self.halves)
 
     @property
@@ -113,8 +118,15 @@ class Body:
     def solve(self, load: Floats, temperature: Floats | None = None) -> Solution:
         """The sector; half-sectors are held by their two planes, not by the cyclic condition."""
         cyclic = None if self.halves else self.cyclic
-        return solve(self.mesh, self.material, load, fixed=[Fixed(self.fixed)],
-                     planes=self.planes, cyclic=cyclic, temperature=temperature)
+        return solve(
+            self.mesh,
+            self.material,
+            load,
+            fixed=[Fixed(self.fixed)],
+            planes=self.planes,
+            cyclic=cyclic,
+            temperature=temperature,
+        )
 
     def whole(self) -> WholeBody:
         body = merge_copies(self.mesh.points, self.mesh.cells, self.copies, self.mesh.part)
@@ -128,26 +140,43 @@ class Body:
             np.add.at(total, node, chi * load @ Q.T)
         return total
 
-    def solve_whole(self, body: WholeBody, load: Floats,
-                    temperature: Floats | None = None) -> Solution:
+    def solve_whole(
+        self, body: WholeBody, load: Floats, temperature: Floats | None = None
+    ) -> Solution:
         """The whole body, held by its supports alone."""
-        material = Material(np.tile(self.material.young, len(self.copies)), 0.3,
-                            self.material.expansion)
-        return solve(body.mesh, material, load, fixed=[Fixed(body.node[:, self.fixed].ravel())],
-                     temperature=temperature)
+        material = Material(
+            np.tile(self.material.young, len(self.copies)), 0.3, self.material.expansion
+        )
+        return solve(
+            body.mesh,
+            material,
+            load,
+            fixed=[Fixed(body.node[:, self.fixed].ravel())],
+            temperature=temperature,
+        )
 
     def tables(self) -> dict[str, object]:
         """Planes and axis for the case file; of half-sectors only the first plane."""
-        tables: dict[str, object] = {"mirror": [
-            {"name": f"p{i}", "normal": p.unit, "point": np.asarray(p.point, dtype=float),
-             "load": word(p.parity)}
-            for i, p in enumerate(self.planes) if not (self.halves and i == 1)]}
+        tables: dict[str, object] = {
+            "mirror": [
+                {
+                    "name": f"p{i}",
+                    "normal": p.unit,
+                    "point": np.asarray(p.point, dtype=float),
+                    "load": word(p.parity),
+                }
+                for i, p in enumerate(self.planes)
+                if not (self.halves and i == 1)
+            ]
+        }
         if self.cyclic is not None:
             N = self.cyclic.sectors
             tables["cyclic"] = {
-                "sectors": N, "axis": np.asarray(self.cyclic.axis, dtype=float),
+                "sectors": N,
+                "axis": np.asarray(self.cyclic.axis, dtype=float),
                 "point": np.asarray(self.cyclic.point, dtype=float),
-                "nodal_diameters": 0 if self.cyclic.parity == 1 else N // 2}
+                "nodal_diameters": 0 if self.cyclic.parity == 1 else N // 2,
+            }
         return tables
 
     def loads(self) -> dict[str, str]:
@@ -175,9 +204,10 @@ def rows(grid: pv.UnstructuredGrid, body: WholeBody) -> tuple[Ints, Ints]:
     """The node and the cell of the solved body for each of the expanded body, one to one."""
     pairs = []
     (nodes,) = grid.cells_dict.values()
-    for found, known in ((grid.points, body.mesh.points),
-                         (grid.points[nodes].mean(axis=1),
-                          body.mesh.points[body.mesh.cells].mean(axis=1))):
+    for found, known in (
+        (grid.points, body.mesh.points),
+        (grid.points[nodes].mean(axis=1), body.mesh.points[body.mesh.cells].mean(axis=1)),
+    ):
         assert len(found) == len(known)
         distance, row = cKDTree(known).query(found)
         assert distance.max() < 1e-5 * body.mesh.edge_length()
@@ -192,8 +222,14 @@ def seam_nodes(body: WholeBody) -> Ints:
     return np.flatnonzero(count > 1)
 
 
-def compare(grid: pv.UnstructuredGrid, body: WholeBody, oracle: Solution, about: ArrayLike,
-            tolerance: float = SOLVED, names: Sequence[str] | None = None) -> None:
+def compare(
+    grid: pv.UnstructuredGrid,
+    body: WholeBody,
+    oracle: Solution,
+    about: ArrayLike,
+    tolerance: float = SOLVED,
+    names: Sequence[str] | None = None,
+) -> None:
     """Every field of the expanded body against the solved one, away from the seams and at them."""
     points, cells = fields_of(oracle, about)
     node, cell = rows(grid, body)
@@ -204,7 +240,8 @@ def compare(grid: pv.UnstructuredGrid, body: WholeBody, oracle: Solution, about:
     # Coordinates are known to their spacing, which for a volume counts against the edge.
     spacing = float(np.spacing(np.abs(grid.points).max()))
     assert miss(volume(found), volume(body.mesh)[cell]) < max(
-        SOLVED, 8 * spacing / body.mesh.edge_length())
+        SOLVED, 8 * spacing / body.mesh.edge_length()
+    )
     on_seam = np.isin(node, seam_nodes(body))
     assert 0 < on_seam.sum() < len(node)
     for name in names or KINDS:

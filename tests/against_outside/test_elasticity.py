@@ -72,8 +72,14 @@ def brick(kind: str = "hexahedra", n=(3, 3, 3)):
         mesh = quadratic(tetrahedra(block(2, 2, 2)))
     elif kind == "quadratic":
         mesh = quadratic(block(2, 2, 2))
-    return moved(mesh, lambda u, v, w: (1.3 * u * (1 + 0.2 * v - 0.1 * w), v * (1 - 0.2 * u * w),
-                                        0.8 * w * (1 + 0.15 * u * v)))
+    return moved(
+        mesh,
+        lambda u, v, w: (
+            1.3 * u * (1 + 0.2 * v - 0.1 * w),
+            v * (1 - 0.2 * u * w),
+            0.8 * w * (1 + 0.15 * u * v),
+        ),
+    )
 
 
 def far_corner(mesh):
@@ -84,9 +90,13 @@ def far_corner(mesh):
 
 def push(mesh) -> Floats:
     """A load of no symmetry, the sector's own share: a body force that varies in space."""
-    return body_force(mesh, lambda x: np.stack([
-        3.0 + np.sin(2 * x[..., 1]), -1.0 + x[..., 0] * x[..., 2], 2.0 * np.cos(x[..., 0])],
-        axis=-1))
+    return body_force(
+        mesh,
+        lambda x: np.stack(
+            [3.0 + np.sin(2 * x[..., 1]), -1.0 + x[..., 0] * x[..., 2], 2.0 * np.cos(x[..., 0])],
+            axis=-1,
+        ),
+    )
 
 
 def run(body: Body, tmp_path, load: Floats) -> None:
@@ -133,8 +143,10 @@ def test_half_load_on_one_side_only(tmp_path):
         load = body_force(body.mesh, force) + 0.5 * pull
         points, cells = fields_of(case.solve(load), body.about)
         model.values(name, points=points, cells=cells)
-    model.table(case=[{"name": "even"}, {"name": "odd", "load": {"p0": "antisymmetric"}}],
-                sum=[{"name": "all", "terms": {"even": 1.0, "odd": 1.0}}])
+    model.table(
+        case=[{"name": "even"}, {"name": "odd", "load": {"p0": "antisymmetric"}}],
+        sum=[{"name": "all", "terms": {"even": 1.0, "odd": 1.0}}],
+    )
     whole = model.expand("all")
 
     merged = body.whole()
@@ -143,7 +155,7 @@ def test_half_load_on_one_side_only(tmp_path):
     oracle = body.solve_whole(merged, load)
     linear = [name for name, words in KINDS.items() if words["kind"] != "invariant"]
     compare(whole, merged, oracle, body.about, names=linear)
-    assert "von_mises" not in whole.array_names      # not linear: left out of a sum
+    assert "von_mises" not in whole.array_names  # not linear: left out of a sum
     assert "energy_density" not in whole.array_names
 
 
@@ -169,10 +181,17 @@ def test_quarter_under_gravity_at_an_angle(tmp_path):
         load = body_force(body.mesh, (gravity @ direction) * direction)
         points, cells = fields_of(case.solve(load), body.about)
         model.values(name.replace(" ", "_"), points=points, cells=cells)
-    model.table(case=[{"name": name, "file": name.replace(" ", "_") + ".vtu",
-                       "load": body.with_parities(*words[:2]).loads()}
-                      for name, words in cases.items()],
-                sum=[{"name": "gravity", "terms": dict.fromkeys(cases, 1.0)}])
+    model.table(
+        case=[
+            {
+                "name": name,
+                "file": name.replace(" ", "_") + ".vtu",
+                "load": body.with_parities(*words[:2]).loads(),
+            }
+            for name, words in cases.items()
+        ],
+        sum=[{"name": "gravity", "terms": dict.fromkeys(cases, 1.0)}],
+    )
     whole = model.expand("gravity")
     merged = body.whole()
     oracle = body.solve_whole(merged, body_force(merged.mesh, gravity))
@@ -195,12 +214,23 @@ def wedge(m: int, to_axis: bool) -> Body:
     if to_axis:
         # Two sides of a skewed square lie in the planes, so its corner cells meet the axis.
         a, b = np.array([1.0, 0.0]), np.array([np.cos(np.pi / m), np.sin(np.pi / m)])
-        mesh = moved(block(*n), lambda u, v, w: (
-            a[0] * u * (1 + 0.2 * v) + b[0] * v, a[1] * u * (1 + 0.2 * v) + b[1] * v, 0.7 * w))
+        mesh = moved(
+            block(*n),
+            lambda u, v, w: (
+                a[0] * u * (1 + 0.2 * v) + b[0] * v,
+                a[1] * u * (1 + 0.2 * v) + b[1] * v,
+                0.7 * w,
+            ),
+        )
     else:
-        mesh = moved(quadratic(block(2, 2, 2)), lambda u, v, w: (
-            (0.5 + u + 0.1 * v * w) * np.cos(np.pi / m * v),
-            (0.5 + u + 0.1 * v * w) * np.sin(np.pi / m * v), 0.7 * w))
+        mesh = moved(
+            quadratic(block(2, 2, 2)),
+            lambda u, v, w: (
+                (0.5 + u + 0.1 * v * w) * np.cos(np.pi / m * v),
+                (0.5 + u + 0.1 * v * w) * np.sin(np.pi / m * v),
+                0.7 * w,
+            ),
+        )
     x = own(mesh.points)
     fixed = np.flatnonzero((x[:, 2] < 1e-9) & (np.hypot(x[:, 0], x[:, 1]) > 0.8))
     other = -np.sin(np.pi / m) * X + np.cos(np.pi / m) * Y
@@ -208,8 +238,9 @@ def wedge(m: int, to_axis: bool) -> Body:
 
 
 @pytest.mark.parametrize("to_axis", [False, True], ids=["ring", "axis"])
-@pytest.mark.parametrize(("m", "parities"), [(3, (1, 1)), (3, (-1, -1)), (4, (1, -1)),
-                                             (4, (-1, 1))], ids=str)
+@pytest.mark.parametrize(
+    ("m", "parities"), [(3, (1, 1)), (3, (-1, -1)), (4, (1, -1)), (4, (-1, 1))], ids=str
+)
 def test_wedge(tmp_path, m, parities, to_axis):
     """A wedge of 60 or 45 degrees between skew planes; at 45 degrees the parities may differ."""
     body = wedge(m, to_axis).with_parities(*parities)
@@ -218,9 +249,14 @@ def test_wedge(tmp_path, m, parities, to_axis):
 
 def ring(sectors: int, parity: int = 1) -> Body:
     """A sector with swept and twisted faces around a skew axis off the origin."""
-    mesh = moved(quadratic(block(2, 2, 2)), lambda u, v, w: (
-        (0.6 + u) * np.cos(2 * np.pi / sectors * v + 0.4 * u * u + 0.3 * w),
-        (0.6 + u) * np.sin(2 * np.pi / sectors * v + 0.4 * u * u + 0.3 * w), 0.9 * w + 0.1 * u))
+    mesh = moved(
+        quadratic(block(2, 2, 2)),
+        lambda u, v, w: (
+            (0.6 + u) * np.cos(2 * np.pi / sectors * v + 0.4 * u * u + 0.3 * w),
+            (0.6 + u) * np.sin(2 * np.pi / sectors * v + 0.4 * u * u + 0.3 * w),
+            0.9 * w + 0.1 * u,
+        ),
+    )
     bore = np.flatnonzero(np.hypot(*own(mesh.points)[:, :2].T) < 0.6 + 1e-9)
     cyclic = Cyclic(sectors, Z, SHIFT - 2.0 * Z, parity)
     return Body(mesh, bore, cyclic=cyclic, about=SHIFT)
@@ -228,15 +264,17 @@ def ring(sectors: int, parity: int = 1) -> Body:
 
 def swirl(mesh) -> Floats:
     """Around the axis, outwards and along, with a body force that varies within the sector."""
+
     def density(x):
         out, around, along = np.moveaxis(
-            polar_basis(x.reshape(-1, 3), Z, SHIFT).reshape(*x.shape, 3), -2, 0)
+            polar_basis(x.reshape(-1, 3), Z, SHIFT).reshape(*x.shape, 3), -2, 0
+        )
         return (3 + x[..., :1]) * around + 2.0 * out + (1 + x[..., 1:2]) * along
+
     return body_force(mesh, density)
 
 
-@pytest.mark.parametrize(("sectors", "parity"), [(5, 1), (6, 1), (6, -1), (2, 1), (2, -1),
-                                                 (3, 1)])
+@pytest.mark.parametrize(("sectors", "parity"), [(5, 1), (6, 1), (6, -1), (2, 1), (2, -1), (3, 1)])
 def test_ring(tmp_path, sectors, parity):
     """A cyclic sector under a swirl, h = 0 and h = N/2; curved seams, skew axis."""
     body = ring(sectors, parity)
@@ -252,9 +290,10 @@ def test_ring_with_every_second_sector_loaded(tmp_path):
         model = model or declare(body.model(tmp_path))
         points, cells = fields_of(body.solve(0.5 * load), body.about)
         model.values(name, points=points, cells=cells)
-    model.table(case=[{"name": "all", "nodal_diameters": 0},
-                      {"name": "alternating", "nodal_diameters": 3}],
-                sum=[{"name": "every second", "terms": {"all": 1.0, "alternating": 1.0}}])
+    model.table(
+        case=[{"name": "all", "nodal_diameters": 0}, {"name": "alternating", "nodal_diameters": 3}],
+        sum=[{"name": "every second", "terms": {"all": 1.0, "alternating": 1.0}}],
+    )
     whole = model.expand("every second")
     body = ring(6)
     merged = body.whole()
@@ -272,25 +311,38 @@ def test_sector_that_reaches_its_axis(tmp_path, sectors, parity):
     """Nodes on the axis belong to all copies; a twisted block cut by its seams at the axis."""
     wide = {4: (0.0, 1.0), 2: (-1.0, 2.0)}[sectors]
     n = (3, 3, 2) if sectors == 4 else (4, 2, 2)
-    mesh = moved(block(*n), lambda u, v, w: (
-        (wide[0] + wide[1] * u) * np.cos(0.5 * w) - v * np.sin(0.5 * w),
-        (wide[0] + wide[1] * u) * np.sin(0.5 * w) + v * np.cos(0.5 * w), 0.8 * w))
-    low = np.flatnonzero((own(mesh.points)[:, 2] < 1e-9)
-                         & (np.hypot(*own(mesh.points)[:, :2].T) > 0.6))
+    mesh = moved(
+        block(*n),
+        lambda u, v, w: (
+            (wide[0] + wide[1] * u) * np.cos(0.5 * w) - v * np.sin(0.5 * w),
+            (wide[0] + wide[1] * u) * np.sin(0.5 * w) + v * np.cos(0.5 * w),
+            0.8 * w,
+        ),
+    )
+    low = np.flatnonzero(
+        (own(mesh.points)[:, 2] < 1e-9) & (np.hypot(*own(mesh.points)[:, :2].T) > 0.6)
+    )
     body = Body(mesh, low, cyclic=Cyclic(sectors, Z, SHIFT, parity), about=SHIFT)
     run(body, tmp_path, push(mesh))
 
 
-@pytest.mark.parametrize(("sectors", "plane", "turn"), [(5, 1, 1), (5, -1, 1), (4, 1, 1),
-                                                        (4, 1, -1), (4, -1, -1)])
+@pytest.mark.parametrize(
+    ("sectors", "plane", "turn"), [(5, 1, 1), (5, -1, 1), (4, 1, 1), (4, 1, -1), (4, -1, -1)]
+)
 def test_half_sectors(tmp_path, sectors, plane, turn):
     """A sector halved by a plane through its axis, h = 0 and h = N/2: 2 N copies."""
     mesh = wedge(sectors, False).mesh
     x = own(mesh.points)
     fixed = np.flatnonzero((x[:, 2] < 1e-9) & (np.hypot(x[:, 0], x[:, 1]) > 0.8))
     other = -np.sin(np.pi / sectors) * X + np.cos(np.pi / sectors) * Y
-    body = Body(mesh, fixed, [CutPlane(Y, SHIFT, plane), CutPlane(other, SHIFT, plane * turn)],
-                Cyclic(sectors, Z, SHIFT, turn), SHIFT, halves=True)
+    body = Body(
+        mesh,
+        fixed,
+        [CutPlane(Y, SHIFT, plane), CutPlane(other, SHIFT, plane * turn)],
+        Cyclic(sectors, Z, SHIFT, turn),
+        SHIFT,
+        halves=True,
+    )
     assert len(body.copies) == 2 * sectors
     run(body, tmp_path, push(mesh))
 
@@ -299,9 +351,14 @@ def test_half_sectors(tmp_path, sectors, plane, turn):
 def test_ring_cut_across_its_axis(tmp_path, turn, plane):
     """A cyclic sector and a plane normal to the axis: the ring is doubled."""
     sectors = 4
-    mesh = moved(quadratic(block(2, 2, 2)), lambda u, v, w: (
-        (0.6 + u) * np.cos(2 * np.pi / sectors * v + 0.4 * u * u + 0.3 * w),
-        (0.6 + u) * np.sin(2 * np.pi / sectors * v + 0.4 * u * u + 0.3 * w), 0.9 * w))
+    mesh = moved(
+        quadratic(block(2, 2, 2)),
+        lambda u, v, w: (
+            (0.6 + u) * np.cos(2 * np.pi / sectors * v + 0.4 * u * u + 0.3 * w),
+            (0.6 + u) * np.sin(2 * np.pi / sectors * v + 0.4 * u * u + 0.3 * w),
+            0.9 * w,
+        ),
+    )
     bore = np.flatnonzero(np.hypot(*own(mesh.points)[:, :2].T) < 0.6 + 1e-9)
     body = Body(mesh, bore, [CutPlane(Z, SHIFT, plane)], Cyclic(sectors, Z, SHIFT, turn), SHIFT)
     run(body, tmp_path, swirl(mesh))
@@ -313,22 +370,25 @@ def test_heat(tmp_path, parity):
     body = half("quadratic").with_parities(parity)
     body.material = type(body.material)(body.material.young, 0.3, 1.2e-5)
     heat = np.abs(push(body.mesh)[:, 0])
-    solution_T = solve_temperature(body.mesh, 45.0, heat, planes=body.planes,
-                                   fixed=[_cold(body.fixed)])
+    solution_T = solve_temperature(
+        body.mesh, 45.0, heat, planes=body.planes, fixed=[_cold(body.fixed)]
+    )
     load = push(body.mesh)
     solution = body.solve(load, solution_T)
     points, cells = fields_of(solution, body.about)
     model = declare(body.model(tmp_path))
     model.field("T", "scalar").field("slope", "polar vector")
-    whole = model.values(points={**points, "T": solution_T},
-                         cells={**cells, "slope": _slope(body.mesh, solution_T)}).expand()
+    whole = model.values(
+        points={**points, "T": solution_T}, cells={**cells, "slope": _slope(body.mesh, solution_T)}
+    ).expand()
 
     merged = body.whole()
     all_heat = np.zeros(len(merged.mesh.points))
     for (_, _, chi), node in zip(body.copies, merged.node, strict=True):
         np.add.at(all_heat, node, chi * heat)
-    everywhere = solve_temperature(merged.mesh, 45.0, all_heat,
-                                   fixed=[_cold(merged.node[:, body.fixed].ravel())])
+    everywhere = solve_temperature(
+        merged.mesh, 45.0, all_heat, fixed=[_cold(merged.node[:, body.fixed].ravel())]
+    )
     oracle = body.solve_whole(merged, body.whole_load(merged, load), everywhere)
     compare(whole, merged, oracle, body.about)
     node, cell = rows(whole, merged)
@@ -348,12 +408,12 @@ def _slope(mesh, temperature) -> Floats:
 
 # --- storage ------------------------------------------------------------------------------------
 
+
 def ring_and_oracle(parity: int = 1):
     body = ring(6, parity)
     load = swirl(body.mesh)
     merged = body.whole()
-    return (body, body.solve(load), merged,
-            body.solve_whole(merged, body.whole_load(merged, load)))
+    return (body, body.solve(load), merged, body.solve_whole(merged, body.whole_load(merged, load)))
 
 
 def test_shuffled_components(tmp_path):
@@ -369,21 +429,35 @@ def test_shuffled_components(tmp_path):
     u, w = solution.displacement, solution.rotation
     model = body.model(tmp_path)
     model.field("stress", "symmetric tensor", components=order, seam="recovered")
-    model.field("strain", "symmetric tensor", components=order, shear="engineering",
-                seam="recovered")
-    model.field("parts", "symmetric tensor", components=order, seam="recovered",
-                arrays=[f"S_{name}" for name in order.split()])
+    model.field(
+        "strain", "symmetric tensor", components=order, shear="engineering", seam="recovered"
+    )
+    model.field(
+        "parts",
+        "symmetric tensor",
+        components=order,
+        seam="recovered",
+        arrays=[f"S_{name}" for name in order.split()],
+    )
     model.field("u", "polar vector", arrays=["UX", "UY", "UZ"])
     model.field("turn", "axial vector", arrays=["RX", "RY", "RZ"], seam="recovered")
-    model.field("cells", "symmetric tensor", components=order,
-                arrays=[f"C_{name}" for name in order.split()])
+    model.field(
+        "cells",
+        "symmetric tensor",
+        components=order,
+        arrays=[f"C_{name}" for name in order.split()],
+    )
     cell_stress = stored(full_tensor(solution.cell_stress), order)
-    model.values(points={
-        "stress": stress, "strain": strain,
-        **{f"S_{name}": stress[:, i].copy() for i, name in enumerate(order.split())},
-        **{f"U{name}": u[:, i].copy() for i, name in enumerate("XYZ")},
-        **{f"R{name}": w[:, i].copy() for i, name in enumerate("XYZ")}},
-        cells={f"C_{name}": cell_stress[:, i].copy() for i, name in enumerate(order.split())})
+    model.values(
+        points={
+            "stress": stress,
+            "strain": strain,
+            **{f"S_{name}": stress[:, i].copy() for i, name in enumerate(order.split())},
+            **{f"U{name}": u[:, i].copy() for i, name in enumerate("XYZ")},
+            **{f"R{name}": w[:, i].copy() for i, name in enumerate("XYZ")},
+        },
+        cells={f"C_{name}": cell_stress[:, i].copy() for i, name in enumerate(order.split())},
+    )
     whole = model.expand()
     node, cell = rows(whole, merged)
     expected_stress, expected_strain = shuffled(oracle)
@@ -395,8 +469,9 @@ def test_shuffled_components(tmp_path):
     assert miss(whole["cells"], stored(full_tensor(oracle.cell_stress), order)[cell]) < SOLVED
 
 
-@pytest.mark.parametrize("body", [half("quadratic"), ring(6, -1), wedge(3, True)],
-                         ids=["half", "ring", "wedge"])
+@pytest.mark.parametrize(
+    "body", [half("quadratic"), ring(6, -1), wedge(3, True)], ids=["half", "ring", "wedge"]
+)
 def test_single_precision(tmp_path, body):
     """Coordinates and results in single precision, and they stay so.
 
@@ -407,8 +482,10 @@ def test_single_precision(tmp_path, body):
     points, cells = fields_of(body.solve(load), body.about)
     model = declare(body.model(tmp_path))
     model.points = body.mesh.points.astype(np.float32)
-    model.values(points={name: v.astype(np.float32) for name, v in points.items()},
-                 cells={name: v.astype(np.float32) for name, v in cells.items()})
+    model.values(
+        points={name: v.astype(np.float32) for name, v in points.items()},
+        cells={name: v.astype(np.float32) for name, v in cells.items()},
+    )
     whole = model.expand()
     assert whole.points.dtype == np.float32
     assert all(whole[name].dtype == np.float32 for name in KINDS)
@@ -440,8 +517,14 @@ def test_cylindrical_frames(tmp_path, which, frame):
         mesh = wedge(5, False).mesh
         fixed = wedge(5, False).fixed
         other = -np.sin(np.pi / 5) * X + np.cos(np.pi / 5) * Y
-        body = Body(mesh, fixed, [CutPlane(Y, SHIFT, -1), CutPlane(other, SHIFT, -1)],
-                    Cyclic(5, Z, SHIFT), SHIFT, halves=True)
+        body = Body(
+            mesh,
+            fixed,
+            [CutPlane(Y, SHIFT, -1), CutPlane(other, SHIFT, -1)],
+            Cyclic(5, Z, SHIFT),
+            SHIFT,
+            halves=True,
+        )
     elif which == "half":
         mesh = wedge(2, False).mesh
         body = Body(mesh, wedge(2, False).fixed, [CutPlane(Y, SHIFT, -1)], about=SHIFT)
@@ -457,8 +540,8 @@ def test_cylindrical_frames(tmp_path, which, frame):
             "u": in_frame(x, axis, point, s.displacement),
             "w": in_frame(x, axis, point, s.rotation),
             "s": in_frame(x, axis, point, six_components=s.nodal_stress),
-            "e": in_frame(x, axis, point, six_components=s.nodal_strain
-                          * [1, 1, 1, 0.5, 0.5, 0.5]) * [1, 1, 1, 2, 2, 2],
+            "e": in_frame(x, axis, point, six_components=s.nodal_strain * [1, 1, 1, 0.5, 0.5, 0.5])
+            * [1, 1, 1, 2, 2, 2],
             "f": in_frame(x, axis, point, s.external_force),
             "r": in_frame(x, axis, point, s.reaction),
         }
@@ -468,8 +551,9 @@ def test_cylindrical_frames(tmp_path, which, frame):
     model.field("u", "polar vector", **words)
     model.field("w", "axial vector", seam="recovered", **words)
     model.field("s", "symmetric tensor", components=SIX, seam="recovered", **words)
-    model.field("e", "symmetric tensor", components=SIX, shear="engineering", seam="recovered",
-                **words)
+    model.field(
+        "e", "symmetric tensor", components=SIX, shear="engineering", seam="recovered", **words
+    )
     model.field("f", "polar vector", seam="sum", **words)
     model.field("r", "polar vector", seam="sum", **words)
     model.table(frames={"F": {"type": "cylindrical", "axis": axis, "point": point}})

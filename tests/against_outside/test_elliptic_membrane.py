@@ -21,7 +21,7 @@ from tests.against_outside.bodies import Floats, Ints, Model, miss, quads, rows_
 
 YOUNG, NU, THICKNESS, PRESSURE = 210e3, 0.3, 0.1, 10.0
 TARGET = 92.7
-AROUND, ACROSS = 12, 8               # cells of the quarter
+AROUND, ACROSS = 12, 8  # cells of the quarter
 
 
 def plate(around: int, across: int, angle: float) -> tuple[Floats, Ints]:
@@ -31,7 +31,7 @@ def plate(around: int, across: int, angle: float) -> tuple[Floats, Ints]:
     points = np.stack([(2.0 + 1.25 * s) * np.cos(a), (1.0 + 1.75 * s) * np.sin(a)], axis=1)
     if angle < 2 * np.pi:
         return points, cells
-    last = 2 * around                # grid lines v = 0 and v = 1 are one line
+    last = 2 * around  # grid lines v = 0 and v = 1 are one line
     number = np.arange(len(points))
     number -= np.where(number % (last + 1) == last, last, 0)
     kept, cells = np.unique(number[cells], return_inverse=True)
@@ -46,7 +46,7 @@ class Solved:
         mesh = skfem.MeshQuad2(points.T, cells.T)
         element = skfem.ElementVector(skfem.ElementQuad2())
         basis = skfem.Basis(mesh, element, intorder=6)
-        lam, mu = YOUNG * NU / (1 - NU**2), YOUNG / (2 * (1 + NU))   # plane stress
+        lam, mu = YOUNG * NU / (1 - NU**2), YOUNG / (2 * (1 + NU))  # plane stress
 
         def stress(strain):
             return 2 * mu * strain + lam * eye(trace(strain), 2)
@@ -60,7 +60,8 @@ class Solved:
             return THICKNESS * PRESSURE * dot(w.n, v)
 
         outer = mesh.facets_satisfying(
-            lambda x: (x[0] / 3.25) ** 2 + (x[1] / 2.75) ** 2 > 0.9, boundaries_only=True)
+            lambda x: (x[0] / 3.25) ** 2 + (x[1] / 2.75) ** 2 > 0.9, boundaries_only=True
+        )
         edge = skfem.FacetBasis(mesh, element, facets=outer, intorder=6)
         stiffness, load = work.assemble(basis), push.assemble(edge)
         # Unknown of each node and component, found by place.
@@ -70,7 +71,7 @@ class Solved:
         free = np.setdiff1d(np.arange(basis.N), fixed)
         u = np.zeros(basis.N)
         u[free] = spsolve(stiffness[free][:, free], load[free])
-        for _ in range(2):           # takes the round-off of the factorisation off
+        for _ in range(2):  # takes the round-off of the factorisation off
             u[free] += spsolve(stiffness[free][:, free], (load - stiffness @ u)[free])
         self.displacement = u[unknown]
         self.force = load[unknown]
@@ -78,11 +79,16 @@ class Solved:
         corners = np.array([[0, 1, 1, 0, 0.5, 1, 0.5, 0, 0.5], [0, 0, 1, 1, 0, 0.5, 1, 0.5, 0.5]])
         at_nodes = skfem.Basis(mesh, element, quadrature=(corners, np.ones(9)))
         gradient = at_nodes.interpolate(u).grad
-        values = stress(0.5 * (gradient + gradient.swapaxes(0, 1)))       # (2, 2, cells, 9)
+        values = stress(0.5 * (gradient + gradient.swapaxes(0, 1)))  # (2, 2, cells, 9)
         parts = np.stack([values[0, 0], values[1, 1], values[0, 1]], axis=-1)
         count = np.bincount(cells.ravel(), minlength=len(points))
-        self.stress = np.stack([np.bincount(cells.ravel(), parts[..., c].ravel(), len(points))
-                                for c in range(3)], axis=1) / count[:, None]
+        self.stress = (
+            np.stack(
+                [np.bincount(cells.ravel(), parts[..., c].ravel(), len(points)) for c in range(3)],
+                axis=1,
+            )
+            / count[:, None]
+        )
         self.cell_stress = parts[:, 8]
 
     def at(self, x: float, y: float) -> int:
@@ -94,8 +100,9 @@ def quarter() -> Solved:
     points, cells = plate(AROUND, ACROSS, np.pi / 2)
     on_x = np.flatnonzero(np.abs(points[:, 1]) < 1e-9)
     on_y = np.flatnonzero(np.abs(points[:, 0]) < 1e-9)
-    return Solved(points, cells, np.concatenate([on_x, on_y]),
-                  np.repeat([1, 0], [len(on_x), len(on_y)]))
+    return Solved(
+        points, cells, np.concatenate([on_x, on_y]), np.repeat([1, 0], [len(on_x), len(on_y)])
+    )
 
 
 @cache
@@ -112,8 +119,9 @@ def test_the_solver_reaches_the_benchmark():
     assert model.stress[model.at(2, 0), 1] == pytest.approx(TARGET, rel=0.005)
 
 
-@pytest.mark.parametrize(("order", "columns"), [("xx yy xy", [0, 1, 2]),
-                                                ("xx yy zz xy", [0, 1, None, 2])])
+@pytest.mark.parametrize(
+    ("order", "columns"), [("xx yy xy", [0, 1, 2]), ("xx yy zz xy", [0, 1, None, 2])]
+)
 def test_quarter_expanded_equals_the_whole_plate(tmp_path, order, columns):
     """LE1: displacement, stress and nodal force of the expanded quarter against the whole plate.
 
@@ -123,8 +131,9 @@ def test_quarter_expanded_equals_the_whole_plate(tmp_path, order, columns):
     model, oracle = quarter(), whole_plate()
 
     def widen(stress):
-        return np.stack([np.zeros(len(stress)) if c is None else stress[:, c] for c in columns],
-                        axis=1)
+        return np.stack(
+            [np.zeros(len(stress)) if c is None else stress[:, c] for c in columns], axis=1
+        )
 
     flat = np.column_stack([model.points, np.zeros(len(model.points))])
     body = Model(tmp_path, flat, {28: model.cells})
@@ -132,9 +141,14 @@ def test_quarter_expanded_equals_the_whole_plate(tmp_path, order, columns):
     body.field("stress", "symmetric tensor", components=order, seam="recovered")
     body.field("cell_stress", "symmetric tensor", components=order)
     body.field("force", "polar vector", seam="sum")
-    body.values(points={"displacement": model.displacement, "stress": widen(model.stress),
-                        "force": model.force},
-                cells={"cell_stress": widen(model.cell_stress)})
+    body.values(
+        points={
+            "displacement": model.displacement,
+            "stress": widen(model.stress),
+            "force": model.force,
+        },
+        cells={"cell_stress": widen(model.cell_stress)},
+    )
     body.table(mirror=[{"normal": "x"}, {"normal": "y"}])
     whole = body.expand()
 
@@ -151,5 +165,4 @@ def test_quarter_expanded_equals_the_whole_plate(tmp_path, order, columns):
     left = np.linalg.norm(whole.points - [-2, 0, 0], axis=1).argmin()
     assert whole["stress"][left, yy] == pytest.approx(whole["stress"][right, yy], rel=1e-14)
     assert whole["stress"][right, yy] == pytest.approx(TARGET, rel=0.005)
-    assert whole["stress"][right, yy] == pytest.approx(oracle.stress[oracle.at(2, 0), 1],
-                                                       rel=1e-10)
+    assert whole["stress"][right, yy] == pytest.approx(oracle.stress[oracle.at(2, 0), 1], rel=1e-10)

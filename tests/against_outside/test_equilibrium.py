@@ -65,7 +65,7 @@ def resultant(grid, name, about) -> tuple[Floats, Floats]:
 
 # --- a block standing on its foot ---------------------------------------------------------------
 
-WIDE, DEEP, HIGH = 0.9, 0.7, 1.1     # of the modelled quarter
+WIDE, DEEP, HIGH = 0.9, 0.7, 1.1  # of the modelled quarter
 
 
 def quarter_block(parities=(1, 1)) -> Body:
@@ -75,17 +75,21 @@ def quarter_block(parities=(1, 1)) -> Body:
     return Body(mesh, foot, planes, about=SHIFT)
 
 
-@pytest.mark.parametrize(("parities", "traction", "force", "moment"), [
-    # Pressure on the top: the whole top 2 WIDE x 2 DEEP pushes down; no moment about the axis.
-    ((1, 1), -Z, (0, 0, -4 * WIDE * DEEP), (0, 0, 0)),
-    # Shear along x, antisymmetric in the plane x = 0: sums over the top at height HIGH.
-    ((-1, 1), X, (4 * WIDE * DEEP, 0, 0), (0, 4 * WIDE * DEEP * HIGH, 0)),
-    ((1, -1), Y, (0, 4 * WIDE * DEEP, 0), (-4 * WIDE * DEEP * HIGH, 0, 0)),
-    # Pull up on one side, push down on the other: four quarters at the mean arm WIDE / 2.
-    ((-1, 1), Z, (0, 0, 0), (0, -4 * WIDE * DEEP * WIDE / 2, 0)),
-    # Along x for y > 0, back for y < 0: torque about z, four quarters at the mean arm DEEP / 2.
-    ((-1, -1), X, (0, 0, 0), (0, 0, -4 * WIDE * DEEP * DEEP / 2)),
-], ids=["press", "shear x", "shear y", "tilt", "twist"])
+@pytest.mark.parametrize(
+    ("parities", "traction", "force", "moment"),
+    [
+        # Pressure on the top: the whole top 2 WIDE x 2 DEEP pushes down; no moment about the axis.
+        ((1, 1), -Z, (0, 0, -4 * WIDE * DEEP), (0, 0, 0)),
+        # Shear along x, antisymmetric in the plane x = 0: sums over the top at height HIGH.
+        ((-1, 1), X, (4 * WIDE * DEEP, 0, 0), (0, 4 * WIDE * DEEP * HIGH, 0)),
+        ((1, -1), Y, (0, 4 * WIDE * DEEP, 0), (-4 * WIDE * DEEP * HIGH, 0, 0)),
+        # Pull up on one side, push down on the other: four quarters at the mean arm WIDE / 2.
+        ((-1, 1), Z, (0, 0, 0), (0, -4 * WIDE * DEEP * WIDE / 2, 0)),
+        # Along x for y > 0, back for y < 0: torque about z, four quarters at the mean arm DEEP / 2.
+        ((-1, -1), X, (0, 0, 0), (0, 0, -4 * WIDE * DEEP * DEEP / 2)),
+    ],
+    ids=["press", "shear x", "shear y", "tilt", "twist"],
+)
 def test_block_under_traction(tmp_path, parities, traction, force, moment):
     """Quarter of a block: load totals and reactions by hand, in a skew system."""
     body = quarter_block(parities)
@@ -115,36 +119,57 @@ def test_block_mass(tmp_path, parities):
 
 # --- energy and seam reactions, all groups ------------------------------------------------------
 
+
 def ring(sectors: int, parity: int, around: int = 2) -> Body:
-    mesh = in_skew(quadratic(block(2, around, 2)), lambda u, v, w: (
-        (0.6 + u) * np.cos(2 * np.pi / sectors * v + 0.4 * u * u + 0.3 * w),
-        (0.6 + u) * np.sin(2 * np.pi / sectors * v + 0.4 * u * u + 0.3 * w), 0.9 * w))
+    mesh = in_skew(
+        quadratic(block(2, around, 2)),
+        lambda u, v, w: (
+            (0.6 + u) * np.cos(2 * np.pi / sectors * v + 0.4 * u * u + 0.3 * w),
+            (0.6 + u) * np.sin(2 * np.pi / sectors * v + 0.4 * u * u + 0.3 * w),
+            0.9 * w,
+        ),
+    )
     rim = np.linalg.norm(np.cross(mesh.points - SHIFT, Z), axis=1)
-    return Body(mesh, np.flatnonzero(rim < 0.6 + 1e-9), cyclic=Cyclic(sectors, Z, SHIFT, parity),
-                about=SHIFT)
+    return Body(
+        mesh,
+        np.flatnonzero(rim < 0.6 + 1e-9),
+        cyclic=Cyclic(sectors, Z, SHIFT, parity),
+        about=SHIFT,
+    )
 
 
 def half_sectors(sectors: int, plane: int) -> Body:
     angle = np.pi / sectors
-    mesh = in_skew(quadratic(block(2, 2, 2)), lambda u, v, w: (
-        (0.6 + u) * np.cos(angle * v), (0.6 + u) * np.sin(angle * v), 0.9 * w))
+    mesh = in_skew(
+        quadratic(block(2, 2, 2)),
+        lambda u, v, w: ((0.6 + u) * np.cos(angle * v), (0.6 + u) * np.sin(angle * v), 0.9 * w),
+    )
     rim = np.linalg.norm(np.cross(mesh.points - SHIFT, Z), axis=1)
     other = -np.sin(angle) * X + np.cos(angle) * Y
-    return Body(mesh, np.flatnonzero(rim < 0.6 + 1e-9),
-                [CutPlane(Y, SHIFT, plane), CutPlane(other, SHIFT, plane)],
-                Cyclic(sectors, Z, SHIFT), SHIFT, halves=True)
+    return Body(
+        mesh,
+        np.flatnonzero(rim < 0.6 + 1e-9),
+        [CutPlane(Y, SHIFT, plane), CutPlane(other, SHIFT, plane)],
+        Cyclic(sectors, Z, SHIFT),
+        SHIFT,
+        halves=True,
+    )
 
 
-BODIES = pytest.mark.parametrize(("body", "count"), [
-    (quarter_block((1, -1)), 4), (ring(7, 1), 7), (ring(6, -1), 6), (half_sectors(5, -1), 10)],
-    ids=["quarter", "ring", "alternating ring", "half-sectors"])
+BODIES = pytest.mark.parametrize(
+    ("body", "count"),
+    [(quarter_block((1, -1)), 4), (ring(7, 1), 7), (ring(6, -1), 6), (half_sectors(5, -1), 10)],
+    ids=["quarter", "ring", "alternating ring", "half-sectors"],
+)
 
 
 @BODIES
 def test_energy_and_reactions(tmp_path, body, count):
     """Energy is |G| times the sector's; reactions of the seam conditions cancel; equilibrium."""
-    load = body_force(body.mesh, lambda x: np.stack(
-        [1 + x[..., 1], 2 - x[..., 0] * x[..., 2], np.sin(x[..., 0])], axis=-1))
+    load = body_force(
+        body.mesh,
+        lambda x: np.stack([1 + x[..., 1], 2 - x[..., 0] * x[..., 2], np.sin(x[..., 0])], axis=-1),
+    )
     whole, solution = expanded(tmp_path, body, load)
 
     # Half the work of the loads on the whole body; supports and seam conditions do none.
@@ -194,7 +219,8 @@ def test_ring_torque_by_hand(tmp_path):
     assert moment @ Z == pytest.approx(torque, rel=5e-5)
     assert moment @ Z == pytest.approx(
         7 * np.cross(solution.mesh.points - SHIFT, solution.external_force).sum(axis=0) @ Z,
-        rel=1e-12)
+        rel=1e-12,
+    )
     assert miss(moment - (moment @ Z) * Z, np.zeros(3), torque) < 1e-12
     assert miss(force, np.zeros(3), torque) < 1e-12
     assert whole["mass"].sum() == pytest.approx(7.8 * np.pi * (b**2 - a**2) * length, rel=5e-5)
@@ -209,8 +235,10 @@ def test_first_plus_second_face(tmp_path):
     mass = whole["mass"].reshape(-1)
     for a, b in zip(first, second, strict=True):
         both = own[a] + own[b]
-        assert miss(mass[whole["sector_point"] == a], both + 0 * mass[whole["sector_point"] == a]
-                    ) < 1e-12
+        assert (
+            miss(mass[whole["sector_point"] == a], both + 0 * mass[whole["sector_point"] == a])
+            < 1e-12
+        )
     assert mass.sum() == pytest.approx(7 * own.sum(), rel=1e-12)
 
 
@@ -230,7 +258,8 @@ def test_solid_beam_from_an_eighth(tmp_path):
     Roark's figure, so that one is met within half a per cent.
     """
     mesh = quadratic(block(15, 1, 2)).mapped(
-        lambda u, v, w: (LONG / 2 * u, SIDE / 2 * v, SIDE / 2 * w))
+        lambda u, v, w: (LONG / 2 * u, SIDE / 2 * v, SIDE / 2 * w)
+    )
     x = mesh.points[:, 0]
     planes = [CutPlane((1, 0, 0)), CutPlane((0, 1, 0)), CutPlane((0, 0, 1), parity=-1)]
     middle = np.abs(x) < 1e-9
@@ -243,10 +272,15 @@ def test_solid_beam_from_an_eighth(tmp_path):
     model.field("displacement", "polar vector").field("force", "polar vector", seam="sum")
     model.field("reaction", "polar vector", seam="sum")
     model.field("stress", "symmetric tensor", components="xx yy zz xy yz zx", seam="recovered")
-    model.values(points={"displacement": solution.displacement, "force": load,
-                         "reaction": solution.reaction, "stress": solution.nodal_stress})
-    model.table(mirror=[{"normal": "x"}, {"normal": "y"},
-                        {"normal": "z", "load": "antisymmetric"}])
+    model.values(
+        points={
+            "displacement": solution.displacement,
+            "force": load,
+            "reaction": solution.reaction,
+            "stress": solution.nodal_stress,
+        }
+    )
+    model.table(mirror=[{"normal": "x"}, {"normal": "y"}, {"normal": "z", "load": "antisymmetric"}])
     whole = model.expand()
     x = whole.points[:, 0]
     deflection = whole["displacement"][np.abs(x) < 1e-9, 2]
@@ -281,7 +315,7 @@ def test_beam_formula_on_lines(tmp_path):
     """
     s = LONG * np.linspace(0, 0.5, 9)
 
-    def deflection(x):      # against the guided ends; P L^3/(192 E I) in the middle
+    def deflection(x):  # against the guided ends; P L^3/(192 E I) in the middle
         a = np.abs(x) / LONG
         return P * LONG**3 / (192 * E * INERTIA) * (1 - 12 * a**2 + 16 * a**3)
 
@@ -292,16 +326,21 @@ def test_beam_formula_on_lines(tmp_path):
     zero = 0 * s
     force, moment = np.zeros((9, 3)), np.zeros((9, 3))
     force[0], force[-1] = (0, 0, P / 2), (0, 0, -P / 2)
-    moment[-1, 1] = -P * LONG / 8            # of the guide at the end, on the beam
-    moment[0, 1] = -P * LONG / 8             # of the cut plane, which cancels
+    moment[-1, 1] = -P * LONG / 8  # of the guide at the end, on the beam
+    moment[0, 1] = -P * LONG / 8  # of the cut plane, which cancels
     points = np.stack([s, zero, zero], axis=1)
     lines = np.stack([np.arange(8), np.arange(1, 9)], axis=1)
     model = Model(tmp_path, points, {3: lines})
     model.field("u", "polar vector").field("turn", "axial vector")
     model.field("force", "polar vector", seam="sum").field("moment", "axial vector", seam="sum")
-    model.values(points={
-        "u": np.stack([zero, zero, deflection(s)], axis=1),
-        "turn": np.stack([zero, -slope(s), zero], axis=1), "force": force, "moment": moment})
+    model.values(
+        points={
+            "u": np.stack([zero, zero, deflection(s)], axis=1),
+            "turn": np.stack([zero, -slope(s), zero], axis=1),
+            "force": force,
+            "moment": moment,
+        }
+    )
     model.table(mirror=[{"normal": "x"}])
     whole = model.expand()
     x = whole.points[:, 0]

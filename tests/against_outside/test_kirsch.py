@@ -30,7 +30,7 @@ from tests.against_outside.bodies import (
     turned,
 )
 
-A, S = 1.5, 80.0                     # radius of the hole; remote tension
+A, S = 1.5, 80.0  # radius of the hole; remote tension
 YOUNG, POISSON = 70e3, 0.33
 G = YOUNG / (2 * (1 + POISSON))
 KAPPA = (3 - POISSON) / (1 + POISSON)
@@ -61,16 +61,21 @@ def shear(points: Floats, tau: float) -> Floats:
     """(n, 3, 3) stress under a remote shear stress tau_xy: tension at 45 less that at -45."""
     r, theta = np.hypot(points[:, 0], points[:, 1]), np.arctan2(points[:, 1], points[:, 0])
     q, c, s = (A / r) ** 2, np.cos(2 * theta), np.sin(2 * theta)
-    return in_plane(tau * (1 - 4 * q + 3 * q**2) * s, -tau * (1 + 3 * q**2) * s,
-                    tau * (1 + 2 * q - 3 * q**2) * c, theta)
+    return in_plane(
+        tau * (1 - 4 * q + 3 * q**2) * s,
+        -tau * (1 + 3 * q**2) * s,
+        tau * (1 + 2 * q - 3 * q**2) * c,
+        theta,
+    )
 
 
 def polar_motion(r, theta, angle, cos, sin):
     """Displacement outwards and around (Sadd, example 8.7), with cos and sin of the caller."""
     c, s = cos(2 * (theta - angle)), sin(2 * (theta - angle))
     f = S * A / (8 * G)
-    out = f * (r / A * (KAPPA - 1 + 2 * c) + 2 * A / r * (1 + (KAPPA + 1) * c)
-               - 2 * A**3 / r**3 * c)
+    out = f * (
+        r / A * (KAPPA - 1 + 2 * c) + 2 * A / r * (1 + (KAPPA + 1) * c) - 2 * A**3 / r**3 * c
+    )
     around = f * (-2 * r / A - 2 * A / r * (KAPPA - 1) - 2 * A**3 / r**3) * s
     return out, around
 
@@ -101,8 +106,12 @@ def quarter(solid: bool = True):
     """Nodes and cells of the quarter ring x, y >= 0: 20-node hexahedra, or flat 4-node ones."""
     if solid:
         mesh = quadratic(block(3, 6, 2)).mapped(
-            lambda u, v, w: ((A + 3 * u**1.5) * np.cos(np.pi / 2 * v),
-                             (A + 3 * u**1.5) * np.sin(np.pi / 2 * v), 0.4 * w))
+            lambda u, v, w: (
+                (A + 3 * u**1.5) * np.cos(np.pi / 2 * v),
+                (A + 3 * u**1.5) * np.sin(np.pi / 2 * v),
+                0.4 * w,
+            )
+        )
         return mesh.points, {25: mesh.cells}
     grid, cells = quads(6, 12)
     r, theta = A + 3 * grid[:, 0], np.pi / 2 * grid[:, 1]
@@ -122,9 +131,15 @@ def test_the_displacement_belongs_to_the_stress():
     e_tt = (sympy.diff(around, t) + out) / r
     g_rt = sympy.diff(out, t) / r + sympy.diff(around, r) - around / r
     turn = (sympy.diff(r * around, r) - sympy.diff(out, t)) / (2 * r)
-    evaluate = sympy.lambdify((r, t), [
-        YOUNG / (1 - POISSON**2) * (e_rr + POISSON * e_tt),
-        YOUNG / (1 - POISSON**2) * (e_tt + POISSON * e_rr), G * g_rt, turn])
+    evaluate = sympy.lambdify(
+        (r, t),
+        [
+            YOUNG / (1 - POISSON**2) * (e_rr + POISSON * e_tt),
+            YOUNG / (1 - POISSON**2) * (e_tt + POISSON * e_rr),
+            G * g_rt,
+            turn,
+        ],
+    )
     points, _ = quarter(solid=False)
     radius, theta = np.hypot(points[:, 0], points[:, 1]), np.arctan2(points[:, 1], points[:, 0])
     rr, tt, rt, half_curl = evaluate(radius, theta)
@@ -136,8 +151,11 @@ def test_shear_is_half_the_tension_at_an_angle():
     """The oracle itself: a tension at an angle is a biaxial tension plus a shear."""
     points, _ = quarter(solid=False)
     beta = np.radians(28.0)
-    parts = (np.cos(beta) ** 2 * tension(points) + np.sin(beta) ** 2 * tension(points, np.pi / 2)
-             + shear(points, S * np.sin(beta) * np.cos(beta)))
+    parts = (
+        np.cos(beta) ** 2 * tension(points)
+        + np.sin(beta) ** 2 * tension(points, np.pi / 2)
+        + shear(points, S * np.sin(beta) * np.cos(beta))
+    )
     assert miss(parts, tension(points, beta)) < ROUND_OFF
 
 
@@ -150,17 +168,23 @@ def solid_model(tmp_path, Q, t):
     model.field("cell_stress", "symmetric tensor", components=SIX)
     model.field("displacement", "polar vector")
     model.field("rotation", "axial vector")
-    model.table(mirror=[
-        {"name": "across", "normal": Q[:, 0], "point": t + Q @ [0, 1.7, 0.3]},
-        {"name": "along", "normal": -Q[:, 1], "point": t + Q @ [-2.2, 0, 5.0]}])
+    model.table(
+        mirror=[
+            {"name": "across", "normal": Q[:, 0], "point": t + Q @ [0, 1.7, 0.3]},
+            {"name": "along", "normal": -Q[:, 1], "point": t + Q @ [-2.2, 0, 5.0]},
+        ]
+    )
     zero = np.zeros(len(points))
 
     def values(stress, u, w):
         return {
-            "points": {"stress": stored(turned(Q, stress(points))),
-                       "displacement": turned(Q, u(points)),
-                       "rotation": turned(Q, np.stack([zero, zero, w(points)], axis=1))},
-            "cells": {"cell_stress": stored(turned(Q, stress(middle)))}}
+            "points": {
+                "stress": stored(turned(Q, stress(points))),
+                "displacement": turned(Q, u(points)),
+                "rotation": turned(Q, np.stack([zero, zero, w(points)], axis=1)),
+            },
+            "cells": {"cell_stress": stored(turned(Q, stress(middle)))},
+        }
 
     return model, values
 
@@ -180,8 +204,9 @@ def whole_plate(grid, Q, t, angle=0.0):
 
 def even(field, beta):
     """Tensions along x and y that make the symmetric part of a tension at the angle beta."""
-    return lambda points: (np.cos(beta) ** 2 * field(points, 0.0)
-                           + np.sin(beta) ** 2 * field(points, np.pi / 2))
+    return lambda points: (
+        np.cos(beta) ** 2 * field(points, 0.0) + np.sin(beta) ** 2 * field(points, np.pi / 2)
+    )
 
 
 def odd(field):
@@ -189,8 +214,9 @@ def odd(field):
     return lambda points: (field(points, np.pi / 4) - field(points, -np.pi / 4)) / S
 
 
-PLACED = pytest.mark.parametrize(("Q", "t"), [(np.eye(3), np.zeros(3)), (SKEW, SHIFT)],
-                                 ids=["upright", "skew"])
+PLACED = pytest.mark.parametrize(
+    ("Q", "t"), [(np.eye(3), np.zeros(3)), (SKEW, SHIFT)], ids=["upright", "skew"]
+)
 
 
 @PLACED
@@ -209,7 +235,7 @@ def test_tension_along_a_plane(tmp_path, Q, t):
     at_hole = np.abs(np.hypot(points[:, 0], points[:, 1]) - A) < 1e-9
     top = at_hole & (np.abs(points[:, 0]) < 1e-9)
     side = at_hole & (np.abs(points[:, 1]) < 1e-9)
-    assert top.sum() == side.sum() == 2 * 5      # above and below; five levels through the plate
+    assert top.sum() == side.sum() == 2 * 5  # above and below; five levels through the plate
     assert miss(stress[top, 0, 0], np.full(10, 3 * S)) < ROUND_OFF
     assert miss(stress[side, 1, 1], np.full(10, -S)) < ROUND_OFF
 
@@ -221,20 +247,21 @@ def test_tension_at_an_angle_is_a_sum(tmp_path, Q, t, degrees):
     beta = np.radians(degrees)
     model, values = solid_model(tmp_path, Q, t)
 
-    model.values("even", **values(even(tension, beta), even(motion, beta),
-                                  even(turn_about_z, beta)))
+    model.values(
+        "even", **values(even(tension, beta), even(motion, beta), even(turn_about_z, beta))
+    )
     model.values("odd", **values(lambda x: shear(x, 1.0), odd(motion), odd(turn_about_z)))
     both = {"across": "antisymmetric", "along": "antisymmetric"}
-    model.table(case=[{"name": "even"}, {"name": "odd", "load": both}],
-                sum=[{"name": "tilted",
-                      "terms": {"even": 1.0, "odd": S * np.sin(beta) * np.cos(beta)}}])
+    model.table(
+        case=[{"name": "even"}, {"name": "odd", "load": both}],
+        sum=[{"name": "tilted", "terms": {"even": 1.0, "odd": S * np.sin(beta) * np.cos(beta)}}],
+    )
     whole = model.expand("tilted")
     for name, error in whole_plate(whole, Q, t, beta).items():
         assert error < ROUND_OFF, name
 
 
-@pytest.mark.parametrize(("order", "shape"), [("xx yy xy", 3), ("yy xx xy", 3),
-                                              ("xx yy zz xy", 4)])
+@pytest.mark.parametrize(("order", "shape"), [("xx yy xy", 3), ("yy xx xy", 3), ("xx yy zz xy", 4)])
 def test_plane_storage(tmp_path, order, shape):
     """Kirsch in a plane model: 3 and 4 stored components, 2-component vectors, rotation rz."""
     beta = np.radians(28.0)
@@ -246,19 +273,27 @@ def test_plane_storage(tmp_path, order, shape):
     model.field("displacement", "polar vector")
     model.field("rz", "axial vector", components="z")
     model.field("u", "polar vector", arrays=["ux", "uy"])
-    model.table(mirror=[{"name": "across", "normal": "x"}, {"name": "along", "normal": "y"}],
-                case=[{"name": "pull"},
-                      {"name": "slide", "load": {"across": "antisymmetric",
-                                                 "along": "antisymmetric"}}],
-                sum=[{"name": "tilted", "terms": {
-                    "pull": 1.0, "slide": S * np.sin(beta) * np.cos(beta)}}])
+    model.table(
+        mirror=[{"name": "across", "normal": "x"}, {"name": "along", "normal": "y"}],
+        case=[
+            {"name": "pull"},
+            {"name": "slide", "load": {"across": "antisymmetric", "along": "antisymmetric"}},
+        ],
+        sum=[{"name": "tilted", "terms": {"pull": 1.0, "slide": S * np.sin(beta) * np.cos(beta)}}],
+    )
     for name, part in {"pull": lambda field: even(field, beta), "slide": odd}.items():
         u = part(motion)(points)
-        model.values(name, points={"stress": stored(part(tension)(points), order),
-                                   "displacement": u[:, :2].copy(),
-                                   "rz": part(turn_about_z)(points), "ux": u[:, 0].copy(),
-                                   "uy": u[:, 1].copy()},
-                     cells={"cell_stress": stored(part(tension)(middle), order)})
+        model.values(
+            name,
+            points={
+                "stress": stored(part(tension)(points), order),
+                "displacement": u[:, :2].copy(),
+                "rz": part(turn_about_z)(points),
+                "ux": u[:, 0].copy(),
+                "uy": u[:, 1].copy(),
+            },
+            cells={"cell_stress": stored(part(tension)(middle), order)},
+        )
     whole = model.expand("tilted")
     x = whole.points
     assert whole["stress"].shape == (len(x), shape)

@@ -59,7 +59,8 @@ def exact(points: Floats, axis: Floats, point: Floats) -> dict[str, Floats]:
     stress, u = polar_stress(r), polar_motion(r, z)
     to_global = basis.swapaxes(1, 2)
     return {
-        "polar_stress": stored(stress), "polar_displacement": u,
+        "polar_stress": stored(stress),
+        "polar_displacement": u,
         "stress": stored(to_global @ stress @ basis),
         "displacement": np.einsum("nai,ni->na", to_global, u),
     }
@@ -68,10 +69,13 @@ def exact(points: Floats, axis: Floats, point: Floats) -> dict[str, Floats]:
 def sector(count: int):
     """One of `count` sectors with twisted and swept faces, in its own coordinates."""
     around = 3 if count < 100 else 1
-    mesh = quadratic(block(3, around, 2)).mapped(lambda u, v, w: (
-        (INNER + u * (OUTER - INNER)) * np.cos(2 * np.pi / count * v + 0.5 * u**2 + 0.4 * w),
-        (INNER + u * (OUTER - INNER)) * np.sin(2 * np.pi / count * v + 0.5 * u**2 + 0.4 * w),
-        LENGTH * w))
+    mesh = quadratic(block(3, around, 2)).mapped(
+        lambda u, v, w: (
+            (INNER + u * (OUTER - INNER)) * np.cos(2 * np.pi / count * v + 0.5 * u**2 + 0.4 * w),
+            (INNER + u * (OUTER - INNER)) * np.sin(2 * np.pi / count * v + 0.5 * u**2 + 0.4 * w),
+            LENGTH * w,
+        )
+    )
     return mesh.points, {25: mesh.cells}
 
 
@@ -85,7 +89,7 @@ def test_the_oracle_is_an_elastic_field():
     strain = ((1 + NU) * s - NU * trace[:, None, None] * np.eye(3)) / YOUNG
     z = 0 * r
     slope = (polar_motion(r + h, z)[:, 0] - polar_motion(r - h, z)[:, 0]) / (2 * h)
-    assert miss(strain[:, 0, 0], slope) < 1e-7       # central differences: error of order h**2
+    assert miss(strain[:, 0, 0], slope) < 1e-7  # central differences: error of order h**2
     assert miss(strain[:, 1, 1], polar_motion(r, z)[:, 0] / r) < ROUND_OFF
     assert miss(strain[:, 2, 2], z + STRAIN) < ROUND_OFF
     rise = (polar_stress(r + h)[:, 0, 0] - polar_stress(r - h)[:, 0, 0]) / (2 * h)
@@ -93,8 +97,9 @@ def test_the_oracle_is_an_elastic_field():
 
 
 @pytest.mark.parametrize("count", [2, 7, 720])
-@pytest.mark.parametrize(("Q", "t"), [(np.eye(3), np.zeros(3)), (SKEW, SHIFT)],
-                         ids=["upright", "skew"])
+@pytest.mark.parametrize(
+    ("Q", "t"), [(np.eye(3), np.zeros(3)), (SKEW, SHIFT)], ids=["upright", "skew"]
+)
 def test_sector_turned_around(tmp_path, count, Q, t):
     """Lame: stress and displacement of the whole cylinder, in global and polar components."""
     points, cells = sector(count)
@@ -107,14 +112,15 @@ def test_sector_turned_around(tmp_path, count, Q, t):
     model = Model(tmp_path, points, cells)
     model.field("stress", "symmetric tensor", components=SIX, seam="recovered")
     model.field("displacement", "polar vector")
-    model.field("polar_stress", "symmetric tensor", components=SIX, frame="shaft",
-                seam="recovered")
+    model.field("polar_stress", "symmetric tensor", components=SIX, frame="shaft", seam="recovered")
     model.field("polar_displacement", "polar vector", frame="shaft")
     model.field("cell_stress", "symmetric tensor", components=SIX)
     model.values(points=at_nodes, cells={"cell_stress": at_cells["stress"]})
     on_axis = t + turned(Q, np.array([0.0, 0.0, -7.0]))
-    model.table(cyclic={"sectors": count, "axis": axis, "point": on_axis},
-                frames={"shaft": {"type": "cylindrical", "axis": axis, "point": on_axis}})
+    model.table(
+        cyclic={"sectors": count, "axis": axis, "point": on_axis},
+        frames={"shaft": {"type": "cylindrical", "axis": axis, "point": on_axis}},
+    )
     whole = model.expand()
 
     expected = exact(whole.points, axis, t)
@@ -125,7 +131,7 @@ def test_sector_turned_around(tmp_path, count, Q, t):
     repeated = at_nodes["polar_stress"][whole["sector_point"]]
     assert miss(whole["polar_stress"], repeated) < ROUND_OFF
     assert whole.n_cells == count * len(cells[25])
-    on_seam = (2 * 3 + 1) * (2 * 2 + 1) - 3 * 2      # nodes of a face of 3 x 2 quadratic cells
+    on_seam = (2 * 3 + 1) * (2 * 2 + 1) - 3 * 2  # nodes of a face of 3 x 2 quadratic cells
     assert whole.n_points == count * (len(points) - on_seam)
     assert no_twins(whole, 1e-4)
 
@@ -144,15 +150,19 @@ def test_frame_and_axis_may_differ(tmp_path, count):
     def in_frame(x):
         basis = polar_basis(x, other, through)
         fields = exact(x, axis, origin)
-        return {"s": stored(basis @ tensor(fields["stress"]) @ basis.swapaxes(1, 2)),
-                "u": np.einsum("nia,na->ni", basis, fields["displacement"])}
+        return {
+            "s": stored(basis @ tensor(fields["stress"]) @ basis.swapaxes(1, 2)),
+            "u": np.einsum("nia,na->ni", basis, fields["displacement"]),
+        }
 
     model = Model(tmp_path, points, cells)
     model.field("s", "symmetric tensor", components=SIX, frame="F", seam="recovered")
     model.field("u", "polar vector", frame="F")
     model.values(points=in_frame(points))
-    model.table(cyclic={"sectors": count, "axis": "z"},
-                frames={"F": {"type": "cylindrical", "axis": "x", "point": through}})
+    model.table(
+        cyclic={"sectors": count, "axis": "z"},
+        frames={"F": {"type": "cylindrical", "axis": "x", "point": through}},
+    )
     whole = model.expand()
     expected = in_frame(whole.points)
     assert miss(whole["s"], expected["s"]) < ROUND_OFF

@@ -37,8 +37,9 @@ from tests.against_outside.bodies import (
 
 CLOSE = 1e-12
 Placement = tuple[Floats, Floats]
-COIL = np.array([[0.35, 0.3, 0.9], [0.9, 0.35, 1.0], [0.95, 0.85, 1.25], [0.4, 0.95, 1.1],
-                 [0.35, 0.3, 0.9]])  # crooked: no symmetry of its own
+COIL = np.array(
+    [[0.35, 0.3, 0.9], [0.9, 0.35, 1.0], [0.95, 0.85, 1.25], [0.4, 0.95, 1.1], [0.35, 0.3, 0.9]]
+)  # crooked: no symmetry of its own
 
 
 def sources(placement: Placement, sign: float) -> list:
@@ -52,8 +53,10 @@ def sources(placement: Placement, sign: float) -> list:
     orientation = Rotation.from_rotvec([0.3, -0.5, 0.8]).as_matrix()
     polarisation = np.array([0.4, -0.9, 1.1])
     magnet = magpylib.magnet.Cuboid(
-        dimension=(0.3, 0.2, 0.4), position=Q @ [0.7, 0.5, -0.6] + t,
-        orientation=Rotation.from_matrix(Q @ orientation @ np.diag([1, 1, det])))
+        dimension=(0.3, 0.2, 0.4),
+        position=Q @ [0.7, 0.5, -0.6] + t,
+        orientation=Rotation.from_matrix(Q @ orientation @ np.diag([1, 1, det])),
+    )
     in_space = sign * det * Q @ polarisation
     magnet.polarization = magnet.orientation.inv().apply(in_space)
     coil = magpylib.current.Polyline(vertices=COIL @ Q.T + t, current=sign * 4e5)
@@ -69,11 +72,13 @@ def field(points: Floats, images: Sequence[tuple[Placement, float]]) -> Floats:
 def closed(*generators: tuple[Placement, float]) -> list[tuple[Placement, float]]:
     """All products of placements and their signs, the identity first."""
     images = [((np.eye(3), np.zeros(3)), 1.0)]
-    for (Q, t), sign in images:      # grows while it is read
+    for (Q, t), sign in images:  # grows while it is read
         for (P, s), other in generators:
             new = (P @ Q, P @ t + s)
-            if not any(np.allclose(new[0], a, atol=1e-9) and np.allclose(new[1], b, atol=1e-9)
-                       for (a, b), _ in images):
+            if not any(
+                np.allclose(new[0], a, atol=1e-9) and np.allclose(new[1], b, atol=1e-9)
+                for (a, b), _ in images
+            ):
                 images.append((new, sign * other))
     return images
 
@@ -90,8 +95,9 @@ def carried(images):
 
 def air(corner, size, n):
     """Nodes and cells of a block of air in the skew system."""
-    mesh = block(*n).mapped(lambda u, v, w: (corner[0] + size[0] * u, corner[1] + size[1] * v,
-                                             corner[2] + size[2] * w))
+    mesh = block(*n).mapped(
+        lambda u, v, w: (corner[0] + size[0] * u, corner[1] + size[1] * v, corner[2] + size[2] * w)
+    )
     return in_place(mesh.points), {12: mesh.cells}
 
 
@@ -103,8 +109,10 @@ def model_of(tmp_path, points, cells):
 
 
 def values(points, cells, images):
-    return {"points": {"B": field(points, images)},
-            "cells": {"B_cells": field(points[cells[12]].mean(axis=1), images)}}
+    return {
+        "points": {"B": field(points, images)},
+        "cells": {"B_cells": field(points[cells[12]].mean(axis=1), images)},
+    }
 
 
 def check(whole, images):
@@ -117,9 +125,18 @@ def check(whole, images):
 PLANES = {"a": ((1, 0, 0), (0, 0, 0)), "b": ((0, 1, 0), (0, 0, 0)), "c": ((0, 0, 1), (0, 0, -1.5))}
 
 
-@pytest.mark.parametrize("words", [{"a": 1}, {"a": -1}, {"a": 1, "b": -1}, {"a": -1, "b": -1},
-                                   {"a": -1, "b": 1, "c": 1}, {"a": -1, "b": -1, "c": -1}],
-                         ids=str)
+@pytest.mark.parametrize(
+    "words",
+    [
+        {"a": 1},
+        {"a": -1},
+        {"a": 1, "b": -1},
+        {"a": -1, "b": -1},
+        {"a": -1, "b": 1, "c": 1},
+        {"a": -1, "b": -1, "c": -1},
+    ],
+    ids=str,
+)
 def test_images_in_skew_planes(tmp_path, words):
     """magpylib: magnet and coil with images in 1, 2 and 3 planes, each even or reversed."""
     images = carried(closed(*((mirror(*PLANES[name]), sign) for name, sign in words.items())))
@@ -127,10 +144,17 @@ def test_images_in_skew_planes(tmp_path, words):
     points, cells = air((0, 0, -1.5), (1.3, 1.2, 3.1), (3, 3, 5))
     model = model_of(tmp_path, points, cells)
     model.values(**values(points, cells, images))
-    model.table(mirror=[
-        {"name": name, "normal": SKEW @ PLANES[name][0],
-         "point": in_place(np.array(PLANES[name][1])),
-         "load": "symmetric" if sign > 0 else "antisymmetric"} for name, sign in words.items()])
+    model.table(
+        mirror=[
+            {
+                "name": name,
+                "normal": SKEW @ PLANES[name][0],
+                "point": in_place(np.array(PLANES[name][1])),
+                "load": "symmetric" if sign > 0 else "antisymmetric",
+            }
+            for name, sign in words.items()
+        ]
+    )
     whole = model.expand()
     assert whole.n_cells == len(images) * 45
     check(whole, images)
@@ -146,8 +170,11 @@ def test_one_magnet_is_the_mean_of_both_cases(tmp_path):
     model.table(
         mirror=[{"name": "a", "normal": SKEW[:, 0], "point": SHIFT}],
         case=[{"name": "even"}, {"name": "odd", "load": {"a": "antisymmetric"}}],
-        sum=[{"name": "alone", "terms": {"even": 0.5, "odd": 0.5}},
-             {"name": "uneven", "terms": {"even": 0.75, "odd": -0.25}}])
+        sum=[
+            {"name": "alone", "terms": {"even": 0.5, "odd": 0.5}},
+            {"name": "uneven", "terms": {"even": 0.75, "odd": -0.25}},
+        ],
+    )
     check(model.expand("alone"), carried(closed()))
     # 0.75 - 0.25 = 0.5 of the magnet itself, 0.75 + 0.25 = 1 of its image.
     whole = model.expand("uneven")
@@ -158,9 +185,13 @@ def test_one_magnet_is_the_mean_of_both_cases(tmp_path):
 
 def ring(count: int):
     """A sector of air around the skew system's z axis, with faces swept and twisted."""
-    mesh = block(3, 3, 4).mapped(lambda u, v, w: (
-        (0.2 + 1.2 * u) * np.cos(2 * np.pi / count * (v - 0.2) + 0.3 * u + 0.2 * w),
-        (0.2 + 1.2 * u) * np.sin(2 * np.pi / count * (v - 0.2) + 0.3 * u + 0.2 * w), 2.8 * w - 1.4))
+    mesh = block(3, 3, 4).mapped(
+        lambda u, v, w: (
+            (0.2 + 1.2 * u) * np.cos(2 * np.pi / count * (v - 0.2) + 0.3 * u + 0.2 * w),
+            (0.2 + 1.2 * u) * np.sin(2 * np.pi / count * (v - 0.2) + 0.3 * u + 0.2 * w),
+            2.8 * w - 1.4,
+        )
+    )
     return in_place(mesh.points), {12: mesh.cells}
 
 
@@ -182,9 +213,10 @@ def test_ring_of_magnets(tmp_path, count, h):
     data["points"]["B_polar"] = polar(points)
     model.values(**data)
     on_axis = in_place(np.array([0.0, 0.0, 4.0]))
-    model.table(cyclic={"sectors": count, "axis": SKEW[:, 2], "point": on_axis,
-                        "nodal_diameters": h},
-                frames={"shaft": {"type": "cylindrical", "axis": SKEW[:, 2], "point": on_axis}})
+    model.table(
+        cyclic={"sectors": count, "axis": SKEW[:, 2], "point": on_axis, "nodal_diameters": h},
+        frames={"shaft": {"type": "cylindrical", "axis": SKEW[:, 2], "point": on_axis}},
+    )
     whole = model.expand()
     check(whole, images)
     assert miss(whole["B_polar"], polar(whole.points)) < CLOSE
@@ -197,10 +229,11 @@ def test_ring_of_two_magnets_one_switched_off(tmp_path):
     model = model_of(tmp_path, points, cells)
     for name, sign in (("even", 1.0), ("odd", -1.0)):
         model.values(name, **values(points, cells, carried(closed((step, sign)))))
-    model.table(cyclic={"sectors": 2, "axis": SKEW[:, 2], "point": SHIFT},
-                case=[{"name": "even", "nodal_diameters": 0},
-                      {"name": "odd", "nodal_diameters": 1}],
-                sum=[{"name": "alone", "terms": {"even": 0.5, "odd": 0.5}}])
+    model.table(
+        cyclic={"sectors": 2, "axis": SKEW[:, 2], "point": SHIFT},
+        case=[{"name": "even", "nodal_diameters": 0}, {"name": "odd", "nodal_diameters": 1}],
+        sum=[{"name": "alone", "terms": {"even": 0.5, "odd": 0.5}}],
+    )
     check(model.expand("alone"), carried(closed()))
 
 
@@ -212,15 +245,27 @@ def test_half_sectors_of_magnets(tmp_path, sign):
     plane = ((0, 1, 0), (0, 0, 0))
     images = carried(closed((step, 1.0), (mirror(*plane), float(sign))))
     assert len(images) == 2 * count
-    mesh = block(3, 3, 4).mapped(lambda u, v, w: (
-        (0.2 + 1.2 * u) * np.cos(np.pi / count * v), (0.2 + 1.2 * u) * np.sin(np.pi / count * v),
-        2.8 * w - 1.4))
+    mesh = block(3, 3, 4).mapped(
+        lambda u, v, w: (
+            (0.2 + 1.2 * u) * np.cos(np.pi / count * v),
+            (0.2 + 1.2 * u) * np.sin(np.pi / count * v),
+            2.8 * w - 1.4,
+        )
+    )
     points, cells = in_place(mesh.points), {12: mesh.cells}
     model = model_of(tmp_path, points, cells)
     model.values(**values(points, cells, images))
-    model.table(cyclic={"sectors": count, "axis": SKEW[:, 2], "point": SHIFT},
-                mirror=[{"name": "middle", "normal": SKEW[:, 1], "point": SHIFT,
-                         "load": "symmetric" if sign > 0 else "antisymmetric"}])
+    model.table(
+        cyclic={"sectors": count, "axis": SKEW[:, 2], "point": SHIFT},
+        mirror=[
+            {
+                "name": "middle",
+                "normal": SKEW[:, 1],
+                "point": SHIFT,
+                "load": "symmetric" if sign > 0 else "antisymmetric",
+            }
+        ],
+    )
     check(model.expand(), images)
 
 

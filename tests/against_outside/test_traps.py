@@ -47,7 +47,7 @@ from tests.against_outside.bodies import (
 )
 from tests.against_outside.elastic import Body, rows, seam_nodes
 
-EXACT = 1e-12                        # round-off of a closed formula at coordinates of size 5
+EXACT = 1e-12  # round-off of a closed formula at coordinates of size 5
 X, Y, Z = SKEW.T
 
 
@@ -80,6 +80,7 @@ def word(sign: int) -> str:
 
 # --- (1) rotations and displacements ------------------------------------------------------------
 
+
 def rigid(kind: int, x: Floats, about: Floats) -> tuple[Floats, Floats]:
     """Displacement and rotation of one of six rigid-body motions in the skew system."""
     direction = SKEW[:, kind % 3]
@@ -89,13 +90,21 @@ def rigid(kind: int, x: Floats, about: Floats) -> tuple[Floats, Floats]:
 
 
 GROUPS = {  # planes by axis of the skew system and parity, sectors, h; motions left, see checks
-    "S": ({0: 1}, 0, 0, 3), "A": ({0: -1}, 0, 0, 3),
-    "S,S": ({0: 1, 1: 1}, 0, 0, 1), "S,A": ({0: 1, 1: -1}, 0, 0, 2),
-    "A,S": ({0: -1, 1: 1}, 0, 0, 2), "A,A": ({0: -1, 1: -1}, 0, 0, 1),
-    "S,S,S": ({0: 1, 1: 1, 2: 1}, 0, 0, 0), "A,A,A": ({0: -1, 1: -1, 2: -1}, 0, 0, 0),
-    "S,S,A": ({0: 1, 1: 1, 2: -1}, 0, 0, 1), "S,A,A": ({0: 1, 1: -1, 2: -1}, 0, 0, 1),
-    "N=4 h=0": ({}, 4, 0, 2), "N=4 h=2": ({}, 4, 2, 0), "N=7 h=0": ({}, 7, 0, 2),
-    "N=2 h=0": ({}, 2, 0, 2), "N=2 h=1": ({}, 2, 1, 4),
+    "S": ({0: 1}, 0, 0, 3),
+    "A": ({0: -1}, 0, 0, 3),
+    "S,S": ({0: 1, 1: 1}, 0, 0, 1),
+    "S,A": ({0: 1, 1: -1}, 0, 0, 2),
+    "A,S": ({0: -1, 1: 1}, 0, 0, 2),
+    "A,A": ({0: -1, 1: -1}, 0, 0, 1),
+    "S,S,S": ({0: 1, 1: 1, 2: 1}, 0, 0, 0),
+    "A,A,A": ({0: -1, 1: -1, 2: -1}, 0, 0, 0),
+    "S,S,A": ({0: 1, 1: 1, 2: -1}, 0, 0, 1),
+    "S,A,A": ({0: 1, 1: -1, 2: -1}, 0, 0, 1),
+    "N=4 h=0": ({}, 4, 0, 2),
+    "N=4 h=2": ({}, 4, 2, 0),
+    "N=7 h=0": ({}, 7, 0, 2),
+    "N=2 h=0": ({}, 2, 0, 2),
+    "N=2 h=1": ({}, 2, 1, 4),
 }
 
 
@@ -118,11 +127,16 @@ def test_rigid_motions(tmp_path, name):
         model.field("u", "polar vector").field("w", "axial vector")
         u, w = rigid(kind, points, SHIFT)
         model.values(points={"u": u, "w": w})
-        model.table(mirror=[{"normal": SKEW[:, a], "point": SHIFT, "load": word(sign)}
-                            for a, sign in planes.items()])
+        model.table(
+            mirror=[
+                {"normal": SKEW[:, a], "point": SHIFT, "load": word(sign)}
+                for a, sign in planes.items()
+            ]
+        )
         if sectors:
-            model.table(cyclic={"sectors": sectors, "axis": Z, "point": SHIFT,
-                                "nodal_diameters": h})
+            model.table(
+                cyclic={"sectors": sectors, "axis": Z, "point": SHIFT, "nodal_diameters": h}
+            )
         try:
             whole = model.expand()
         except CheckFailed:
@@ -137,15 +151,26 @@ def test_rigid_motions(tmp_path, name):
 def cubic(x: Floats) -> Floats:
     """A displacement field of third degree with no symmetry."""
     a, b, c = (x - SHIFT).T
-    return np.stack([1 + a * b - 2 * c**3 + 0.5 * a * a * b, a - b * c + a * b * c - b**3,
-                     0.3 + c * a * a - 2 * b * b * c + a * b], axis=1)
+    return np.stack(
+        [
+            1 + a * b - 2 * c**3 + 0.5 * a * a * b,
+            a - b * c + a * b * c - b**3,
+            0.3 + c * a * a - 2 * b * b * c + a * b,
+        ],
+        axis=1,
+    )
 
 
 def slopes(field, x: Floats, h: float = 1e-2) -> Floats:
     """(n, .., 3) derivatives: fourth-order differences, exact for polynomials of degree 4."""
     steps = h * np.eye(3)
-    return np.stack([(8 * (field(x + s) - field(x - s)) - (field(x + 2 * s) - field(x - 2 * s)))
-                     / (12 * h) for s in steps], axis=-1)
+    return np.stack(
+        [
+            (8 * (field(x + s) - field(x - s)) - (field(x + 2 * s) - field(x - 2 * s))) / (12 * h)
+            for s in steps
+        ],
+        axis=-1,
+    )
 
 
 LEVI_CIVITA = np.zeros((3, 3, 3))
@@ -175,26 +200,44 @@ def everything(field, x: Floats) -> dict[str, Floats]:
 
 
 KINDS = {
-    "u": {"kind": "polar vector"}, "gradient": {"kind": "tensor"},
+    "u": {"kind": "polar vector"},
+    "gradient": {"kind": "tensor"},
     "strain": {"kind": "symmetric tensor", "components": SIX, "shear": "engineering"},
-    "volume": {"kind": "scalar"}, "turn": {"kind": "axial vector"},
-    "turn_gradient": {"kind": "axial tensor"}, "curl_turn": {"kind": "polar vector"},
+    "volume": {"kind": "scalar"},
+    "turn": {"kind": "axial vector"},
+    "turn_gradient": {"kind": "axial tensor"},
+    "curl_turn": {"kind": "polar vector"},
     # Quadratic in the response, so that the load's sign drops out: it follows the body.
-    "helicity": {"kind": "pseudoscalar", "follows": "body"}, "length": {"kind": "invariant"},
+    "helicity": {"kind": "pseudoscalar", "follows": "body"},
+    "length": {"kind": "invariant"},
 }
 
 
-@pytest.mark.parametrize(("placements", "tables"), [
-    ([(mirror(X, SHIFT), 1)], {"mirror": [{"normal": X, "point": SHIFT}]}),
-    ([(mirror(X, SHIFT), -1)],
-     {"mirror": [{"normal": X, "point": SHIFT, "load": "antisymmetric"}]}),
-    ([(turn(np.pi, Z, SHIFT), -1)],
-     {"cyclic": {"sectors": 2, "axis": Z, "point": SHIFT, "nodal_diameters": 1}}),
-    ([(turn(np.pi / 2, Z, SHIFT), 1)], {"cyclic": {"sectors": 4, "axis": Z, "point": SHIFT}}),
-    ([(mirror(X, SHIFT), 1), (mirror(Y, SHIFT), -1)],
-     {"mirror": [{"normal": X, "point": SHIFT},
-                 {"normal": Y, "point": SHIFT, "load": "antisymmetric"}]}),
-], ids=["mirrored", "reversed", "turned, reversed", "turned", "quarter"])
+@pytest.mark.parametrize(
+    ("placements", "tables"),
+    [
+        ([(mirror(X, SHIFT), 1)], {"mirror": [{"normal": X, "point": SHIFT}]}),
+        (
+            [(mirror(X, SHIFT), -1)],
+            {"mirror": [{"normal": X, "point": SHIFT, "load": "antisymmetric"}]},
+        ),
+        (
+            [(turn(np.pi, Z, SHIFT), -1)],
+            {"cyclic": {"sectors": 2, "axis": Z, "point": SHIFT, "nodal_diameters": 1}},
+        ),
+        ([(turn(np.pi / 2, Z, SHIFT), 1)], {"cyclic": {"sectors": 4, "axis": Z, "point": SHIFT}}),
+        (
+            [(mirror(X, SHIFT), 1), (mirror(Y, SHIFT), -1)],
+            {
+                "mirror": [
+                    {"normal": X, "point": SHIFT},
+                    {"normal": Y, "point": SHIFT, "load": "antisymmetric"},
+                ]
+            },
+        ),
+    ],
+    ids=["mirrored", "reversed", "turned, reversed", "turned", "quarter"],
+)
 def test_every_kind_follows_from_the_displacement(tmp_path, placements, tables):
     """(1) Kinds: expanding commutes with differentiating the displacement.
 
@@ -214,8 +257,10 @@ def test_every_kind_follows_from_the_displacement(tmp_path, placements, tables):
     whole = model.expand()
     at = centres(whole)
     for (Q, t), chi in placements:
+
         def copied(x, Q=Q, t=t, chi=chi):
             return chi * cubic((x - t) @ Q) @ Q.T
+
         # This copy's cells: those whose centre is the image of the sector's.
         near = np.linalg.norm(at[:, None] - (middle @ Q.T + t)[None], axis=2)
         cell = near.argmin(axis=0)
@@ -247,6 +292,7 @@ def test_six_columns_are_not_taken_for_a_tensor(tmp_path, name):
 
 # --- (2) invariants, properties, labels ---------------------------------------------------------
 
+
 def test_what_never_takes_the_loads_sign(tmp_path):
     """(2) Invariants, labels and properties of the body keep their values in an odd case."""
     points, cells = cube()
@@ -259,9 +305,17 @@ def test_what_never_takes_the_loads_sign(tmp_path):
     model.field("inertia", "symmetric tensor", follows="body", components=SIX)
     model.field("normal", "polar vector", follows="body")
     model.field("spin", "axial vector", follows="body")
-    model.values(cells={"von_mises": size, "part": np.arange(8, dtype=np.int32),
-                        "density": 2 * size, "heat": 3 * size, "inertia": inertia,
-                        "normal": normal, "spin": normal})
+    model.values(
+        cells={
+            "von_mises": size,
+            "part": np.arange(8, dtype=np.int32),
+            "density": 2 * size,
+            "heat": 3 * size,
+            "inertia": inertia,
+            "normal": normal,
+            "spin": normal,
+        }
+    )
     model.table(mirror=[{"normal": X, "point": SHIFT, "load": "antisymmetric"}])
     whole = model.expand()
     cell, copy = whole["sector_cell"], whole["copy"]
@@ -294,12 +348,23 @@ def two_cases(tmp_path, terms, **output):
     stress = {}
     for name, u in (("even", even_u), ("odd", odd_u)):
         stress[name] = rng.normal(size=(8, 6))
-        model.values(name, points={"u": u}, cells={
-            "stress": stress[name], "von_mises": von_mises(stress[name]),
-            "p": principal(stress[name]), "density": np.arange(8.0), "part": np.arange(8)})
-    model.table(mirror=[{"name": "m", "normal": X, "point": SHIFT}],
-                case=[{"name": "even"}, {"name": "odd", "load": {"m": "antisymmetric"}}],
-                sum=[{"name": "both", "terms": terms}], output={"file": "whole.vtu", **output})
+        model.values(
+            name,
+            points={"u": u},
+            cells={
+                "stress": stress[name],
+                "von_mises": von_mises(stress[name]),
+                "p": principal(stress[name]),
+                "density": np.arange(8.0),
+                "part": np.arange(8),
+            },
+        )
+    model.table(
+        mirror=[{"name": "m", "normal": X, "point": SHIFT}],
+        case=[{"name": "even"}, {"name": "odd", "load": {"m": "antisymmetric"}}],
+        sum=[{"name": "both", "terms": terms}],
+        output={"file": "whole.vtu", **output},
+    )
     return model, stress
 
 
@@ -324,16 +389,19 @@ def test_a_sum_leaves_out_what_cannot_be_added(tmp_path):
     Source: the definitions of von Mises stress, principal stress and magnitude, by numpy.
     """
     terms = {"even": 2.0, "odd": -1.5}
-    model, stress = two_cases(tmp_path, terms, derived=["von mises", "principal stresses",
-                                                        "magnitude"])
+    model, stress = two_cases(
+        tmp_path, terms, derived=["von mises", "principal stresses", "magnitude"]
+    )
     whole = model.expand("both")
     assert "von_mises" not in whole.array_names
     assert "p" not in whole.array_names
     assert (whole["density"] == np.arange(8.0)[whole["sector_cell"]]).all()
     assert (whole["part"] == whole["sector_cell"]).all()
     Q, _ = mirror(X, SHIFT)
-    total = {0: full(2.0 * stress["even"] - 1.5 * stress["odd"]),
-             1: Q @ full(2.0 * stress["even"] + 1.5 * stress["odd"]) @ Q.T}
+    total = {
+        0: full(2.0 * stress["even"] - 1.5 * stress["odd"]),
+        1: Q @ full(2.0 * stress["even"] + 1.5 * stress["odd"]) @ Q.T,
+    }
     for copy, tensor in total.items():
         on = whole["copy"] == copy
         expected = stored(tensor)[whole["sector_cell"][on]]
@@ -356,6 +424,7 @@ def test_a_single_number_must_be_declared_in_an_odd_case(tmp_path):
 
 # --- (3) storage --------------------------------------------------------------------------------
 
+
 def test_engineering_shear_is_not_tensor_shear(tmp_path):
     """(3) In a skew plane gamma read as epsilon gives another tensor: the word matters."""
     points, cells = cube()
@@ -375,10 +444,15 @@ def test_engineering_shear_is_not_tensor_shear(tmp_path):
     assert miss(found["tensor"], found["engineering"]) > 0.1
 
 
-@pytest.mark.parametrize(("kind", "columns", "words"), [
-    ("polar vector", 2, {}), ("symmetric tensor", 3, {"components": "xx yy xy"}),
-    ("symmetric tensor", 4, {"components": "xx yy zz xy"}),
-    ("axial vector", 1, {"components": "z"})])
+@pytest.mark.parametrize(
+    ("kind", "columns", "words"),
+    [
+        ("polar vector", 2, {}),
+        ("symmetric tensor", 3, {"components": "xx yy xy"}),
+        ("symmetric tensor", 4, {"components": "xx yy zz xy"}),
+        ("axial vector", 1, {"components": "z"}),
+    ],
+)
 def test_a_plane_model_stays_in_its_plane(tmp_path, kind, columns, words):
     """(3) Storage of a plane model refuses a mirror that leaves its plane, and takes others."""
     grid, cells = quads(2, 2)
@@ -394,6 +468,7 @@ def test_a_plane_model_stays_in_its_plane(tmp_path, kind, columns, words):
 
 
 # --- (4) principal stresses ---------------------------------------------------------------------
+
 
 @pytest.mark.parametrize("words", [None, {"kind": "scalar"}, {"kind": "invariant"}], ids=str)
 @pytest.mark.parametrize("name", ["principal_stress_1", "max_principal"])
@@ -425,15 +500,27 @@ def test_three_principal_stresses(tmp_path, sign, rising):
 
 # --- (5) forces add, recovered stress is weighted -----------------------------------------------
 
+
 def test_forces_add_and_stress_is_weighted(tmp_path):
     """(5) At a seam with unequal numbers of cells on its sides a plain mean misses.
 
     Source: the finite element method; the whole body's nodal average. Tetrahedra: the two faces
     of a cyclic sector have different numbers of cells at their nodes.
     """
-    mesh = quadratic(tetrahedra(block(2, 2, 2))).mapped(lambda u, v, w: tuple(placed(np.stack([
-        (0.6 + u) * np.cos(np.pi / 3 * v + 0.4 * u), (0.6 + u) * np.sin(np.pi / 3 * v + 0.4 * u),
-        0.9 * w], axis=1)).T))
+    mesh = quadratic(tetrahedra(block(2, 2, 2))).mapped(
+        lambda u, v, w: tuple(
+            placed(
+                np.stack(
+                    [
+                        (0.6 + u) * np.cos(np.pi / 3 * v + 0.4 * u),
+                        (0.6 + u) * np.sin(np.pi / 3 * v + 0.4 * u),
+                        0.9 * w,
+                    ],
+                    axis=1,
+                )
+            ).T
+        )
+    )
     rim = np.linalg.norm(np.cross(mesh.points - SHIFT, Z), axis=1)
     body = Body(mesh, np.flatnonzero(rim < 0.6 + 1e-6), cyclic=Cyclic(6, Z, SHIFT), about=SHIFT)
     load = body_force(mesh, lambda x: np.cross(Z, x - SHIFT) + 0.3 * Z)
@@ -465,20 +552,43 @@ def test_forces_add_and_stress_is_weighted(tmp_path):
 
 # --- (6) cells ----------------------------------------------------------------------------------
 
-SOLID = {10: vtk.vtkTetra, 11: vtk.vtkVoxel, 12: vtk.vtkHexahedron, 13: vtk.vtkWedge,
-         14: vtk.vtkPyramid, 15: vtk.vtkPentagonalPrism, 16: vtk.vtkHexagonalPrism,
-         24: vtk.vtkQuadraticTetra, 25: vtk.vtkQuadraticHexahedron, 26: vtk.vtkQuadraticWedge,
-         27: vtk.vtkQuadraticPyramid, 29: vtk.vtkTriQuadraticHexahedron,
-         31: vtk.vtkQuadraticLinearWedge, 32: vtk.vtkBiQuadraticQuadraticWedge,
-         33: vtk.vtkBiQuadraticQuadraticHexahedron, 37: vtk.vtkTriQuadraticPyramid}
-SHELL = {5: vtk.vtkTriangle, 8: vtk.vtkPixel, 9: vtk.vtkQuad, 22: vtk.vtkQuadraticTriangle,
-         23: vtk.vtkQuadraticQuad, 28: vtk.vtkBiQuadraticQuad, 30: vtk.vtkQuadraticLinearQuad,
-         34: vtk.vtkBiQuadraticTriangle}
+SOLID = {
+    10: vtk.vtkTetra,
+    11: vtk.vtkVoxel,
+    12: vtk.vtkHexahedron,
+    13: vtk.vtkWedge,
+    14: vtk.vtkPyramid,
+    15: vtk.vtkPentagonalPrism,
+    16: vtk.vtkHexagonalPrism,
+    24: vtk.vtkQuadraticTetra,
+    25: vtk.vtkQuadraticHexahedron,
+    26: vtk.vtkQuadraticWedge,
+    27: vtk.vtkQuadraticPyramid,
+    29: vtk.vtkTriQuadraticHexahedron,
+    31: vtk.vtkQuadraticLinearWedge,
+    32: vtk.vtkBiQuadraticQuadraticWedge,
+    33: vtk.vtkBiQuadraticQuadraticHexahedron,
+    37: vtk.vtkTriQuadraticPyramid,
+}
+SHELL = {
+    5: vtk.vtkTriangle,
+    8: vtk.vtkPixel,
+    9: vtk.vtkQuad,
+    22: vtk.vtkQuadraticTriangle,
+    23: vtk.vtkQuadraticQuad,
+    28: vtk.vtkBiQuadraticQuad,
+    30: vtk.vtkQuadraticLinearQuad,
+    34: vtk.vtkBiQuadraticTriangle,
+}
 LINE = {3: vtk.vtkLine, 21: vtk.vtkQuadraticEdge, 35: vtk.vtkCubicLine}
 LAGRANGE = {  # number of nodes of a few orders
-    68: (vtk.vtkLagrangeCurve, (4, 5)), 69: (vtk.vtkLagrangeTriangle, (6, 10, 15)),
-    70: (vtk.vtkLagrangeQuadrilateral, (9, 16, 25)), 71: (vtk.vtkLagrangeTetra, (10, 20, 35)),
-    72: (vtk.vtkLagrangeHexahedron, (27, 64, 125)), 73: (vtk.vtkLagrangeWedge, (18, 40, 75))}
+    68: (vtk.vtkLagrangeCurve, (4, 5)),
+    69: (vtk.vtkLagrangeTriangle, (6, 10, 15)),
+    70: (vtk.vtkLagrangeQuadrilateral, (9, 16, 25)),
+    71: (vtk.vtkLagrangeTetra, (10, 20, 35)),
+    72: (vtk.vtkLagrangeHexahedron, (27, 64, 125)),
+    73: (vtk.vtkLagrangeWedge, (18, 40, 75)),
+}
 
 
 def expand_if_served(case) -> pv.UnstructuredGrid:
@@ -506,8 +616,9 @@ CASES = [(number, make, None) for table in (SOLID, SHELL, LINE) for number, make
 CASES += [(number, make, n) for number, (make, counts) in LAGRANGE.items() for n in counts]
 
 
-@pytest.mark.parametrize(("number", "make", "count"), CASES,
-                         ids=lambda v: v.__name__[3:] if callable(v) else str(v))
+@pytest.mark.parametrize(
+    ("number", "make", "count"), CASES, ids=lambda v: v.__name__[3:] if callable(v) else str(v)
+)
 def test_copied_cell_is_the_right_way_out(tmp_path, number, make, count):
     """(6) The copy's node order is a symmetry of the reference cell that reverses orientation.
 
@@ -519,7 +630,7 @@ def test_copied_cell_is_the_right_way_out(tmp_path, number, make, count):
     r = reference(make, count)
     stretch = np.array([[1.0, 0.2, 0.1], [0.0, 1.1, 0.3], [0.1, 0.0, 0.9]])
     if number in (8, 11):
-        stretch = np.diag([1.0, 1.1, 0.9])       # pixels and voxels are aligned with x, y, z
+        stretch = np.diag([1.0, 1.1, 0.9])  # pixels and voxels are aligned with x, y, z
     points = r @ stretch + [0.5, -3.0, 2.0]
     model = Model(tmp_path, points, {number: np.arange(len(r))[None]})
     normal = np.array([1.0, 0.3, -0.2])
@@ -538,10 +649,10 @@ def test_copied_cell_is_the_right_way_out(tmp_path, number, make, count):
     s = reference(new) if new else r
     d = 2 if number in SHELL or number in (69, 70) else 3
     to = r[p]
-    if number in (14, 27):                       # a pyramid's apex is all of its level z = 1
+    if number in (14, 27):  # a pyramid's apex is all of its level z = 1
         assert p[4] == 4
         s, to = np.delete(s, 4, axis=0), np.delete(to, 4, axis=0)
-        d = 2 if number == 14 else 3             # its base alone is left
+        d = 2 if number == 14 else 3  # its base alone is left
     design = np.column_stack([s[:, :d], np.ones(len(s))])
     A, *_ = np.linalg.lstsq(design, to[:, :d], rcond=None)
     # VTK writes the coordinates of five- and six-sided prisms with six digits.
@@ -560,8 +671,11 @@ def test_copied_cell_is_the_right_way_out(tmp_path, number, make, count):
 def test_copied_solid_has_positive_volume(tmp_path, number):
     """(6) Volumes by VTK: every copy's is positive and the sector's own, in three planes."""
     r = reference(SOLID[number])
-    stretch = np.diag([1.0, 1.1, 0.9]) if number == 11 else np.array(
-        [[1.0, 0.2, 0.1], [0.0, 1.1, 0.3], [0.1, 0.0, 0.9]])
+    stretch = (
+        np.diag([1.0, 1.1, 0.9])
+        if number == 11
+        else np.array([[1.0, 0.2, 0.1], [0.0, 1.1, 0.3], [0.1, 0.0, 0.9]])
+    )
     points = r @ stretch
     model = Model(tmp_path, points, {number: np.arange(len(r))[None]})
     model.table(mirror=[{"normal": n} for n in "xyz"])
@@ -589,15 +703,21 @@ def test_copied_polyhedron_faces_point_outwards(tmp_path):
     points = np.vstack([corners, corners * 0.8 + np.array([0.1, 0.1, 1.0])])
     points += np.array([0.5, 0.2, 0.1])
     faces = [[4, 3, 2, 1, 0], [5, 6, 7, 8, 9]] + [
-        [i, (i + 1) % 5, (i + 1) % 5 + 5, i + 5] for i in range(5)]
+        [i, (i + 1) % 5, (i + 1) % 5 + 5, i + 5] for i in range(5)
+    ]
     stream = [len(faces)]
     for face in faces:
         stream += [len(face), *face]
     grid = pv.UnstructuredGrid(np.array([len(stream), *stream]), np.array([42]), points)
     grid.save(tmp_path / "result.vtu")
-    case = write_case(tmp_path / "case.toml", {
-        "model": {"file": "result.vtu"}, "mirror": [{"normal": "x"}, {"normal": "z"}],
-        "output": {"file": "whole.vtu"}})
+    case = write_case(
+        tmp_path / "case.toml",
+        {
+            "model": {"file": "result.vtu"},
+            "mirror": [{"normal": "x"}, {"normal": "z"}],
+            "output": {"file": "whole.vtu"},
+        },
+    )
     whole = expand_if_served(case)
     alone = polyhedron_volume(grid.get_cell(0))
     assert alone > 0.1
@@ -615,8 +735,9 @@ def test_shell_normals_stay_with_the_body(tmp_path, number):
     order = 2 if number in (22, 23, 28) else 1
     grid, cells = quads(2, 2, order)
     theta, phi = 0.3 + (np.pi / 2 - 0.3) * grid[:, 0], np.pi / 2 * grid[:, 1]
-    points = np.stack([np.sin(theta) * np.cos(phi), np.sin(theta) * np.sin(phi), np.cos(theta)],
-                      axis=1)
+    points = np.stack(
+        [np.sin(theta) * np.cos(phi), np.sin(theta) * np.sin(phi), np.cos(theta)], axis=1
+    )
     columns = {23: [*range(8)], 5: [0, 1, 2], 22: [0, 1, 2, 4, 5, 8]}
     nodes = cells[:, columns.get(number, slice(None))]
     model = Model(tmp_path, points, {number: nodes})
@@ -631,6 +752,7 @@ def test_shell_normals_stay_with_the_body(tmp_path, number):
 
 # --- (7) cells in the plane, nodes on the axis --------------------------------------------------
 
+
 def test_a_web_in_the_cut_plane_is_kept_once(tmp_path):
     """(7) Shells lying in a plane coincide with their image; shares add where that is asked for.
 
@@ -638,10 +760,16 @@ def test_a_web_in_the_cut_plane_is_kept_once(tmp_path):
     """
     points, _ = cube()
     number = np.arange(27).reshape(3, 3, 3)
-    web = [[number[0, j, k], number[0, j + 1, k], number[0, j + 1, k + 1], number[0, j, k + 1]]
-           for j in range(2) for k in range(2)]
-    flange = [[number[i, j, 0], number[i + 1, j, 0], number[i + 1, j + 1, 0], number[i, j + 1, 0]]
-              for i in range(2) for j in range(2)]
+    web = [
+        [number[0, j, k], number[0, j + 1, k], number[0, j + 1, k + 1], number[0, j, k + 1]]
+        for j in range(2)
+        for k in range(2)
+    ]
+    flange = [
+        [number[i, j, 0], number[i + 1, j, 0], number[i + 1, j + 1, 0], number[i, j + 1, 0]]
+        for i in range(2)
+        for j in range(2)
+    ]
     thickness = np.repeat([0.5, 1.0], 4)
     model = Model(tmp_path, points, {9: np.array(web + flange)})
     model.field("thickness", "scalar", follows="body", seam="sum")
@@ -660,7 +788,7 @@ def test_a_web_in_the_cut_plane_is_kept_once(tmp_path):
 def test_a_column_where_planes_meet_is_kept_once(tmp_path):
     """(7) A line cell where two planes meet is one of four; its area is four shares."""
     points, _ = cube()
-    lines = np.array([[0, 1], [1, 2], [2, 11], [11, 14]])    # up the corner, along y = 0, away
+    lines = np.array([[0, 1], [1, 2], [2, 11], [11, 14]])  # up the corner, along y = 0, away
     model = Model(tmp_path, points, {3: lines})
     model.field("area", "scalar", follows="body", seam="sum")
     model.values(cells={"area": np.array([0.25, 0.25, 0.5, 1.0])})
@@ -714,19 +842,31 @@ REFUSED = {
     "50 degrees": (wedge(50), {"mirror": [plane(0), plane(50)]}, "50"),
     "twice at 72": (wedge(72), {"mirror": [plane(0), plane(72)]}, "72"),
     "twice at 120": (wedge(120), {"mirror": [plane(0), plane(120)]}, "120"),
-    "parallel": (cube(skew=False), {"mirror": [{"normal": "x"},
-                                               {"normal": "x", "point": [1, 0, 0]}]}, "parallel"),
-    "one plane twice": (cube(skew=False), {"mirror": [{"normal": "x"}, {"normal": [-2, 0, 0]}]},
-                        "same"),
+    "parallel": (
+        cube(skew=False),
+        {"mirror": [{"normal": "x"}, {"normal": "x", "point": [1, 0, 0]}]},
+        "parallel",
+    ),
+    "one plane twice": (
+        cube(skew=False),
+        {"mirror": [{"normal": "x"}, {"normal": [-2, 0, 0]}]},
+        "same",
+    ),
     "odd part, mixed": (wedge(60), {"mirror": [plane(0), plane(60, "antisymmetric")]}, "60"),
     "no sector of 8": (wedge(40), {"cyclic": {"sectors": 8}}, "45"),
     "too wide for 8": (wedge(50), {"cyclic": {"sectors": 8}}, "45"),
     "two sectors of 8": (wedge(90), {"cyclic": {"sectors": 8}}, "45"),
-    "whole sector with a plane": (wedge(90), {"cyclic": {"sectors": 4}, "mirror": [plane(0)]},
-                                  "45"),
+    "whole sector with a plane": (
+        wedge(90),
+        {"cyclic": {"sectors": 4}, "mirror": [plane(0)]},
+        "45",
+    ),
     "part of a half-sector": (wedge(20), {"cyclic": {"sectors": 4}, "mirror": [plane(0)]}, "45"),
-    "half-sectors, h = 1": (wedge(45), {"cyclic": {"sectors": 4, "nodal_diameters": 1},
-                                        "mirror": [plane(0)]}, "nodal_diameters"),
+    "half-sectors, h = 1": (
+        wedge(45),
+        {"cyclic": {"sectors": 4, "nodal_diameters": 1}, "mirror": [plane(0)]},
+        "nodal_diameters",
+    ),
     "nothing": (cube(), {}, "mirror"),
 }
 
@@ -769,6 +909,7 @@ def test_a_nonlinear_result_may_only_be_symmetric(tmp_path):
 
 
 # --- (10) precision -----------------------------------------------------------------------------
+
 
 def test_single_precision_far_from_the_origin(tmp_path):
     """(10) Coordinates near 1000 in single precision: spacing 6e-5; edges of 0.1 still pair."""
@@ -822,8 +963,11 @@ def test_nodes_slightly_off_the_seam(tmp_path, where):
         else:
             points, cells = wedge(45)
             points = points.copy()
-            at = np.flatnonzero((np.abs(points[:, 1]) < 1e-9) & (np.abs(points[:, 0] - 1.5) < 1e-9)
-                                & (points[:, 2] == 0.5))
+            at = np.flatnonzero(
+                (np.abs(points[:, 1]) < 1e-9)
+                & (np.abs(points[:, 0] - 1.5) < 1e-9)
+                & (points[:, 2] == 0.5)
+            )
             points[at, 1] += off
             tables = {"cyclic": {"sectors": 8}}
         whole = Model(tmp_path, points, cells).values().table(**tables).expand()
@@ -836,9 +980,15 @@ def test_nodes_slightly_off_the_seam(tmp_path, where):
 
 # --- (11) seams that do not close, planes that close both ways ----------------------------------
 
+
 def run_expand(case) -> subprocess.CompletedProcess[str]:
-    return subprocess.run([sys.executable, "-m", "expander.commandline", "expand", str(case)],
-                          capture_output=True, text=True, check=False, timeout=120)
+    return subprocess.run(
+        [sys.executable, "-m", "expander.commandline", "expand", str(case)],
+        capture_output=True,
+        text=True,
+        check=False,
+        timeout=120,
+    )
 
 
 def test_a_failed_seam_stops(tmp_path):
@@ -903,8 +1053,10 @@ def test_a_clamped_plane_closes_under_both_words(tmp_path):
 
 # --- (12) nodal diameters -----------------------------------------------------------------------
 
-@pytest.mark.parametrize(("sectors", "h"), [(7, 3), (7, 4), (5, 5), (8, 5), (8, 8), (2, 2),
-                                            (7, 3.5), (8, -1)])
+
+@pytest.mark.parametrize(
+    ("sectors", "h"), [(7, 3), (7, 4), (5, 5), (8, 5), (8, 8), (2, 2), (7, 3.5), (8, -1)]
+)
 def test_no_such_real_wave(tmp_path, sectors, h):
     """(12) N odd has no N/2, h > N/2 is another direction's name, h between is complex."""
     points, cells = wedge(360 / sectors)
@@ -933,6 +1085,7 @@ def test_real_waves(tmp_path, sectors, h):
 
 
 # --- (14) bad input -----------------------------------------------------------------------------
+
 
 def plain(tmp_path, values, **words):
     points, cells = cube()
@@ -1001,6 +1154,7 @@ def test_missing_array_and_empty_mesh(tmp_path):
 
 # --- (15) local frames --------------------------------------------------------------------------
 
+
 def test_frames_are_turned_to_global_before_they_are_averaged(tmp_path):
     """(15) Stress in a cylindrical frame away from the axis, averaged over a seam.
 
@@ -1009,8 +1163,15 @@ def test_frames_are_turned_to_global_before_they_are_averaged(tmp_path):
     number, which is checked too.
     """
     axis, point = np.array([1.0, 2.0, -0.5]), np.array([4.0, 1.0, 9.0])
-    mesh = block(2, 2, 2).mapped(lambda u, v, w: tuple(placed(np.stack([
-        (1 + u) * np.cos(np.pi / 4 * v), (1 + u) * np.sin(np.pi / 4 * v), w], axis=1)).T))
+    mesh = block(2, 2, 2).mapped(
+        lambda u, v, w: tuple(
+            placed(
+                np.stack(
+                    [(1 + u) * np.cos(np.pi / 4 * v), (1 + u) * np.sin(np.pi / 4 * v), w], axis=1
+                )
+            ).T
+        )
+    )
     rng = np.random.default_rng(7)
     corner = full(rng.normal(size=(8 * 8, 6))).reshape(8, 8, 3, 3)
     steps = [turn(2 * np.pi / 8 * k, Z, SHIFT) for k in range(8)]
@@ -1023,8 +1184,10 @@ def test_frames_are_turned_to_global_before_they_are_averaged(tmp_path):
     model.field("s", "symmetric tensor", components=SIX, seam="recovered", frame="F")
     mean = nodal_mean(mesh, corner)
     model.values(points={"s": in_frame(mesh.points, mean)})
-    model.table(cyclic={"sectors": 8, "axis": Z, "point": SHIFT},
-                frames={"F": {"type": "cylindrical", "axis": axis, "point": point}})
+    model.table(
+        cyclic={"sectors": 8, "axis": Z, "point": SHIFT},
+        frames={"F": {"type": "cylindrical", "axis": axis, "point": point}},
+    )
     whole = model.expand()
     total, count = np.zeros((whole.n_points, 3, 3)), np.zeros(whole.n_points)
     plain_mean = np.zeros((whole.n_points, 6))
@@ -1041,6 +1204,7 @@ def test_frames_are_turned_to_global_before_they_are_averaged(tmp_path):
 
 # --- parts of a body, and what is written -------------------------------------------------------
 
+
 def loaded_quarter(tmp_path):
     """A quarter with mixed words and a field of each seam rule that need not close."""
     rng = np.random.default_rng(11)
@@ -1049,10 +1213,16 @@ def loaded_quarter(tmp_path):
     model.field("f", "polar vector", seam="sum")
     model.field("s", "symmetric tensor", components=SIX, seam="recovered")
     model.field("T", "invariant").field("w", "axial vector", on="cells")
-    model.values(points={"f": rng.normal(size=(27, 3)), "s": rng.normal(size=(27, 6)),
-                         "T": rng.random(27)}, cells={"w": rng.normal(size=(8, 3))})
-    return model.table(mirror=[{"normal": X, "point": SHIFT},
-                               {"normal": Y, "point": SHIFT, "load": "antisymmetric"}])
+    model.values(
+        points={"f": rng.normal(size=(27, 3)), "s": rng.normal(size=(27, 6)), "T": rng.random(27)},
+        cells={"w": rng.normal(size=(8, 3))},
+    )
+    return model.table(
+        mirror=[
+            {"normal": X, "point": SHIFT},
+            {"normal": Y, "point": SHIFT, "load": "antisymmetric"},
+        ]
+    )
 
 
 def test_a_cutaway_shows_the_whole_bodys_values(tmp_path):
@@ -1075,8 +1245,11 @@ def test_seams_left_open_are_not_resolved(tmp_path):
     values = model.data["result"][0]
     whole = model.table(output={"file": "open.vtu", "merge": False}).expand()
     assert whole.n_points == 4 * 27
-    mirrored = {0: (np.eye(3), np.zeros(3), 1), 1: (*mirror(X, SHIFT), 1),
-                2: (*mirror(Y, SHIFT), -1)}
+    mirrored = {
+        0: (np.eye(3), np.zeros(3), 1),
+        1: (*mirror(X, SHIFT), 1),
+        2: (*mirror(Y, SHIFT), -1),
+    }
     points = model.points
     for Q, t, chi in mirrored.values():
         image = points @ Q.T + t
