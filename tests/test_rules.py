@@ -284,6 +284,12 @@ def test_sum_of_integers_that_is_no_integer(tmp_path: Path) -> None:
         expand(summed(tmp_path, data, fields, 0.25))
 
 
+def test_declared_labels_are_kept_in_a_sum(tmp_path: Path) -> None:
+    """Zone 3 is zone 3 in both cases and in their sum."""
+    case = summed(tmp_path, {"zone": np.array([3.0])}, {"zone": {"kind": "label"}})
+    np.testing.assert_array_equal(expand(case).cell_data["zone"], [3.0, 3.0])
+
+
 @pytest.mark.parametrize(
     ("first", "second", "want"),
     [("f4", "f4", "f4"), ("f4", "f8", "f8"), ("f8", "f4", "f8"), ("i2", "f4", "f8")],
