@@ -25,7 +25,7 @@ from expander.admission import (
 )
 from expander.behaviours import factors
 from expander.casefile import CaseFile, CaseTable, Direction, plane_names
-from expander.closing import Opening, check_closing
+from expander.closing import Opening, averaged_notes, check_closing
 from expander.declarations import fields_of
 from expander.derived import derived_notes
 from expander.errors import InputError
@@ -168,6 +168,8 @@ def prepare(
     resolved = _resolved(mesh, fields, cases, nodes, group, "points", apart)
     openings = check_closing(mesh, group, fields, cases, nodes, resolved, case.seam.limit,
                              keep_apart=case.seam.open == "keep apart")  # fmt: skip
+    notes += averaged_notes(fields, cases, nodes, resolved)
+    notes += _order_notes(fields)
     for o in openings:
         notes.append(
             f"the seam is open at {len(o.nodes)} nodes for {o.field!r} in case {o.case!r} (worst "
@@ -246,6 +248,18 @@ def _resolved(
                 found[f.name, k] = resolve(f, values, places, classes, group, c.chi, weights,
                                            on_axis, own)  # fmt: skip
     return found
+
+
+def _order_notes(fields: list[Field]) -> list[str]:
+    """Stored orders of tensors that neither the case nor the file names."""
+    return [
+        f"{f.name!r} is taken as stored in the order {' '.join(f.quantity.components)}"
+        + (f", {'engineering' if f.quantity.engineering else 'tensor'} shear"
+           if f.kind == "symmetric tensor" else "")
+        + f"; if not, set fields.{f.name}.components"
+        for f in fields
+        if f.order_assumed
+    ]  # fmt: skip
 
 
 def _double_cells(cells: Classes) -> str:

@@ -85,7 +85,8 @@ def check_closing(
             opposite = _opposite_closes(f, found, open_, limit * largest)
             if not keep_apart or opposite:
                 raise _open(mesh, group, f, case, classes, found, worst, largest, limit,
-                            int(open_.sum()), opposite)  # fmt: skip
+                            int(open_.sum()), opposite,
+                            _others_close(fields, f, k, case, resolved, limit))  # fmt: skip
             entries = np.flatnonzero(found.apart > limit * largest)
             openings.append(
                 Opening(f.name, case.name, tuple(entries.tolist()),
@@ -93,6 +94,54 @@ def check_closing(
                         float(found.jumps[worst]) / largest)
             )  # fmt: skip
     return openings
+
+
+def _others_close(
+    fields: list[Field],
+    this: Field,
+    k: int,
+    case: LoadCase,
+    resolved: dict[tuple[str, int], Resolved],
+    limit: float,
+) -> bool:
+    """Whether some other field that is not zero at the seam closes with the declared load words."""
+    for f in fields:
+        if f is this or f.on != "points" or f.seam != "agree" or f.follows != "load":
+            continue
+        found, largest = resolved[f.name, k], _largest(f.values(case.model))
+        there = float(np.linalg.norm(np.nan_to_num(found.own), axis=1).max(initial=0.0))
+        if there > limit * largest and float(found.jumps.max(initial=0.0)) <= limit * largest:
+            return True
+    return False
+
+
+# Nodal means at seams commonly differ by 10 to 20 % of the peak; more than this is no mesh effect.
+_LARGE = 0.5
+
+
+def averaged_notes(
+    fields: list[Field],
+    cases: tuple[LoadCase, ...],
+    classes: Classes,
+    resolved: dict[tuple[str, int], Resolved],
+) -> list[str]:
+    """Recovered values whose sides differ so much that averaging may hide a mistake."""
+    notes = []
+    for k, case in enumerate(cases):
+        for f in fields:
+            found = resolved.get((f.name, k))
+            if f.on != "points" or f.seam != "recovered" or found is None or not len(found.jumps):
+                continue
+            largest = _largest(f.values(case.model))
+            worst = int(np.argmax(found.jumps))
+            if largest > 0.0 and float(found.jumps[worst]) > _LARGE * largest:
+                notes.append(
+                    f"{f.name!r} in case {case.name!r}: the two sides of the seam differ by up to "
+                    f"{100 * found.jumps[worst] / largest:.3g} % of its largest value (node "
+                    f"{classes.items[worst]}) and were averaged; check kind, components and load "
+                    "word"
+                )
+    return notes
 
 
 def _opposite_closes(f: Field, found: Resolved, open_: np.ndarray, allowed: float) -> bool:
@@ -121,12 +170,18 @@ def _open(
     limit: float,
     count: int,
     opposite: bool,
+    others_close: bool,
 ) -> CheckFailed:
     node = int(classes.items[worst])
     copy = int(found.through[worst])
     at = ", ".join(f"{c:.6g}" for c in mesh.points[node])
     hint = ""
-    if opposite:
+    if opposite and others_close:
+        hint = (
+            " Other fields close with the declared load words, and this one would with the "
+            "opposite sign: its kind looks wrong (polar against axial vector)."
+        )
+    elif opposite:
         hint = " With the opposite sign it closes: " + _other_word(group, case, copy)
     return CheckFailed(
         f"Field {f.name!r} does not close along the seam of the copy {group.words(copy)} "

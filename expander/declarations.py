@@ -230,7 +230,8 @@ def _declared(
     if word is not None and word.kind != q.kind.name:
         decided += f" (by name it would be a {word.kind})"
     return Field(name, q, follows, seam, frame, on, arrays, columns,
-                 table.unit or "", decided, table.shear is None)  # fmt: skip
+                 table.unit or "", decided, table.shear is None,
+                 q.kind.rank == 2 and components is None and not order)  # fmt: skip
 
 
 def _where(arrays: tuple[str, ...], on: str | None, model: Model, path: str) -> str:
@@ -263,8 +264,9 @@ def _by_name(
 ) -> Field:
     q, order = _ordered(word.kind, size, None, named, frame, "tensor")
     seam = "lowest copy" if word.follows == "body" and word.seam != "sum" else word.seam
+    assumed = q.kind.rank == 2 and not order
     return Field(name, q, word.follows, seam, frame, on, (name,), None, "", f"by name{order}",
-                 True)  # fmt: skip
+                 True, assumed)  # fmt: skip
 
 
 def _ordered(

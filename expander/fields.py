@@ -34,6 +34,8 @@ class Field:
     arrays : the arrays that hold it; one, or one per component.
     columns : columns of the one array that are used, counted from 0; None for all.
     decided : how the kind was decided, in words.
+    shear_assumed, order_assumed : neither the case nor the file says how shear or components are
+        stored.
     """
 
     name: str
@@ -47,6 +49,7 @@ class Field:
     unit: str
     decided: str
     shear_assumed: bool = False
+    order_assumed: bool = False
 
     @property
     def kind(self) -> str:

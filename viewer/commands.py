@@ -115,7 +115,7 @@ for _parameter in picture.params:
               help="New folder for the demo [default: seamfold_demo/NAME].")  # fmt: skip
 @size_option
 def demo(name: str | None, folder: Path | None, size: str) -> None:
-    """Run a demo case: its files, the whole body and a picture, in a folder of their own.
+    """List the demo cases, or run one in a folder of its own.
 
     Without NAME the demo cases are listed; the NAME all runs every one of them.
 

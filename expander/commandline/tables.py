@@ -76,8 +76,13 @@ def print_summary(found: dict[str, Any]) -> None:
         low, high = found["tolerance"]
         facts.add_row(
             "stitched",
-            f"{points['merged']:,} nodes and {cells['merged']:,} cells merged; partners at most "
-            f"{found['worst_distance']:.3g} apart (tolerance {low:.3g}"
+            f"{points['merged']:,} nodes and {cells['merged']:,} cells merged; partners "
+            + (
+                f"at most {found['worst_distance']:.3g} apart"
+                if found["worst_distance"]
+                else "coincide"
+            )
+            + f" (tolerance {low:.3g}"
             + (f" to {high:.3g})" if high > low else ")"),
         )
     facts.add_row(
@@ -93,11 +98,16 @@ def print_summary(found: dict[str, Any]) -> None:
     if signs is not None:
         console.print("components that change sign across a cut plane")
         console.print(signs)
+        if any("mixed" in w.values() for f in found["fields"] for w in f["changes_sign"].values()):
+            console.print("combined: the plane is oblique, so components mix (Q v, Q T Q^T)")
+    several = len(found["cases"]) > 1
     for result in found["results"]:
         terms = " + ".join(f"{a:g} {name}" for name, a in result["terms"].items())
         mark = "wrote" if found["written"] else "would write"
         left = f"; left out: {', '.join(result['left_out'])}" if result["left_out"] else ""
-        line = escape(f"{mark} {result['file']}  ({result['name']} = {terms}{left})")
+        alone = list(result["terms"].items()) == [(result["name"], 1.0)]
+        what = f"({result['name']} = {terms}{left})" if not alone else f"({result['name']})"
+        line = escape(f"{mark} {result['file']}  " + (what if several else ""))
         console.print(line, soft_wrap=True)  # a path must stay in one piece
     if found["index"]:
         console.print(escape(f"index {found['index']}"), soft_wrap=True)
