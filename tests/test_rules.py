@@ -463,3 +463,40 @@ def test_the_expander_does_not_know_the_viewer() -> None:
                 names = [node.module or ""]
             for name in names:
                 assert name.partition(".")[0] not in ("viewer", "demo_cases"), file
+
+
+# --- what is said of values that were averaged ----------------------------------------------------
+
+
+@pytest.mark.parametrize("sign", [1.0, -1.0])
+def test_averaging_very_different_values_is_said(sign: float, tmp_path: Path) -> None:
+    """A normal traction free stress xy across a symmetric plane vanishes there (J. F. Nye); one
+    that does not differs from its image by twice itself."""
+    sector = box((1, 1, 1))
+    stress = np.zeros((len(sector.points), 6))
+    stress[:, 0 if sign > 0 else 3] = 1.0
+    body = expand(case_of(tmp_path, sector, {"mirror": [{"normal": "x"}]}, {"stress": stress}))
+    told = "differ by up to 200 %" in " ".join(body.field_data["assumptions"])
+    assert told == (sign < 0)
+
+
+def test_assumed_order_is_said_and_a_declared_one_is_not(tmp_path: Path) -> None:
+    sector = box((1, 1, 1))
+    zero = {"stress": np.zeros((len(sector.points), 6))}
+    tables = {"mirror": [{"normal": "x"}]}
+    declared = {"stress": {"kind": "symmetric tensor", "components": "xx yy zz xy yz zx"}}
+    for fields, expected in (({}, True), (declared, False)):
+        body = expand(case_of(tmp_path, sector, {**tables, "fields": fields}, zero))
+        assert ("stored in the order" in " ".join(body.field_data["assumptions"])) == expected
+
+
+def test_wrong_kind_is_told_from_a_wrong_load_word(tmp_path: Path) -> None:
+    """Half the curl of a symmetric displacement (y z, ..), declared polar: the displacement closes,
+    so the load word is right and the kind is not."""
+    sector = box((2, 2, 2))
+    x, y, z = sector.points.T
+    data = {"displacement": np.c_[x * y, x * x + z, y], "turning": np.c_[0 * x, 0 * x + z, x + y]}
+    data["turning"][:, 0] = 0.0
+    fields = {"turning": {"kind": "axial vector"}}
+    with pytest.raises(CheckFailed, match="kind looks wrong"):
+        expand(case_of(tmp_path, sector, {"mirror": [{"normal": "x"}], "fields": fields}, data))
