@@ -14,6 +14,7 @@ import argparse
 import os
 import re
 import shutil
+import signal
 import subprocess
 import sys
 import tempfile
@@ -191,6 +192,7 @@ def main() -> int:
         print(f"{len(mutants)} mutants")
         return 0
 
+    signal.signal(signal.SIGTERM, lambda *_: sys.exit(143))  # so that copies are removed
     start = time.perf_counter()
     counts = {"noticed": 0, "SURVIVED": 0, "stale": 0}
     with tempfile.TemporaryDirectory(prefix="seamfold-mutants-") as name:
