@@ -100,7 +100,8 @@ def check_touch(mesh: Mesh, group: Group, seams: Seams, keep_apart: bool) -> lis
     The planes are those that bound the copies next to the model, declared or implied.
     """
     notes = []
-    for g in _walls(group, mesh):
+    walls = _walls(group, mesh)
+    for g in walls:
         if seams.pairs.get(g):
             continue
         normal, level = next((n, d) for k, n, d in group.mirrors if k == g)
@@ -116,7 +117,7 @@ def check_touch(mesh: Mesh, group: Group, seams: Seams, keep_apart: bool) -> lis
                 f"{2 * off[node]:.3g} if the nodes are off; if the clearance is meant, "
                 'seam.open = "keep apart".',
             )
-        for other in _walls(group, mesh):
+        for other in walls:
             if other != g:
                 _check_span(mesh, group, g, other)
         notes.append(
