@@ -7,9 +7,10 @@ from pathlib import Path
 import numpy as np
 from numpy.typing import NDArray
 
+from expander.behaviours import Behaviour, Factors
 from expander.casefile import CaseFile, CaseTable
 from expander.cells import require_known
-from expander.errors import InputError
+from expander.errors import InputError, NotYetError
 from expander.fields import Field
 from expander.frames import Cylindrical
 from expander.groups import Group
@@ -60,7 +61,8 @@ def check_mesh(model: Model) -> None:
 def _all_finite(values: NDArray[np.generic]) -> bool:
     """Whether all numbers are finite; a finite sum is the quick proof."""
     with np.errstate(over="ignore", invalid="ignore"):
-        quick = bool(np.isfinite(values.sum(dtype=float)))
+        wide = np.complex128 if np.iscomplexobj(values) else np.float64
+        quick = bool(np.isfinite(values.sum(dtype=wide)))
     return quick or bool(np.isfinite(values).all())
 
 
@@ -121,7 +123,7 @@ def check_linear(case: CaseFile, cases: tuple[LoadCase, ...]) -> None:
         return
     why = ""
     for c in cases:
-        if c.chi.min() < 0:
+        if not c.plain:
             why = f"case {c.name!r} is antisymmetric or has nodal diameters ({c.behaviour.words()})"
         elif c.factor != 1.0:
             why = f"case {c.name!r} has factor = {c.factor:g}"
@@ -135,6 +137,53 @@ def check_linear(case: CaseFile, cases: tuple[LoadCase, ...]) -> None:
         )
 
 
+def refuse_complex(case: CaseFile, behaviours: list[Behaviour], chis: list[Factors]) -> None:
+    """Refuse complex fields and factors where they cannot be served yet."""
+    for behaviour, chi in zip(behaviours, chis, strict=True):
+        if np.iscomplexobj(chi) and case.cyclic is not None:
+            h, sectors = behaviour.nodal_diameters, case.cyclic.sectors
+            half = f" and {sectors // 2}" if sectors % 2 == 0 else ""
+            raise NotYetError(
+                f"nodal_diameters = {h} with {sectors} sectors needs complex results (a phase of "
+                f"{360.0 * h / sectors:.6g} degrees from sector to sector), which this version "
+                "does not expand yet.",
+                f"This version expands nodal_diameters = 0{half} for {sectors} sectors; it checks "
+                "the others: seamfold check.",
+            )
+    for name, table in case.fields.items():
+        if table.real is not None or table.amplitude is not None:
+            raise NotYetError(
+                f"fields.{name} is complex, which this version checks (seamfold check) but does "
+                "not expand yet.",
+                f'Give one part of it as a field of its own: arrays = ["{(table.real or [""])[0]}"]'
+                if table.real is not None
+                else "Leave the table out with --skip-undeclared.",
+            )
+
+
+def check_complex(fields: list[Field], case: LoadCase) -> None:
+    """With ``0 < h < N/2`` a field that follows the load must be complex and linear."""
+    if not case.complex_factors:
+        return
+    for f in fields:
+        if f.follows == "body" or f.kind == "label":
+            continue
+        if not f.quantity.linear:
+            raise InputError(
+                f"Field {f.name!r} in case {case.name!r} ({case.behaviour.words()}): an "
+                f"{f.kind} differs from copy to copy where a wave runs around the ring, so it "
+                "cannot be copied.",
+                "Leave the field out (--skip-undeclared), and compute it from the components.",
+            )
+        if not f.complex_values:
+            raise InputError(
+                f"Field {f.name!r} in case {case.name!r} ({case.behaviour.words()}) is real, but a "
+                "wave has an amplitude and a phase at each node.",
+                f'Under [fields.{f.name}] give real = ".." and imaginary = "..", or amplitude and '
+                "phase_degrees; or leave the field out (--skip-undeclared).",
+            )
+
+
 def check_numbers(
     fields: list[Field], cases: tuple[LoadCase, ...], allow_nan: bool
 ) -> dict[str, int]:
@@ -143,7 +192,7 @@ def check_numbers(
     for c in cases:
         for f in fields:
             values = f.values(c.model)
-            if not np.issubdtype(values.dtype, np.floating):
+            if not np.issubdtype(values.dtype, np.inexact):
                 continue
             if _all_finite(values):
                 continue

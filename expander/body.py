@@ -6,45 +6,25 @@ byte is written, and leaves a `WholeBody` that the writers stream from.
 
 from __future__ import annotations
 
-from collections.abc import Callable
 from dataclasses import dataclass, field
 from functools import cached_property
 
 import numpy as np
 
-from expander.admission import (
-    check_constant,
-    check_integers,
-    check_linear,
-    check_mesh,
-    check_numbers,
-    check_same_arrays,
-    check_same_mesh,
-    check_storage,
-    read_models,
-)
-from expander.behaviours import factors
-from expander.casefile import CaseFile, CaseTable, Direction, plane_names
+from expander.casefile import CaseFile
 from expander.closing import Opening, averaged_notes, check_closing
-from expander.declarations import fields_of
 from expander.derived import derived_notes
 from expander.errors import InputError
-from expander.fields import (
-    Field,
-    check_invariants,
-    check_load_odd,
-    check_shear,
-    frames_of,
-)
-from expander.groups import CutPlane, CyclicAxis, Group, make_group
-from expander.loadcases import LoadCase, Result, behaviour_of, results_of
+from expander.fields import Field
+from expander.groups import Group
+from expander.loadcases import LoadCase, Result
 from expander.model import Mesh
 from expander.numbering import Numbering, shared_cells
-from expander.placements import Floats, unit
+from expander.placements import Floats
 from expander.resolve import Resolved, resolve
-from expander.seams import Classes, Seams, find_seams
+from expander.seams import Classes, Seams
+from expander.sector import Sector, Step, on_axis, read_sector
 from expander.surroundings import not_averaged
-from expander.tiling import check_sides, check_touch, check_turns
 from expander.topology import Ints, cell_centres, cells_at_nodes
 
 
@@ -91,14 +71,7 @@ class WholeBody:
     @cached_property
     def on_axis(self) -> float:
         """Distance from the axis of a cylindrical frame that counts as on it."""
-        return _on_axis(self.mesh)
-
-
-def _on_axis(mesh: Mesh) -> float:
-    return 1e-9 * mesh.size + 8.0 * mesh.spacing
-
-
-Step = Callable[[str], None]
+        return on_axis(self.mesh)
 
 
 def prepare(
@@ -120,56 +93,21 @@ def prepare(
     CheckFailed
         If a primary field does not close along a seam (exit status 1).
     """
-    group = _group(case)
-    tables = case.case or [CaseTable(name="result")]
-    behaviours = [behaviour_of(case, t) for t in tables]
-    signs = [factors(group, b) for b in behaviours]
-    step("reading")
-    models = read_models(case, tables, allow_nan)
-    mesh = models[0].mesh
-    notes = [note for m in dict.fromkeys(models) for note in m.notes]
-    check_mesh(models[0])
-    for name, model in zip([t.name for t in tables][1:], models[1:], strict=True):
-        check_same_mesh(models[0], model, name)
-        notes += check_same_arrays(models[0], model, name, skip_undeclared)
-    cases = tuple(
-        LoadCase(t.name, m, b, chi, t.factor)
-        for t, m, b, chi in zip(tables, models, behaviours, signs, strict=True)
-    )
-    results = results_of(case, cases)
-    check_linear(case, cases)
-    odd = any(c.chi.min() < 0 for c in cases)
-    frames = frames_of(case, {n: _direction(t.axis, f"frames.{n}.axis")
-                              for n, t in case.frames.items()})  # fmt: skip
-    scaled = bool(case.sum) or any(c.factor != 1.0 for c in cases)
-    fields, left_out = fields_of(models[0], case, frames, skip_undeclared, odd, scaled)
-    notes += left_out
-    check_shear(fields, group.placements)
-    for c in cases:
-        if c.chi.min() < 0:
-            check_load_odd(fields, f"case {c.name!r} ({c.behaviour.words()}), antisymmetric")
-    if case.sum:
-        check_invariants(fields, f"the sum {case.sum[0].name!r}")
-    check_storage(fields, group)
-    check_integers(fields, cases, group)
-    check_constant(fields, cases, results)
-    invalid = check_numbers(fields, cases, allow_nan)
-    step("checking the copies")
-    tolerance = case.seam.tolerance
-    check_sides(mesh, group, tolerance)
-    step("finding seams")
-    seams = find_seams(mesh, group, tolerance)
-    notes += check_touch(mesh, group, seams, case.seam.open == "keep apart")
-    notes += check_turns(mesh, group, seams, tolerance)
+    return plan_body(read_sector(case, skip_undeclared, allow_nan, step), step)
+
+
+def plan_body(sector: Sector, step: Step = lambda words: None) -> WholeBody:
+    """Resolve the seams of a sector and number the whole body; raises as `prepare`."""
+    case, group, mesh, cases = sector.case, sector.group, sector.mesh, sector.cases
+    fields, notes, seams = list(sector.fields), list(sector.notes), sector.seams
     step("resolving seams")
     nodes = seams.nodes
-    apart, words = not_averaged(mesh, models[0], fields, nodes, group)
+    apart, words = not_averaged(mesh, sector.model, fields, nodes, group)
     notes += words
     resolved = _resolved(mesh, fields, cases, nodes, group, "points", apart)
     openings = check_closing(mesh, group, fields, cases, nodes, resolved, case.seam.limit,
                              keep_apart=case.seam.open == "keep apart")  # fmt: skip
     notes += averaged_notes(fields, cases, nodes, resolved)
-    notes += _order_notes(fields)
     for o in openings:
         notes.append(
             f"the seam is open at {len(o.nodes)} nodes for {o.field!r} in case {o.case!r} (worst "
@@ -200,29 +138,9 @@ def prepare(
             "only some copies are built: values at their open sides are those of the whole body, "
             "so the forces of the part do not balance"
         )
-    return WholeBody(case, group, mesh, tuple(fields), cases, results, _copies(case, group),
+    return WholeBody(case, group, mesh, tuple(fields), cases, sector.results, _copies(case, group),
                      seams, nodes, cells, resolved, tuple(openings), tuple(notes),
-                     invalid)  # fmt: skip
-
-
-def _direction(word: Direction, key: str) -> Floats:
-    vector = np.eye(3)["xyz".index(word)] if isinstance(word, str) else np.array(word, dtype=float)
-    if not vector.any():
-        raise InputError(f"{key} = [0, 0, 0] has no direction.", 'Expected "x", "y", "z" or three '
-                         "numbers that are not all zero.")  # fmt: skip
-    return unit(vector)
-
-
-def _group(case: CaseFile) -> Group:
-    planes = [
-        CutPlane(n, _direction(m.normal, f"mirror {n!r}: normal"), np.array(m.point, dtype=float))
-        for n, m in zip(plane_names(case), case.mirror, strict=True)
-    ]
-    axis = None
-    if case.cyclic is not None:
-        axis = CyclicAxis(case.cyclic.sectors, _direction(case.cyclic.axis, "cyclic.axis"),
-                          np.array(case.cyclic.point, dtype=float))  # fmt: skip
-    return make_group(planes, axis)
+                     sector.invalid_numbers)  # fmt: skip
 
 
 def _resolved(
@@ -237,7 +155,7 @@ def _resolved(
     items = classes.items
     places = mesh.points[items] if on == "points" else cell_centres(mesh)[items]
     weights = cells_at_nodes(mesh, items) if on == "points" and len(items) else None
-    on_axis = _on_axis(mesh)
+    near_axis = on_axis(mesh)
     own = None if apart is None else np.isin(items, apart)
     found = {}
     for k, c in enumerate(cases):
@@ -246,20 +164,8 @@ def _resolved(
             if f.on == on and (on == "points" or f.seam == "sum"):
                 values = f.values(c.model)[items]
                 found[f.name, k] = resolve(f, values, places, classes, group, c.chi, weights,
-                                           on_axis, own)  # fmt: skip
+                                           near_axis, own)  # fmt: skip
     return found
-
-
-def _order_notes(fields: list[Field]) -> list[str]:
-    """Stored orders of tensors that neither the case nor the file names."""
-    return [
-        f"{f.name!r} is taken as stored in the order {' '.join(f.quantity.components)}"
-        + (f", {'engineering' if f.quantity.engineering else 'tensor'} shear"
-           if f.kind == "symmetric tensor" else "")
-        + f"; if not, set fields.{f.name}.components"
-        for f in fields
-        if f.order_assumed
-    ]  # fmt: skip
 
 
 def _double_cells(cells: Classes) -> str:

@@ -25,7 +25,12 @@ def _one_or_many(value: Any) -> Any:
     return [value] if isinstance(value, str) else value
 
 
+def _one_table(value: Any) -> Any:
+    return [value] if isinstance(value, Mapping) else value
+
+
 Names = Annotated[list[str], BeforeValidator(_one_or_many)]
+Arrays = Annotated[Names, Field(min_length=1)]
 
 
 class Table(BaseModel):
@@ -46,6 +51,7 @@ class MirrorTable(Table):
     normal: Direction
     point: Vector = [0.0, 0.0, 0.0]
     load: LoadWord = "symmetric"
+    held: bool = False
 
 
 class CyclicTable(Table):
@@ -63,7 +69,11 @@ class FieldTable(Table):
     seam: SeamRule | None = None
     follows: Literal["load", "body"] | None = None
     frame: str = "global"
-    arrays: Annotated[Names, Field(min_length=1)] | None = None
+    arrays: Arrays | None = None
+    real: Arrays | None = None
+    imaginary: Arrays | None = None
+    amplitude: Arrays | None = None
+    phase_degrees: Arrays | None = None
     columns: list[int] | None = None
     on: Literal["points", "cells"] | None = None
     unit: str | None = None
@@ -93,7 +103,38 @@ class SumTable(Table):
 class SeamTable(Table):
     tolerance: float | None = Field(default=None, gt=0.0)
     limit: float = Field(default=1e-4, gt=0.0)
+    scatter: float = Field(default=4.0, gt=0.0)
     open: Literal["refuse", "keep apart"] = "refuse"
+
+
+class ExpectTable(Table):
+    """What the user expects of the whole body, for all results or the one named."""
+
+    result: str | None = None
+    force: Vector | None = None
+    moment: Vector | None = None
+    about: Vector = [0.0, 0.0, 0.0]
+    field: str | None = None
+    mass: float | None = Field(default=None, gt=0.0)
+    pieces: int | None = Field(default=None, ge=1)
+    balance: bool = True
+    tolerance: float = Field(default=1e-3, gt=0.0)
+
+
+class SectionTable(Table):
+    """A plane through the whole body across which force and moment are wanted."""
+
+    name: str | None = None
+    normal: Direction
+    point: Vector = [0.0, 0.0, 0.0]
+    about: Vector | None = None
+
+
+class ReReferenceTable(Table):
+    """The rigid-body motion that is taken out of the displacement."""
+
+    method: Literal["least squares", "three points"]
+    nodes: list[int] | None = None
 
 
 class OutputTable(Table):
@@ -122,6 +163,9 @@ class CaseFile(Table):
     case: list[CaseTable] = []
     sum: list[SumTable] = []
     seam: SeamTable = SeamTable()
+    expect: Annotated[list[ExpectTable], BeforeValidator(_one_table)] = []
+    section: Annotated[list[SectionTable], BeforeValidator(_one_table)] = []
+    re_reference: ReReferenceTable | None = None
     output: OutputTable = OutputTable()
     folder: Path = Path()
     source: Path | None = None
@@ -138,8 +182,6 @@ _OTHER_WORDS = {
 _LATER = {
     r"model\.(step|once)": "Steps and parts modelled whole",
     r"case\[\d+\]\.step": "Steps",
-    r"fields\..+\.(real|imaginary|amplitude|phase_degrees)": "Complex results",
-    r"expect(\..*)?": "Totals expected of the whole body",
     r"output\.phases": "Phases of complex results",
 }
 _LATER_VALUES = {
@@ -281,19 +323,56 @@ def _check_names(case: CaseFile, where: str) -> None:
                     _suggest(term, cases) + f"Declared cases: {', '.join(cases)}.",
                 )
     results = cases + sums
-    for result in case.output.results or []:
+    named = [("output.results", r) for r in case.output.results or []]
+    named += [("expect.result", e.result) for e in case.expect if e.result is not None]
+    for key, result in named:
         if result not in results:
             raise InputError(
-                f"{where}: output.results names {result!r}, which is neither a case nor a sum.",
+                f"{where}: {key} names {result!r}, which is neither a case nor a sum.",
                 _suggest(result, results) + f"Declared: {', '.join(results) or 'none'}.",
             )
+    _unique(section_names(case), f"{where}: two sections are named",
+            "Give each [[section]] its own name.")  # fmt: skip
+    held = case.re_reference
+    if held is not None and (held.method == "three points") != (held.nodes is not None):
+        raise InputError(
+            f"{where}: re_reference.method = {held.method!r} "
+            + ("needs nodes." if held.nodes is None else "takes no nodes."),
+            'Expected nodes = [12, 40, 77] with method = "three points", and only there.',
+        )
     for name, table in case.fields.items():
+        _check_parts(name, table, where)
         if table.frame != "global" and table.frame not in case.frames:
             raise InputError(
                 f"{where}: fields.{name}.frame = {table.frame!r} is not declared.",
                 _suggest(table.frame, list(case.frames))
                 + f'Add [frames.{table.frame}] with type = "cylindrical", axis and point.',
             )
+
+
+_PARTS = (("real", "imaginary"), ("amplitude", "phase_degrees"))
+
+
+def _check_parts(name: str, table: FieldTable, where: str) -> None:
+    """A complex field is stored as two sets of arrays of one of two kinds."""
+    given = [k for pair in _PARTS for k in pair if getattr(table, k) is not None]
+    if not given:
+        return
+    pair = next(p for p in _PARTS if given[0] in p)
+    first, second = (getattr(table, k) for k in pair)
+    if tuple(given) != pair or table.arrays is not None or len(first) != len(second):
+        raise InputError(
+            f"{where}: fields.{name} gives {' and '.join(given)}"
+            + (" and arrays" if table.arrays is not None else "")
+            + ": a complex field is two arrays, or two lists of as many arrays.",
+            f'Expected real = "{name}_real" and imaginary = "{name}_imag", or amplitude = ".." and '
+            'phase_degrees = "..".',
+        )
+
+
+def section_names(case: CaseFile) -> list[str]:
+    """Names of the sections, "section 1", "section 2", .. where none is given."""
+    return [s.name or f"section {k + 1}" for k, s in enumerate(case.section)]
 
 
 def writable(name: str) -> bool:
@@ -360,7 +439,8 @@ def _allowed(table: type[Table]) -> str:
 _TABLES: dict[str, type[Table]] = {
     "model": ModelTable, "mirror": MirrorTable, "cyclic": CyclicTable, "fields": FieldTable,
     "frames": FrameTable, "case": CaseTable, "sum": SumTable, "seam": SeamTable,
-    "output": OutputTable,
+    "output": OutputTable, "expect": ExpectTable, "section": SectionTable,
+    "re_reference": ReReferenceTable,
 }  # fmt: skip
 
 

@@ -64,7 +64,7 @@ def fields_of(
     """
     where = str(case.source) if case.source else "the options"
     fields = [_declared(n, t, model, frames, where) for n, t in case.fields.items()]
-    used = {(f.on, a) for f in fields for a in f.arrays}
+    used = {(f.on, a) for f in fields for a in (*f.arrays, *f.second)}
     left = _Unexplained()
     for on, data in (("points", model.point_data), ("cells", model.cell_data)):
         other = model.cell_data if on == "points" else model.point_data
@@ -158,10 +158,12 @@ def _told_by_components(named: tuple[str, ...], kind: str, frame: Frame) -> str:
 def _declared(
     name: str, table: FieldTable, model: Model, frames: Mapping[str, Frame], where: str
 ) -> Field:
-    arrays = tuple(table.arrays or [name])
+    arrays = tuple(table.arrays or table.real or table.amplitude or [name])
+    second = tuple(table.imaginary or table.phase_degrees or [])
     path = f"{where}: fields.{name}"
-    on = _where(arrays, table.on, model, path)
+    on = _where(arrays + second, table.on, model, path)
     data = model.point_data if on == "points" else model.cell_data
+    _check_second(arrays, second, data, path)
     shapes = [1 if data[a].ndim == 1 else data[a].shape[1] for a in arrays]
     if len(arrays) > 1 and set(shapes) != {1}:
         wide = arrays[int(np.argmax(np.array(shapes) > 1))]
@@ -231,7 +233,23 @@ def _declared(
         decided += f" (by name it would be a {word.kind})"
     return Field(name, q, follows, seam, frame, on, arrays, columns,
                  table.unit or "", decided, table.shear is None,
-                 q.kind.rank == 2 and components is None and not order)  # fmt: skip
+                 q.kind.rank == 2 and components is None and not order,
+                 second, table.amplitude is not None)  # fmt: skip
+
+
+def _check_second(
+    arrays: tuple[str, ...],
+    second: tuple[str, ...],
+    data: Mapping[str, NDArray[np.generic]],
+    path: str,
+) -> None:
+    """The two parts of a complex field must have the same shape."""
+    for a, b in zip(arrays, second, strict=False):
+        if data[a].shape != data[b].shape:
+            raise InputError(
+                f"{path}: {a!r} has shape {data[a].shape}, {b!r} {data[b].shape}.",
+                "The two arrays of a complex field have the same shape.",
+            )
 
 
 def _where(arrays: tuple[str, ...], on: str | None, model: Model, path: str) -> str:

@@ -14,11 +14,12 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
-from expander.body import Step, WholeBody, prepare
+from expander.body import WholeBody, prepare
 from expander.casefile import CaseFile, CaseTable, read_case
 from expander.errors import InputError, NotYetError
 from expander.images import arrays_of
 from expander.loadcases import Result
+from expander.sector import Step
 from expander.summary import CAUTIONS, summary
 from expander.writers.newfiles import NewFiles, check_place
 

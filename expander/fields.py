@@ -33,6 +33,8 @@ class Field:
     on : "points" or "cells".
     arrays : the arrays that hold it; one, or one per component.
     columns : columns of the one array that are used, counted from 0; None for all.
+    second : the arrays of the imaginary part of a complex field, or of its phase; empty if real.
+    polar : the two arrays hold amplitude and phase in degrees, not real and imaginary part.
     decided : how the kind was decided, in words.
     shear_assumed, order_assumed : neither the case nor the file says how shear or components are
         stored.
@@ -50,6 +52,13 @@ class Field:
     decided: str
     shear_assumed: bool = False
     order_assumed: bool = False
+    second: tuple[str, ...] = ()
+    polar: bool = False
+
+    @property
+    def complex_values(self) -> bool:
+        """Whether its values are complex."""
+        return bool(self.second)
 
     @property
     def kind(self) -> str:
@@ -64,7 +73,7 @@ class Field:
     @property
     def names(self) -> tuple[str, ...]:
         """Its own name and those of its arrays: renaming a measure does not change what it is."""
-        return (self.name, *self.arrays)
+        return (self.name, *self.arrays, *self.second)
 
     @property
     def constant(self) -> bool:
@@ -72,25 +81,34 @@ class Field:
         return self.follows == "body"
 
     def values(self, model: Model) -> NDArray[np.generic]:
-        """The field on the sector, (n, k), in the number type of the file."""
+        """The field on the sector, (n, k), in the number type of the file; complex if it is."""
+        first = self._part(model, self.arrays)
+        if not self.second:
+            return first
+        second = self._part(model, self.second)
+        if self.polar:
+            return np.asarray(first.astype(float) * np.exp(1j * np.deg2rad(second.astype(float))))
+        return np.asarray(first.astype(float) + 1j * second.astype(float))
+
+    def _part(self, model: Model, arrays: tuple[str, ...]) -> NDArray[np.generic]:
         data = model.point_data if self.on == "points" else model.cell_data
-        missing = [a for a in self.arrays if a not in data]
+        missing = [a for a in arrays if a not in data]
         if missing:
             raise InputError(
                 f"{model.source}: there is no array {missing[0]!r} on {self.on} "
                 f"(field {self.name!r}).",
                 f"Arrays on {self.on}: {', '.join(data) or 'none'}.",
             )
-        if len(self.arrays) == 1:
-            array = np.asarray(data[self.arrays[0]])
+        if len(arrays) == 1:
+            array = np.asarray(data[arrays[0]])
             array = array.reshape(len(array), -1)
             if self.columns is not None:
                 array = array[:, list(self.columns)]
         else:
-            array = np.stack([np.asarray(data[a]) for a in self.arrays], axis=1)
+            array = np.stack([np.asarray(data[a]) for a in arrays], axis=1)
         if array.shape[1] != self.quantity.size:
             raise InputError(
-                f"{model.source}: array {self.name!r} has {array.shape[1]} components, in the "
+                f"{model.source}: array {arrays[0]!r} has {array.shape[1]} components, in the "
                 f"first case it has {self.quantity.size}.",
                 "All cases of one body hold the same fields.",
             )

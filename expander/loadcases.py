@@ -4,10 +4,11 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 
-from expander.behaviours import Behaviour
+import numpy as np
+
+from expander.behaviours import Behaviour, Factors, is_plain
 from expander.casefile import CaseFile, CaseTable, plane_names
 from expander.model import Model
-from expander.placements import Floats
 
 
 @dataclass(frozen=True, eq=False)
@@ -17,8 +18,18 @@ class LoadCase:
     name: str
     model: Model
     behaviour: Behaviour
-    chi: Floats
+    chi: Factors
     factor: float
+
+    @property
+    def plain(self) -> bool:
+        """Whether every copy takes the load as it is."""
+        return is_plain(self.chi)
+
+    @property
+    def complex_factors(self) -> bool:
+        """Whether chi is complex: ``0 < h < N/2``."""
+        return bool(np.iscomplexobj(self.chi))
 
 
 @dataclass(frozen=True)
@@ -34,11 +45,12 @@ def behaviour_of(case: CaseFile, table: CaseTable) -> Behaviour:
     for name, mirror in zip(plane_names(case), case.mirror, strict=True):
         given = table.load if isinstance(table.load, str) else table.load.get(name)
         words[name] = given or mirror.load
-    h = 0
+    h, phase = 0, "auto"
     if case.cyclic is not None:
         own = table.nodal_diameters
         h = case.cyclic.nodal_diameters if own is None else own
-    return Behaviour(words, h)
+        phase = table.phase or case.cyclic.phase
+    return Behaviour(words, h, phase)
 
 
 def results_of(case: CaseFile, cases: tuple[LoadCase, ...]) -> tuple[Result, ...]:

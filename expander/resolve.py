@@ -12,6 +12,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
+from expander.behaviours import Factors
 from expander.fields import Field
 from expander.frames import Cylindrical
 from expander.groups import Group
@@ -43,7 +44,7 @@ def product(values: Floats, A: Floats) -> Floats:
     A value that is not finite spoils only components that depend on it: zero times infinity
     would make NaN of the others.
     """
-    out = np.empty((len(values), len(A)))
+    out = np.empty((len(values), len(A)), dtype=np.result_type(values, A))
     step = max(1, _BLAS_ALONE // A.size)
     with np.errstate(invalid="ignore", over="ignore"):
         for row in range(0, len(values), step):
@@ -57,10 +58,17 @@ def product(values: Floats, A: Floats) -> Floats:
     return out
 
 
-def acting(q: Quantity, Q: Floats, chi: float, follows: str) -> Floats:
-    """``chi(g) * rho(Q)`` on stored components, (k, k)."""
+def acting(q: Quantity, Q: Floats, chi: float | complex, follows: str) -> Floats:
+    """``chi(g) * rho(Q)`` on stored components, (k, k); complex if chi is.
+
+    Only a linear quantity takes a complex factor; the fields of a case are checked before.
+    """
     A = q.matrix(Q)
-    return q.odd @ A if chi < 0 and follows == "load" else A
+    if follows != "load" or chi == 1.0:
+        return A
+    if isinstance(chi, complex):
+        return np.asarray(chi * A) if q.linear else A
+    return q.odd @ A
 
 
 @dataclass(frozen=True, eq=False)
@@ -91,7 +99,7 @@ def resolve(
     places: NDArray[np.floating],
     classes: Classes,
     group: Group,
-    chi: Floats,
+    chi: Factors,
     weights: NDArray[np.int64] | None,
     on_axis: float,
     not_averaged: NDArray[np.bool_] | None = None,
@@ -113,11 +121,11 @@ def resolve(
         return Resolved(None, none, none, np.empty(0), np.empty(0), np.empty(0, dtype=np.int64))
     own = to_global(field, values, places, on_axis)
     source = np.searchsorted(classes.items, classes.source)  # sources are shared items too
-    terms = np.empty((len(classes.item), q.size))
+    terms = np.empty((len(classes.item), q.size), dtype=np.result_type(own, chi))
     order = np.argsort(classes.via, kind="stable")
     vias, first = np.unique(classes.via[order], return_index=True)
     for s, rows in zip(vias.tolist(), np.split(order, first[1:]), strict=True):
-        A = acting(q, group.placements[s].Q, float(chi[s]), field.follows)
+        A = acting(q, group.placements[s].Q, chi[s].item(), field.follows)
         terms[rows] = product(own[source[rows]], A)
     with np.errstate(invalid="ignore"):
         difference = terms - own[classes.row]
@@ -157,7 +165,8 @@ def to_global(
     (n, k) stored components; in a local frame (n, all components), since a storage that is enough
     there, such as that of an axisymmetric stress, need not be enough in global directions.
     """
-    numbers = values.astype(float)
+    kind = np.complex128 if np.iscomplexobj(values) else np.float64
+    numbers: Floats = values.astype(kind, copy=False)
     if isinstance(field.frame, Cylindrical):
         bases = field.frame.bases(places.astype(float), on_axis)
         return turn_each(field.quantity.complete, numbers @ field.quantity.completion.T, bases)

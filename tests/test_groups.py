@@ -499,13 +499,35 @@ def test_nodal_diameters_out_of_range(sectors: int, h: int, allowed: str) -> Non
 
 
 @pytest.mark.parametrize(("sectors", "h"), [(3, 1), (5, 2), (8, 1), (8, 3), (720, 359)])
-def test_complex_phases_are_not_served_yet(sectors: int, h: int) -> None:
-    with pytest.raises(NotYetError, match="complex") as caught:
-        factors(make_group([], axis(sectors)), Behaviour({}, h))
-    assert f"nodal_diameters = {h}" in str(caught.value)
-    assert f"{360 * h / sectors:.6g} degrees" in str(caught.value)
-    served = f"= 0 and {sectors // 2} for" if sectors % 2 == 0 else "= 0 for"
-    assert served in caught.value.remedy, "N odd has no N/2"
+@pytest.mark.parametrize("floor", ["symmetric", "antisymmetric", None])
+def test_waves_around_the_ring(sectors: int, h: int, floor: str | None) -> None:
+    """chi = exp(+i h k alpha) on sector k, for right-handed turning; the other sign with "-"."""
+    planes = [] if floor is None else [plane("floor", Z)]
+    words = {} if floor is None else {"floor": floor}
+    group = make_group(planes, axis(sectors))
+    chi = factors(group, Behaviour(words, h))
+    k = np.array([
+        round(np.arctan2(p.Q[1, 0], p.Q[0, 0]) / (2 * np.pi / sectors)) for p in group.placements
+    ])  # fmt: skip
+    sign = np.array([-1.0 if floor == "antisymmetric" and p.mirrored else 1.0
+                     for p in group.placements])  # fmt: skip
+    np.testing.assert_allclose(chi, sign * np.exp(2j * np.pi * h * k / sectors), atol=1e-13)
+    np.testing.assert_allclose(chi[group.product], np.multiply.outer(chi, chi), atol=1e-13)
+    other = factors(group, Behaviour(words, h, "-"))
+    np.testing.assert_allclose(other, chi.conj(), atol=1e-15)
+
+
+def test_quarter_phases_are_exact() -> None:
+    chi = factors(make_group([], axis(8)), Behaviour({}, 2))
+    assert chi.tolist() == [1, 1j, -1, -1j, 1, 1j, -1, -1j]
+
+
+@pytest.mark.parametrize("sectors", [5, 8])
+def test_waves_in_half_sectors_are_not_served_yet(sectors: int) -> None:
+    group = make_group([plane("radial", X)], axis(sectors))
+    with pytest.raises(NotYetError, match="'radial' goes through the cyclic axis") as caught:
+        factors(group, Behaviour({"radial": "symmetric"}, 1))
+    assert ("or 4" in caught.value.remedy) == (sectors == 8), "N odd has no N/2"
 
 
 def test_cyclic_words_that_contradict_the_planes() -> None:
