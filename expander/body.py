@@ -21,6 +21,7 @@ from expander.loadcases import LoadCase, Result
 from expander.model import Mesh
 from expander.numbering import Numbering, shared_cells
 from expander.placements import Floats
+from expander.referencing import referenced
 from expander.resolve import Resolved, resolve
 from expander.seams import Classes, Seams
 from expander.sector import Sector, Step, on_axis, read_sector
@@ -93,7 +94,7 @@ def prepare(
     CheckFailed
         If a primary field does not close along a seam (exit status 1).
     """
-    return plan_body(read_sector(case, skip_undeclared, allow_nan, step), step)
+    return plan_body(referenced(read_sector(case, skip_undeclared, allow_nan, step)), step)
 
 
 def plan_body(sector: Sector, step: Step = lambda words: None) -> WholeBody:

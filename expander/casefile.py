@@ -118,6 +118,7 @@ class ExpectTable(Table):
     mass: float | None = Field(default=None, gt=0.0)
     pieces: int | None = Field(default=None, ge=1)
     balance: bool = True
+    mode_shape: bool = False
     tolerance: float = Field(default=1e-3, gt=0.0)
 
 

@@ -6,6 +6,7 @@ from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
 import numpy as np
+from numpy.typing import NDArray
 
 from expander.errors import CheckFailed
 from expander.fields import Field
@@ -74,10 +75,7 @@ def check_closing(
             bound = float(np.fmax.reduce(f.values(case.model), axis=None, initial=0.0))
             if np.isfinite(bound) and float(found.jumps.max()) <= limit * bound:
                 continue
-            largest = _largest(f.values(case.model))
-            others = max(_largest(f.values(c.model)) for c in cases)
-            if largest <= _ROUND_OFF * others:
-                largest = others
+            largest = scale_of(f, case, cases)
             open_ = found.jumps > limit * largest
             if not open_.any():
                 continue
@@ -96,6 +94,14 @@ def check_closing(
     return openings
 
 
+def scale_of(field: Field, case: LoadCase, cases: tuple[LoadCase, ...]) -> float:
+    """The field's largest value in a case; in all cases, where the one holds nothing but round-off
+    beside the others."""
+    own = largest_value(field.values(case.model))
+    others = max(largest_value(field.values(c.model)) for c in cases)
+    return others if own <= _ROUND_OFF * others else own
+
+
 def _others_close(
     fields: list[Field],
     this: Field,
@@ -108,7 +114,7 @@ def _others_close(
     for f in fields:
         if f is this or f.on != "points" or f.seam != "agree" or f.follows != "load":
             continue
-        found, largest = resolved[f.name, k], _largest(f.values(case.model))
+        found, largest = resolved[f.name, k], largest_value(f.values(case.model))
         there = float(np.linalg.norm(np.nan_to_num(found.own), axis=1).max(initial=0.0))
         if there > limit * largest and float(found.jumps.max(initial=0.0)) <= limit * largest:
             return True
@@ -132,7 +138,7 @@ def averaged_notes(
             found = resolved.get((f.name, k))
             if f.on != "points" or f.seam != "recovered" or found is None or not len(found.jumps):
                 continue
-            largest = _largest(f.values(case.model))
+            largest = largest_value(f.values(case.model))
             worst = int(np.argmax(found.jumps))
             if largest > 0.0 and float(found.jumps[worst]) > _LARGE * largest:
                 notes.append(
@@ -152,10 +158,15 @@ def _opposite_closes(f: Field, found: Resolved, open_: np.ndarray, allowed: floa
     return bool((gap[open_] <= allowed).all())
 
 
-def _largest(values: np.ndarray) -> float:
-    """Largest length of a value that is finite."""
-    lengths = np.linalg.norm(values.astype(float), axis=1)
-    return float(lengths[np.isfinite(lengths)].max(initial=0.0))
+def largest_value(values: NDArray[np.generic]) -> float:
+    """Largest length of a value that is finite, over rows of components (n, c)."""
+    squares = np.zeros(len(values))
+    with np.errstate(over="ignore", invalid="ignore"):
+        for column in values.T:  # column by column: numpy reduces short rows slowly
+            parts = (column.real, column.imag) if np.iscomplexobj(column) else (column,)
+            for part in parts:
+                squares += part.astype(float) ** 2
+    return float(np.sqrt(squares[np.isfinite(squares)].max(initial=0.0)))
 
 
 def _open(

@@ -8,6 +8,7 @@ formula. The same terms are the jumps that show whether the seam closes.
 from __future__ import annotations
 
 from dataclasses import dataclass
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -21,7 +22,10 @@ from expander.quantities import Quantity
 from expander.seams import Classes
 
 
-def turn_each(q: Quantity, values: Floats, bases: Floats) -> Floats:
+Numbers = NDArray[Any]  # floats, or complex where a field or a factor is
+
+
+def turn_each(q: Quantity, values: Numbers, bases: Floats) -> Numbers:
     """``A(E)`` with another matrix at each row: values (n, k), bases (n, 3, 3)."""
     if q.kind.rank == 0:
         return values
@@ -38,7 +42,7 @@ def turn_each(q: Quantity, values: Floats, bases: Floats) -> Floats:
 _BLAS_ALONE = 200_000
 
 
-def product(values: Floats, A: Floats) -> Floats:
+def product(values: Numbers, A: Numbers) -> Numbers:
     """``values @ A.T`` for rows of components, (n, k), in pieces that stay in the cache.
 
     A value that is not finite spoils only components that depend on it: zero times infinity
@@ -58,7 +62,7 @@ def product(values: Floats, A: Floats) -> Floats:
     return out
 
 
-def acting(q: Quantity, Q: Floats, chi: float | complex, follows: str) -> Floats:
+def acting(q: Quantity, Q: Floats, chi: float | complex, follows: str) -> Numbers:
     """``chi(g) * rho(Q)`` on stored components, (k, k); complex if chi is.
 
     Only a linear quantity takes a complex factor; the fields of a case are checked before.
@@ -85,9 +89,9 @@ class Resolved:
     through : (s,) number of the placement that brings the farthest term.
     """
 
-    patch: Floats | None
-    own: Floats
-    other_side: Floats
+    patch: Numbers | None
+    own: Numbers
+    other_side: Numbers
     jumps: Floats
     apart: Floats
     through: NDArray[np.int64]
@@ -159,14 +163,14 @@ def _largest(apart: Floats, classes: Classes) -> NDArray[np.int64]:
 
 def to_global(
     field: Field, values: NDArray[np.generic], places: NDArray[np.floating], on_axis: float
-) -> Floats:
+) -> Numbers:
     """Components in the field's frame turned to global directions.
 
     (n, k) stored components; in a local frame (n, all components), since a storage that is enough
     there, such as that of an axisymmetric stress, need not be enough in global directions.
     """
     kind = np.complex128 if np.iscomplexobj(values) else np.float64
-    numbers: Floats = values.astype(kind, copy=False)
+    numbers: Numbers = values.astype(kind, copy=False)
     if isinstance(field.frame, Cylindrical):
         bases = field.frame.bases(places.astype(float), on_axis)
         return turn_each(field.quantity.complete, numbers @ field.quantity.completion.T, bases)
@@ -174,8 +178,8 @@ def to_global(
 
 
 def from_global(
-    field: Field, values: Floats, places: NDArray[np.floating], on_axis: float
-) -> Floats:
+    field: Field, values: Numbers, places: NDArray[np.floating], on_axis: float
+) -> Numbers:
     """The reverse of `to_global` at `places`: (n, k) stored components."""
     if isinstance(field.frame, Cylindrical):
         bases = field.frame.bases(places.astype(float), on_axis).transpose(0, 2, 1)

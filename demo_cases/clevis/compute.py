@@ -135,7 +135,7 @@ def main() -> None:
                 "temperature": solution.temperature,
                 "nodal_force": solution.external_force,
                 "reaction": solution.reaction,
-                "reaction_moment": moment(mesh.points, solution.reaction, ABOUT),
+                "moment_of_reaction": moment(mesh.points, solution.reaction, ABOUT),
             },
             {
                 "cell_stress": solution.cell_stress,

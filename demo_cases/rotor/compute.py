@@ -110,7 +110,7 @@ def main() -> None:
                 "von_mises": solution.nodal_von_mises,
                 "nodal_force": solution.external_force,
                 "reaction": solution.reaction,
-                "reaction_moment": moment(mesh.points, solution.reaction, (0, 0, SHAFT)),
+                "moment_of_reaction": moment(mesh.points, solution.reaction, (0, 0, SHAFT)),
             },
             {
                 "part": mesh.part,

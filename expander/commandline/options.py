@@ -55,6 +55,7 @@ def case_from(
     field: tuple[str, ...] = (),
     settings: tuple[str, ...] = (),
     output: Path | None = None,
+    sections: tuple[str, ...] = (),
 ) -> CaseFile:
     """The case from a case file (.toml) or from a model file with options."""
     from expander.casefile import read_case, validate_case
@@ -65,6 +66,8 @@ def case_from(
         overrides[key] = _toml_value(value)
     if output is not None:
         overrides["output.file"] = str(output.absolute())
+    if sections:
+        overrides["section"] = [_plane(words, "--section") for words in sections]
     if case.suffix.lower() == ".toml":
         given = [n for n, v in (("--mirror", mirror), ("--sectors", sectors), ("--axis", axis),
                                 ("--axis-point", axis_point), ("--field", field),
@@ -106,16 +109,18 @@ _PLANE = re.compile(
 )
 
 
-def _plane(words: str) -> dict[str, Any]:
+def _plane(words: str, option: str = "--mirror") -> dict[str, Any]:
     found = _PLANE.fullmatch(words)
-    if not found:
+    if not found or (found["load"] and option != "--mirror"):
         raise InputError(
-            f"--mirror {words!r} is not understood.",
-            'Expected for example "x", "y at 0,0.5,0 antisymmetric" or "1,1,0 called web".',
+            f"{option} {words!r} is not understood.",
+            'Expected for example "x", "y at 0,0.5,0'
+            + (" antisymmetric" if option == "--mirror" else "")
+            + '" or "1,1,0 called web".',
         )
-    plane: dict[str, Any] = {"normal": _direction(found["normal"], "--mirror")}
+    plane: dict[str, Any] = {"normal": _direction(found["normal"], option)}
     if found["point"]:
-        plane["point"] = _triple(found["point"], "--mirror")
+        plane["point"] = _triple(found["point"], option)
     if found["load"]:
         plane["load"] = found["load"]
     if found["name"]:

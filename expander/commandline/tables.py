@@ -12,7 +12,7 @@ from rich.progress import BarColumn, DownloadColumn, TaskID, TextColumn, TimeEla
 from rich.progress import Progress as Bar
 from rich.table import Table
 
-_FILE_WIDTH = 110  # characters, where no terminal says how wide it is
+FILE_WIDTH = 110  # characters, where no terminal says how wide it is
 
 
 class Progress:
@@ -58,7 +58,7 @@ def print_summary(found: dict[str, Any]) -> None:
     """The short table of an expansion."""
     console = Console(highlight=False)
     if not console.is_terminal:
-        console.width = _FILE_WIDTH
+        console.width = FILE_WIDTH
     points, cells = found["points"], found["cells"]
     facts = Table.grid(padding=(0, 2))
     facts.add_column(style="bold")

@@ -1,0 +1,1 @@
+"""Audit: what the whole body must satisfy, whatever the load."""

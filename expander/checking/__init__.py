@@ -1,0 +1,1 @@
+"""What the result itself says about the case that is declared: checks before anything is merged."""

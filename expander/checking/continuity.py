@@ -1,0 +1,145 @@
+"""Continuity of every field at every seam, before anything is merged."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from dataclasses import dataclass
+
+import numpy as np
+
+from expander.behaviours import Behaviour, Factors, factors
+from expander.checking.declared import Found, declared_against_found, primary
+from expander.checking.jumps import Jump, jump_at
+from expander.checking.seamlist import Seam, seams_of
+from expander.checking.smoothness import Near, kink, recovered
+from expander.checking.verdicts import CLOSED, DOUBTFUL, OPEN, TOLD, Verdict, verdict_of
+from expander.closing import largest_value, scale_of
+from expander.fields import Field
+from expander.loadcases import LoadCase
+from expander.resolve import Numbers
+from expander.sector import Sector, Step
+
+
+@dataclass(frozen=True, eq=False)
+class CaseContinuity:
+    """One load case at all seams.
+
+    Attributes
+    ----------
+    chi : the factors used, with the direction of a wave decided.
+    phase : "+" or "-" as decided or declared, or "" where it makes no difference.
+    """
+
+    case: LoadCase
+    chi: Factors
+    phase: str
+    verdicts: tuple[Verdict, ...]
+    found: tuple[Found, ...]
+
+
+@dataclass(frozen=True, eq=False)
+class Continuity:
+    """All seams of a sector and how every field meets itself there."""
+
+    sector: Sector
+    seams: tuple[Seam, ...]
+    cases: tuple[CaseContinuity, ...]
+
+    @property
+    def verdicts(self) -> tuple[Verdict, ...]:
+        return tuple(v for c in self.cases for v in c.verdicts)
+
+    @property
+    def found(self) -> tuple[Found, ...]:
+        return tuple(f for c in self.cases for f in c.found)
+
+
+def continuity(sector: Sector, step: Step = lambda words: None) -> Continuity:
+    """Compare both sides of every seam for every field of every case."""
+    step("listing seams")
+    seams = seams_of(sector)
+    nears = [Near(sector.mesh, sector.group, s) for s in seams]
+    cases = []
+    for case in sector.cases:
+        step(f"comparing the sides, case {case.name}")
+        values = {f.name: f.values(case.model) for f in sector.fields if _numeric(f)}
+        chi, phase = decided_phase(sector, seams, case, values)
+        found = [declared_against_found(sector, n, case, chi, values) for n in nears]
+        verdicts = [v for n in nears for v in _verdicts(sector, n, case, chi, values)]
+        cases.append(CaseContinuity(case, chi, phase, tuple(verdicts),
+                                    tuple(f for f in found if f is not None)))  # fmt: skip
+    return Continuity(sector, tuple(seams), tuple(cases))
+
+
+def _numeric(f: Field) -> bool:
+    return f.kind != "label"
+
+
+def decided_phase(
+    sector: Sector, seams: list[Seam], case: LoadCase, values: dict[str, Numbers]
+) -> tuple[Factors, str]:
+    """The factors of a case; where the direction of a wave is left to the data, the one whose
+    seam closes better."""
+    if not case.complex_factors:
+        return case.chi, ""
+    declared = case.behaviour.phase
+    if declared != "auto":
+        return case.chi, declared
+    fields = [f for f in sector.fields if primary(f)]
+    gaps = {}
+    for phase in ("+", "-"):
+        h = case.behaviour.nodal_diameters
+        chi = factors(sector.group, Behaviour(case.behaviour.load, h, phase))
+        squares = 0.0
+        for seam in seams:
+            for f in fields:
+                scale = largest_value(values[f.name])
+                if scale > 0.0:
+                    jump = jump_at(sector.mesh, sector.group, seam, f, case, values[f.name], chi)
+                    squares += float((jump.lengths**2).sum()) / scale**2
+        gaps[phase] = (squares, chi)
+    best = min(gaps, key=lambda p: gaps[p][0])
+    return gaps[best][1], best
+
+
+def _verdicts(
+    sector: Sector, near: Near, case: LoadCase, chi: Factors, values: dict[str, Numbers]
+) -> Iterator[Verdict]:
+    mesh, group, seam = sector.mesh, sector.group, near.seam
+    limit, scatter = sector.case.seam.limit, sector.case.seam.scatter
+    if not seam.touches:
+        return
+    for f in sector.fields:
+        if f.name not in values:
+            continue
+        here = values[f.name]
+        if f.on == "points" and f.seam in ("agree", "lowest copy"):
+            jump = jump_at(mesh, group, seam, f, case, here, chi)
+            yield value_verdict(jump, mesh.points, scale_of(f, case, sector.cases), limit)
+            if primary(f):
+                slope = kink(near, f, case, here, chi, scatter)
+                if slope is not None:
+                    yield slope
+        elif f.on == "points" and f.seam == "sum":
+            continue  # shares of both sides add up; the audit looks at their totals
+        elif f.follows == "load" and np.issubdtype(here.dtype, np.inexact):
+            found = recovered(near, f, case, here, chi, scatter)
+            if found is not None:
+                yield found
+
+
+def value_verdict(jump: Jump, points: np.ndarray, scale: float, limit: float) -> Verdict:
+    """A field that must agree: jumps against ``limit`` times its largest value.
+
+    Rows that are compared by interpolation may differ by its error as well; then they are doubtful.
+    """
+    beyond = jump.lengths > limit * scale
+    sure = jump.lengths - jump.allowance > limit * scale
+    words = ""
+    result = OPEN if sure.any() else CLOSED
+    if scale == 0.0:
+        result, words = TOLD, "the field is zero"
+    elif beyond.any() and not sure.any():
+        result, words = DOUBTFUL, "within the error of interpolating between nodes"
+    over = sure if sure.any() else beyond
+    return verdict_of(jump, points, scale, limit, "value", result, over, words=words)

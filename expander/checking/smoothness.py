@@ -1,0 +1,278 @@
+"""Traction, flux and kink: jumps that are judged beside those between neighbouring cells.
+
+The stress on a plane cut through a body is continuous across it, so ``sigma n`` must agree on both
+sides of a seam; so must the normal derivative of a displacement, by which a plane that was clamped
+by mistake shows: its values vanish and close under every word, its slope does not. Both are known
+to a discretised solution only up to the jumps between its cells.
+
+All of it is one thing, a value with one more index that is contracted with the seam's normal:
+``T n`` of the sector against ``chi rho(Q) (T' Q^T n)`` of the copy, where ``T`` is the stress, the
+flux, or the gradient of a field.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, replace
+from functools import cached_property
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from expander.behaviours import Factors
+from expander.checking.gradients import cell_gradients, cell_means
+from expander.checking.jumps import Jump, carried, quantity_of
+from expander.checking.neighbours import Surroundings, surroundings
+from expander.checking.seamlist import Seam
+from expander.checking.verdicts import CLOSED, DOUBTFUL, OPEN, Verdict, verdict_of
+from expander.closing import largest_value
+from expander.fields import Field
+from expander.frames import Global
+from expander.groups import Group
+from expander.loadcases import LoadCase
+from expander.model import Mesh
+from expander.placements import Floats
+from expander.quantities import Quantity, quantity
+from expander.resolve import Numbers, to_global
+from expander.sector import on_axis
+from expander.topology import Ints
+
+# A jump below this part of the body's largest value is of no account, whatever its neighbours do.
+SMALL = 1e-3
+# Two sides in one ratio that far from 1, and so nearly exactly, are not the mesh's scatter.
+RATIO, EXACT = 1e-3, 0.1
+
+
+def is_stress(field: Field) -> bool:
+    """Whether the field is a stress, whose traction must agree."""
+    return field.kind == "symmetric tensor" and any("stress" in n.lower() for n in field.names)
+
+
+@dataclass(frozen=True, eq=False)
+class Near:
+    """A seam and the cells around it."""
+
+    mesh: Mesh
+    group: Group
+    seam: Seam
+
+    @cached_property
+    def around(self) -> Surroundings:
+        seam = self.seam
+        nodes, directions = [seam.nodes], [seam.normal]
+        if seam.kind != "cut plane":  # the other side is another face of the sector
+            Q = np.stack([p.Q for p in self.group.placements])[seam.via]
+            back = np.einsum("kij,ki->kj", Q, seam.normal)
+            for m in range(seam.partners.shape[1]):
+                used = seam.weights[:, m] != 0.0
+                nodes.append(seam.partners[used, m])
+                directions.append(back[used])
+        return surroundings(self.mesh, np.concatenate(nodes), np.concatenate(directions))
+
+    @cached_property
+    def by_face(self) -> Seam:
+        """The seam with a row for each pair of faces, which its first corner stands for."""
+        faces = self.seam.faces
+        corner = _joined([f.corners[:, 0] for f in faces], np.int64)
+        count = len(corner)
+        return replace(
+            self.seam, nodes=corner, via=np.full(count, self.seam.copy),
+            partners=np.zeros((count, 1), dtype=np.int64), weights=np.ones((count, 1)),
+            distance=np.zeros(count),
+            normal=_joined([f.normals for f in faces], np.float64).reshape(-1, 3),
+            area=_joined([f.areas for f in faces], np.float64),
+        )  # fmt: skip
+
+    @cached_property
+    def here(self) -> Ints:
+        """(f,) the cell of each face, as a row of the cells around."""
+        return self.around.rows(_joined([f.cells for f in self.seam.faces], np.int64))
+
+    @cached_property
+    def across(self) -> Ints:
+        """(f,) the cell whose image lies on the other side."""
+        return self.around.rows(_joined([f.across for f in self.seam.faces], np.int64))
+
+    def face_yardstick(self, per_cell: Numbers) -> Floats:
+        """(f,) yardstick of each face: the largest of its corners'."""
+        found = []
+        for f in self.seam.faces:
+            at = self.around.yardstick(per_cell, f.corners.ravel()).reshape(f.corners.shape)
+            found.append(at.max(axis=1))
+        return _joined(found, np.float64)
+
+
+def _joined(parts: list[NDArray[Any]], kind: type) -> NDArray[Any]:
+    return np.concatenate(parts) if parts else np.empty(0, dtype=kind)
+
+
+def kink(
+    near: Near, field: Field, case: LoadCase, values: Numbers, chi: Factors, limit: float
+) -> Verdict | None:
+    """The jump of the normal derivative of a nodal field; None where no faces pair.
+
+    Parameters
+    ----------
+    values : (n, c) at all nodes, in the field's own frame.
+    limit : how many times the scatter of the cells around counts as closed.
+    """
+    if not near.seam.faces:
+        return None
+    gradients = cell_gradients(near.mesh, near.around.cells, _turned(near.mesh, field, values))
+    scale = float(np.linalg.norm(gradients, axis=(1, 2)).max(initial=0.0))
+    q = quantity_of(field)
+    return _at_faces(near, field, case, gradients, q, chi, scale, "kink", limit)
+
+
+def recovered(
+    near: Near, field: Field, case: LoadCase, values: Numbers, chi: Factors, limit: float
+) -> Verdict | None:
+    """The jump of what is recovered from elements, at nodes or in cells.
+
+    A stress by its traction, a vector by its normal part, anything else by all its components.
+    """
+    if not near.seam.faces:
+        return None
+    measure, contracted = _measure(field)
+    full = _indexed if contracted is not None else _as_stored
+    q = contracted if contracted is not None else quantity_of(field)
+    mesh, cells, scale = near.mesh, near.around.cells, largest_value(values)
+    if field.on == "cells":
+        own = to_global(field, values[cells], _centres(mesh, cells), on_axis(mesh))
+        return _at_faces(near, field, case, full(field, own), q, chi, scale, measure, limit)
+    nodal = _turned(mesh, field, values)
+    per_cell = full(field, cell_means(mesh, cells, nodal))
+    seam = near.seam
+    here = full(field, nodal[seam.nodes])
+    there = np.zeros_like(here)
+    for m in range(seam.partners.shape[1]):
+        weight = seam.weights[:, m].reshape(-1, *(1,) * (here.ndim - 1))
+        there += weight * full(field, nodal[seam.partners[:, m]])
+    jump = _contracted(near.group, seam, field, case, here, there, q, chi)
+    yardstick = near.around.nodal_yardstick(full(field, nodal), per_cell, seam.nodes)
+    return judged(jump, mesh.points, yardstick, scale, measure, limit)
+
+
+def _measure(field: Field) -> tuple[str, Quantity | None]:
+    """What is compared, and as what it is carried: None where all components are."""
+    if is_stress(field):
+        return "traction", quantity("polar vector", 3)
+    if field.kind == "polar vector":
+        return "flux", quantity("scalar", 1)
+    return "value", None
+
+
+def _at_faces(
+    near: Near,
+    field: Field,
+    case: LoadCase,
+    per_cell: Numbers,
+    q: Quantity,
+    chi: Factors,
+    scale: float,
+    measure: str,
+    limit: float,
+) -> Verdict:
+    seam = near.by_face
+    jump = _contracted(near.group, seam, field, case, per_cell[near.here], per_cell[near.across],
+                       q, chi)  # fmt: skip
+    return judged(jump, near.mesh.points, near.face_yardstick(per_cell), scale, measure, limit)
+
+
+def _contracted(
+    group: Group,
+    seam: Seam,
+    field: Field,
+    case: LoadCase,
+    here: Numbers,
+    there: Numbers,
+    q: Quantity,
+    chi: Factors,
+) -> Jump:
+    """Both sides of ``T n``, with T of (k, c, 3); of all components where T is (k, c)."""
+    if here.ndim == 3:
+        Q = np.stack([p.Q for p in group.placements])[seam.via]
+        here = np.einsum("kci,ki->kc", here, seam.normal)
+        back = np.einsum("kij,ki->kj", Q, seam.normal)  # Q^T n
+        there = np.einsum("kci,ki->kc", there, back)
+    shown = replace(field, quantity=q, frame=Global())
+    other = carried(group, seam, shown, there, chi)
+    return Jump(seam, field, case, q, here, other, np.zeros(len(here)))
+
+
+def judged(
+    jump: Jump,
+    points: NDArray[np.floating],
+    yardstick: Floats,
+    scale: float,
+    measure: str,
+    limit: float,
+) -> Verdict:
+    """A jump beside the scatter around it.
+
+    Parameters
+    ----------
+    yardstick : (k,) largest jump between neighbouring cells near each row; NaN if unknown.
+    scale : the largest value over the body.
+    limit : how many times the yardstick counts as closed.
+    """
+    lengths = jump.lengths
+    known = np.isfinite(yardstick)
+    least = max(SMALL * scale, np.finfo(float).tiny)
+    times = np.where(known, lengths / np.maximum(np.nan_to_num(yardstick), least), 0.0)
+    unknown = ~known & (lengths > limit * least)
+    worst = int(np.argmax(times)) if times.max(initial=0.0) > 0.0 else None
+    ratio = _ratio(jump, scale)
+    result, words = CLOSED, ""
+    if (times > limit).any():
+        result = OPEN
+    elif ratio is not None:
+        result, words = DOUBTFUL, f"the two sides stand in the ratio {_number(ratio)}"
+    elif unknown.any():
+        result, words = DOUBTFUL, "there are no neighbouring cells to compare with"
+    return verdict_of(
+        jump, points, scale, limit, measure, result, times > limit, worst, words=words,
+        times=float(times.max(initial=0.0)),
+    )  # fmt: skip
+
+
+def _ratio(jump: Jump, scale: float) -> complex | None:
+    """The one factor between the sides, if there is one and it is not 1.
+
+    In a cut plane both sides are the same values, which says nothing.
+    """
+    if jump.seam.kind != "sector faces":
+        return None
+    own, other = jump.own, jump.other
+    if not np.isfinite(own).all() or not np.isfinite(other).all() or len(own) < 4:
+        return None
+    size = float(np.vdot(own, own).real)
+    if size <= (SMALL * scale) ** 2 * len(own):
+        return None  # both are as good as nothing
+    a = complex(np.vdot(own, other)) / size
+    rest = float(np.linalg.norm(other - a * own)) / np.sqrt(size)
+    return a if abs(a - 1.0) > RATIO and rest < EXACT * abs(a - 1.0) else None
+
+
+def _number(value: complex) -> str:
+    if abs(value.imag) < 1e-6 * abs(value):
+        return f"{value.real:.5g}"
+    return f"{abs(value):.5g} at {np.rad2deg(np.angle(value)):.4g} degrees"
+
+
+def _turned(mesh: Mesh, field: Field, values: Numbers) -> Numbers:
+    """Nodal values in global directions at all nodes, (n, c)."""
+    return to_global(field, values, mesh.points, on_axis(mesh))
+
+
+def _centres(mesh: Mesh, cells: Ints) -> Floats:
+    return cell_means(mesh, cells, mesh.points.astype(float))
+
+
+def _as_stored(field: Field, values: Numbers) -> Numbers:
+    return values
+
+
+def _indexed(field: Field, values: Numbers) -> Numbers:
+    """A stress as (k, 3, 3), a vector as (k, 1, 3), from stored components in global directions."""
+    return np.asarray((values @ quantity_of(field).spread.T).reshape(len(values), -1, 3))
