@@ -125,8 +125,8 @@ def _contradiction(group: Group, behaviour: Behaviour) -> InputError:
         if through:
             return NotYetError(
                 f"Plane {through[0]!r} goes through the cyclic axis: with 0 < h < N/2 (here "
-                f"nodal_diameters = {h}, N = {sectors}) the two parts of a wave mix there, and one factor for each "
-                "copy does not say how.",
+                f"nodal_diameters = {h}, N = {sectors}) the two parts of a wave mix there, and one "
+                "factor for each copy does not say how.",
                 "Half-sectors with such waves come with a later version: model a whole sector, or "
                 "h = 0" + (f" or {sectors // 2}." if sectors % 2 == 0 else "."),
             )  # fmt: skip

@@ -21,7 +21,6 @@ from expander.placements import Floats
 from expander.quantities import Quantity
 from expander.seams import Classes
 
-
 Numbers = NDArray[Any]  # floats, or complex where a field or a factor is
 
 

@@ -222,10 +222,13 @@ def _supports(
     }
     single = any(f.values(case.model).dtype == np.float32
                  for f in having(sector.fields, "reaction"))  # fmt: skip
+    least = 1e-6 if single else 1e-9
+    largest = float(np.linalg.norm(forces, axis=1).max(initial=0.0))
+    added[np.linalg.norm(added, axis=1) <= least * largest] = 0.0
     # What cancels between copies is the reaction of the seam's own condition, and no support.
     shares = added / multiplicity(sector)[:, None]
     found = []
-    for support in support_sets(mesh, added, sets, 1e-6 if single else 1e-9):
+    for support in support_sets(mesh, added, sets, least):
         nodes = support.nodes
         if not len(nodes):
             continue

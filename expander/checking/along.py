@@ -99,8 +99,7 @@ def along(seam: Seam, mesh: Mesh, group: Group, by: str = "auto") -> Line:
     edges = [f for f in faces if f.dimension == 1]
     curve = bool(edges) and max(f.dimension for f in faces) == 1
     if by == "auto":
-        reached = np.unique(np.concatenate([f.nodes.ravel() for f in edges])) if curve else []
-        if len(reached) == len(seam.nodes):
+        if curve and len(np.unique(np.concatenate([f.nodes.ravel() for f in edges]))) == len(where):
             by = "arc"
         elif seam.kind == "sector faces" and group.axis is not None:
             by = "radius"

@@ -13,7 +13,7 @@ from expander.commandline.tables import FILE_WIDTH
 
 ROUND_OFF = 1e-9  # beside the numbers that it is the rest of
 _MARKS = {"fails": "FAILS", "doubts": "doubt", "note": "note"}
-_MEASURES = {"value": "", "traction": "traction", "flux": "normal part", "kink": "slope"}
+_MEASURES = {"value": "values", "traction": "traction", "flux": "normal part", "kink": "slope"}
 
 
 def print_check(found: dict[str, Any]) -> None:
@@ -98,7 +98,8 @@ def _jumps(found: dict[str, Any]) -> Table:
         case = escape(entry["case"])
         for v in entry["seams"]:
             table.add_row(
-                *([case] * several), name, *([escape(v["seam"])] * seams), _MEASURES[v["measure"]] or "values",
+                *([case] * several), name, *([escape(v["seam"])] * seams),
+                _MEASURES[v["measure"]],
                 _percent(v["relative"]), _percent(v["relative_rms"]),
                 "-" if v["times_scatter"] is None else f"{v['times_scatter']:.2g} x",
                 "-" if v["node"] is None else str(v["node"]), v["verdict"],
@@ -114,11 +115,11 @@ def _percent(value: float | None) -> str:
 
 
 def _print_audit(console: Console, audit: dict[str, Any]) -> None:
-    rows = [(c["name"], t) for c in audit["cases"] for t in c["totals"]]
-    if rows:
+    totals = [(c["name"], t) for c in audit["cases"] for t in c["totals"]]
+    if totals:
         console.print(f"whole body: totals, moments about {_triple(audit['about'])}")
         table = _table("case", "forces", "modelled part", "whole body", "moment, whole body")
-        for case, t in rows:
+        for case, t in totals:
             size = t["sum_of_magnitudes"]
             for name, x in ((", ".join(t["fields"]), t), *((f"  at {s['name']}", s)
                                                            for s in t["supports"])):  # fmt: skip

@@ -71,8 +71,8 @@ def write_seam_mesh(
 
 def _every(continuity: Continuity, key: str, kind: type) -> NDArray[Any]:
     """An array of all seams, one after the other."""
-    found = [np.asarray(getattr(s, key), dtype=kind) for s in continuity.seams if s.touches]
-    return np.concatenate(found) if found else np.empty(0, dtype=kind)
+    found = [getattr(s, key) for s in continuity.seams if s.touches]
+    return np.concatenate([*found, np.empty(0, dtype=kind)]).astype(kind)
 
 
 def _cells(continuity: Continuity) -> Iterator[tuple[int, list[Facets]]]:

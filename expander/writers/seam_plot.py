@@ -235,43 +235,54 @@ def _both(axes: Axes, curves: _Curves, own: Floats, other: Floats, scale: float)
 
 
 def _jump(axes: Axes, curves: _Curves, scale: float, allowed: float | None) -> None:
-    x, jump = curves.line.position, curves.jump
+    x, jump, signed = curves.line.position, curves.jump, curves.signed
     many = int((curves.line.rows >= 0).sum())
     if allowed:
-        low = -allowed if curves.signed else 0.0
-        axes.axhspan(low, allowed, facecolor=ALLOWED, alpha=0.16, linewidth=0.0, zorder=0.5,
-                     label=f"allowed: {'±' if curves.signed else 'up to '}{allowed:.3g}")  # fmt: skip
-        for edge in (low, allowed) if curves.signed else (allowed,):
+        low = -allowed if signed else 0.0
+        words = f"allowed: {'±' if signed else 'up to '}{allowed:.3g}"
+        axes.axhspan(
+            low, allowed, facecolor=ALLOWED, alpha=0.16, linewidth=0.0, zorder=0.5, label=words
+        )
+        for edge in {low, allowed} - {0.0}:
             axes.axhline(edge, color=ALLOWED, linewidth=1.2, linestyle=(0, (6, 3)), zorder=0.6)
-    if np.nanmax(curves.allowance, initial=0.0) > 0.0:
-        axes.vlines(x, -curves.allowance if curves.signed else 0.0, curves.allowance, color=ERROR,
-                    linewidth=3.0, zorder=0.7, label="interpolation error, estimate")  # fmt: skip
+    error = float(np.nanmax(curves.allowance, initial=0.0))
+    if error > 0.0:
+        axes.vlines(
+            x, -curves.allowance if signed else 0.0, curves.allowance, color=ERROR,
+            linewidth=3.0, zorder=0.7, label="interpolation error, estimate",
+        )  # fmt: skip
     axes.axhline(0.0, color=_SOFT, linewidth=0.9, zorder=0.8)
-    connected = curves.line.connected
-    axes.plot(x, jump, color=JUMP, linestyle="-" if connected else "none", linewidth=1.5, marker="o",
-              markersize=float(np.clip(50.0 / np.sqrt(max(many, 1)), 2.4, 5.0)),
-              markeredgewidth=0.0, label="modelled side − copy's side" if curves.signed
-              else "length of the difference")  # fmt: skip
-    axes.legend(loc="lower right", bbox_to_anchor=(1.0, 1.0), ncols=3, frameon=False,
-                borderaxespad=0.1, labelcolor=_INK, handlelength=2.0,
-                prop={"family": _FONT, "size": 12})  # fmt: skip
-    most = max(allowed or 0.0, float(np.nanmax(curves.allowance, initial=0.0)))
-    edges = [most, -most if curves.signed else 0.0]
-    _at_least(axes, np.concatenate([jump, edges]), 0.0 if allowed else scale, signed=curves.signed)
+    axes.plot(
+        x, jump, color=JUMP, linestyle="-" if curves.line.connected else "none", linewidth=1.5,
+        marker="o", markersize=float(np.clip(50.0 / np.sqrt(max(many, 1)), 2.4, 5.0)),
+        markeredgewidth=0.0,
+        label="modelled side − copy's side" if signed else "length of the difference",
+    )  # fmt: skip
+    axes.legend(
+        loc="lower right", bbox_to_anchor=(1.0, 1.0), ncols=3, frameon=False, borderaxespad=0.1,
+        labelcolor=_INK, handlelength=2.0, prop={"family": _FONT, "size": 12},
+    )  # fmt: skip
+    most = max(allowed or 0.0, error)
+    edges = [most, -most if signed else 0.0]
+    _at_least(axes, np.concatenate([jump, edges]), 0.0 if allowed else scale, signed)
     worst = _worst(curves)
-    if worst is None or not jump[worst]:
-        return
-    axes.axvline(x[worst], color=_SOFT, linewidth=1.0, linestyle=":", zorder=0.9)
-    axes.plot(x[worst], jump[worst], marker="o", markersize=13, markerfacecolor="none",
-              markeredgecolor=_INK, markeredgewidth=1.8, linestyle="none", zorder=4)  # fmt: skip
-    left, right = axes.get_xlim()
-    late = x[worst] > 0.5 * (left + right)
+    if worst is not None and jump[worst]:
+        _mark(axes, float(x[worst]), float(jump[worst]), f"worst: node {curves.nodes[worst]}")
+
+
+def _mark(axes: Axes, x: float, y: float, words: str) -> None:
+    """A ring around a point, and words beside it where there is more room."""
+    axes.axvline(x, color=_SOFT, linewidth=1.0, linestyle=":", zorder=0.9)
+    axes.plot(
+        x, y, marker="o", markersize=13, markerfacecolor="none", markeredgecolor=_INK,
+        markeredgewidth=1.8, linestyle="none", zorder=4,
+    )  # fmt: skip
+    late = x > sum(axes.get_xlim()) / 2.0
+    paper = {"boxstyle": "round,pad=0.25", "facecolor": "white", "edgecolor": "none", "alpha": 0.85}
     axes.annotate(
-        f"worst: node {curves.nodes[worst]}", (x[worst], jump[worst]),
-        xytext=(-14 if late else 14, 10 if jump[worst] >= 0.0 else -10), textcoords="offset points", fontsize=13, zorder=5,
-        ha="right" if late else "left", va="center", **_words(),
-        bbox={"boxstyle": "round,pad=0.25", "facecolor": "white", "edgecolor": "none",
-              "alpha": 0.85},
+        words, (x, y), xytext=(-14 if late else 14, 10 if y >= 0.0 else -10),
+        textcoords="offset points", fontsize=13, zorder=5, ha="right" if late else "left",
+        va="center", bbox=paper, **_words(),
     )  # fmt: skip
 
 
