@@ -13,6 +13,7 @@ from typing import TYPE_CHECKING
 
 if TYPE_CHECKING:
     from expander.casefile import read_case
+    from expander.checkup import check
     from expander.errors import CheckFailed, InputError, NotYetError, SeamfoldError
     from expander.expansion import expand, plan
 
@@ -21,12 +22,13 @@ __all__ = [
     "InputError",
     "NotYetError",
     "SeamfoldError",
+    "check",
     "expand",
     "plan",
     "read_case",
 ]
 
-_HOMES = {"expand": "expansion", "plan": "expansion", "read_case": "casefile"}
+_HOMES = {"check": "checkup", "expand": "expansion", "plan": "expansion", "read_case": "casefile"}
 
 
 def __getattr__(name: str) -> object:

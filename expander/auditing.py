@@ -84,10 +84,12 @@ def _mass(sector: Sector) -> tuple[str, Properties, Properties, Properties]:
     mesh, model = sector.mesh, sector.model
     density, thickness = (having(sector.fields, r) for r in ("density", "thickness"))
     rho = density[0].values(model)[:, 0].astype(float) if density else 1.0
-    t = thickness[0].values(model)[:, 0].astype(float) if thickness else 1.0
+    dims = dimensions(mesh.types)
+    skin = 0.0 if (dims == 3).any() else 1.0  # what shells weigh beside solids is not known
+    t = thickness[0].values(model)[:, 0].astype(float) if thickness else skin
     words = f"the cells and {density[0].name!r}" if density else "the cells with density 1"
-    if (dimensions(mesh.types) == 2).any():
-        words += f" and {thickness[0].name!r}" if thickness else " and thickness 1"
+    if (dims == 2).any():
+        words += f" and {thickness[0].name!r}" if thickness else f" and thickness {skin:g}"
     own = properties(mesh, rho, t)
     bare = replace(
         sector, fields=(), cases=tuple(replace(c, chi=np.ones(len(sector.group)))

@@ -108,6 +108,10 @@ def plan_body(sector: Sector, step: Step = lambda words: None) -> WholeBody:
     resolved = _resolved(mesh, fields, cases, nodes, group, "points", apart)
     openings = check_closing(mesh, group, fields, cases, nodes, resolved, case.seam.limit,
                              keep_apart=case.seam.open == "keep apart")  # fmt: skip
+    if seams.unmatched:
+        from expander.checking.continuity import check_interpolated
+
+        notes += check_interpolated(sector)
     notes += averaged_notes(fields, cases, nodes, resolved)
     for o in openings:
         notes.append(

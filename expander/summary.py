@@ -17,9 +17,11 @@ from expander.quantities import sign_words
 SCHEMA = 1
 
 CAUTIONS = (
-    "Geometry, material, supports, contact, preload and temperature must share the symmetry.",
+    "Geometry, material, supports, contact, preload, gravity and temperature must share the "
+    "symmetry.",
     "Symmetric seam conditions hide antisymmetric buckling and vibration modes, and the reverse; "
     "a nonlinear response can break the symmetry.",
+    "Half the thickness of a web in a cut plane is right for membrane action only.",
     "Local codes and a licensed engineer decide.",
 )
 

@@ -14,6 +14,7 @@ from expander.checking.seamlist import Seam, seams_of
 from expander.checking.smoothness import Near, kink, recovered
 from expander.checking.verdicts import CLOSED, DOUBTFUL, OPEN, TOLD, Verdict, verdict_of
 from expander.closing import largest_value, scale_of
+from expander.errors import CheckFailed
 from expander.fields import Field
 from expander.loadcases import LoadCase
 from expander.resolve import Numbers
@@ -143,3 +144,38 @@ def value_verdict(jump: Jump, points: np.ndarray, scale: float, limit: float) ->
         result, words = DOUBTFUL, "within the error of interpolating between nodes"
     over = sure if sure.any() else beyond
     return verdict_of(jump, points, scale, limit, "value", result, over, words=words)
+
+
+def check_interpolated(sector: Sector) -> list[str]:
+    """Whether fields that must agree do so at faces that do not pair; notes on what was compared.
+
+    Raises
+    ------
+    CheckFailed
+        Naming seam, field and node, unless open seams are to be kept apart.
+    """
+    notes = []
+    for seam in seams_of(sector):
+        if not seam.interpolated or not seam.touches:
+            continue
+        for case in sector.cases:
+            for f in sector.fields:
+                if not primary(f):
+                    continue
+                jump = jump_at(sector.mesh, sector.group, seam, f, case, f.values(case.model),
+                               case.chi)  # fmt: skip
+                scale = scale_of(f, case, sector.cases)
+                found = value_verdict(jump, sector.mesh.points, scale, sector.case.seam.limit)
+                words = (
+                    f"{f.name!r} in case {case.name!r}, {seam.name}, compared by interpolation: "
+                    f"the sides differ by up to {100 * found.relative:.3g} % of its largest value "
+                    f"(node {found.node})"
+                )
+                if found.result == OPEN and sector.case.seam.open == "refuse":
+                    raise CheckFailed(
+                        words + ", which is more than interpolation explains.",
+                        "Check load word, kind and components; seamfold check shows both sides. To "
+                        'go on, seam.open = "keep apart" under [seam].',
+                    )
+                notes.append(words)
+    return notes

@@ -49,8 +49,9 @@ def findings(continuity: Continuity, audit: Audit | None) -> list[Finding]:
     """Everything that a check found, the gravest first."""
     found = [f for s in continuity.seams for f in _of_seam(continuity.sector, s)]
     told = {(x.seam, x.case) for x in continuity.found if x.result == OPEN}
-    found += [f for x in continuity.found for f in _of_declared(x)]
-    found += [f for v in continuity.verdicts for f in _of_verdict(v, told)]
+    apart = continuity.sector.case.seam.open == "keep apart"
+    found += [f for x in continuity.found for f in _of_declared(x, apart)]
+    found += [f for v in continuity.verdicts for f in _of_verdict(v, told, apart)]
     found += _of_near_misses(continuity.sector)
     if audit is not None:
         found += list(_of_audit(continuity.sector, audit))
@@ -101,7 +102,7 @@ def _of_near_misses(sector: Sector) -> Iterator[Finding]:
         )  # fmt: skip
 
 
-def _of_declared(x: Found) -> Iterator[Finding]:
+def _of_declared(x: Found, apart: bool) -> Iterator[Finding]:
     if x.result not in (OPEN, DOUBTFUL):
         if x.found == CLAMPED:
             yield Finding(NOTE, x.seam, f"case {x.case!r}: {x.words}")
@@ -116,15 +117,18 @@ def _of_declared(x: Found) -> Iterator[Finding]:
     if x.alternative and np.isfinite(x.alternative_residual):
         best = f", as {x.alternative} {100 * x.alternative_residual:.3g} %"
     measured = f" ({100 * x.residual:.3g} %{best})" if np.isfinite(x.residual) else ""
+    weight = FAILS if x.result == OPEN else DOUBTS
+    if apart and not x.line:  # no word closes it: an open seam, as the case says
+        weight = NOTE
     yield Finding(
-        FAILS if x.result == OPEN else DOUBTS, x.seam,
+        weight, x.seam,
         f"case {x.case!r} is declared {x.declared}, found: {x.found}{measured}"
         + (f"; {x.words}" if x.words else "") + nodes,
         x.line,
     )  # fmt: skip
 
 
-def _of_verdict(v: Verdict, told: set[tuple[str, str]]) -> Iterator[Finding]:
+def _of_verdict(v: Verdict, told: set[tuple[str, str]], apart: bool) -> Iterator[Finding]:
     if v.result not in (OPEN, DOUBTFUL):
         return
     at = ", ".join(f"{c:.5g}" for c in v.position)
@@ -141,7 +145,10 @@ def _of_verdict(v: Verdict, told: set[tuple[str, str]]) -> Iterator[Finding]:
     if v.words:
         words += f"; {v.words}"
     weight = FAILS if v.result == OPEN else DOUBTS
-    if (v.seam, v.case) in told:
+    if apart and v.result == OPEN:
+        weight = NOTE
+        words += '; kept apart (seam.open = "keep apart")'
+    elif (v.seam, v.case) in told:
         words += " (see the load of this seam)"
     yield Finding(weight, v.seam, words)
 

@@ -5,6 +5,7 @@ from __future__ import annotations
 import json
 import sys
 from dataclasses import dataclass
+from importlib import resources
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
@@ -20,9 +21,18 @@ if TYPE_CHECKING:
     from expander.checking.verdicts import Verdict
 
 
+def _print_schema(context: click.Context, _: click.Parameter, wanted: bool) -> None:
+    if wanted and not context.resilient_parsing:
+        file = resources.files("expander.checking").joinpath("report_schema.json")
+        click.echo(file.read_text(encoding="utf-8"), nl=False)
+        context.exit()
+
+
 @click.command()
 @case_options
 @click.option("--json", "as_json", is_flag=True, help="Print the report as JSON.")
+@click.option("--json-schema", is_flag=True, is_eager=True, expose_value=False,
+              callback=_print_schema, help="Print the JSON Schema of the report.")  # fmt: skip
 @click.option("--strict", is_flag=True, help="Doubts fail the check too (exit status 1).")
 @click.option("--seams-only", is_flag=True, help="Leave out the audit of the whole body.")
 @click.option("--section", multiple=True, metavar="PLANE",

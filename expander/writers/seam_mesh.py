@@ -2,9 +2,11 @@
 
 from __future__ import annotations
 
+import re
 from collections.abc import Iterator, Sequence
 from pathlib import Path
 from typing import Any
+from xml.sax.saxutils import quoteattr
 
 import numpy as np
 from numpy.typing import NDArray
@@ -19,6 +21,7 @@ from expander.writers.seam_tables import known_difference, write_all
 from expander.writers.vtu import FieldData
 
 _VERTEX = 1
+_MARK = "array-%d-of-seams"  # no base64 looks like it
 Named = tuple[str, NDArray[np.generic], tuple[str, ...]]
 
 
@@ -140,10 +143,13 @@ def _vtu(
     from vtkmodules.vtkCommonDataModel import vtkCellArray, vtkUnstructuredGrid
     from vtkmodules.vtkIOXML import vtkXMLUnstructuredGridWriter
 
+    names: list[str] = []
+
     def named(name: str, values: NDArray[np.generic], components: tuple[str, ...] = ()) -> Any:
         flat = values[:, 0] if values.ndim == 2 and values.shape[1] == 1 else values
         array = numpy_to_vtk(np.ascontiguousarray(flat), deep=True)
-        array.SetName(_text(name))
+        array.SetName(_MARK % len(names))
+        names.append(name)
         for k, component in enumerate(components):
             array.SetComponentName(k, component)
         return array
@@ -178,9 +184,23 @@ def _vtu(
     writer.WriteToOutputStringOn()  # base64 throughout: the string holds no raw bytes
     if not writer.Write():
         raise InputError("The mesh of the seams could not be written.", "Free some memory.")
-    return str(writer.GetOutputString()).encode()
+    return _renamed(str(writer.GetOutputString()), names).encode()
+
+
+def _renamed(text: str, names: list[str]) -> str:
+    """VTK's writer puts names into the file as they are, whatever they do to XML; here they are
+    quoted in place of the marks it was given."""
+
+    def name(found: re.Match[str]) -> str:
+        return f"Name={_quoted(_text(names[int(found[1])]))}"
+
+    return re.sub('Name="' + _MARK.replace("%d", "([0-9]+)") + '"', name, text)
 
 
 def _text(text: str) -> str:
     """UTF-8; a name that is not Unicode keeps a question mark for what cannot be said."""
     return text.encode("utf-8", "replace").decode()
+
+
+def _quoted(text: str) -> str:
+    return quoteattr(text, {"\n": "&#10;", "\t": "&#9;", "\r": "&#13;"})

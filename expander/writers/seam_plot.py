@@ -201,8 +201,8 @@ def _figure(size: tuple[int, int], panels: int) -> Figure:
         last = axes is figure.axes[-1]
         axes.tick_params(labelsize=12.5, colors=_SOFT, labelcolor=_INK, labelfontfamily=_FONT,
                          labelbottom=last)  # fmt: skip
-        axes.ticklabel_format(axis="both", style="sci", scilimits=(-2, 4), useOffset=False,
-                              useMathText=True)  # fmt: skip
+        axes.ticklabel_format(style="sci", scilimits=(-2, 4), useOffset=False, useMathText=True)
+        axes.ticklabel_format(axis="x", scilimits=(-3, 5))
         for offset in (axes.xaxis.get_offset_text(), axes.yaxis.get_offset_text()):
             offset.set(fontsize=12, color=_SOFT, family=_FONT)
         if not last:
@@ -215,19 +215,21 @@ def _both(axes: Axes, curves: _Curves, own: Floats, other: Floats, scale: float)
     x, connected = curves.line.position, curves.line.connected
     many = int((curves.line.rows >= 0).sum())
     mark = float(np.clip(70.0 / np.sqrt(max(many, 1)), 2.4, 7.0))
-    for values, words, colour, style, marker, face, bigger in (
-        (own, "modelled side", OWN, "-", "o", OWN, 0.0),
-        (other, "copy's side", COPY, (0, (5, 3)), "s", "none", 3.2),
+    # The broken line goes over the full one, but discs over squares: of many points both are seen.
+    for values, words, colour, style, marker, face, bigger, above in (
+        (own, "modelled side", OWN, "-", "o", OWN, 0.0, 2.2 if connected else 2.6),
+        (other, "copy's side", COPY, (0, (5, 3)), "s", "none", 3.2, 2.4),
     ):
         axes.plot(
             x, values, label=words, color=colour, marker=marker, markersize=mark + bigger,
             linestyle=style if connected else "none", linewidth=1.8, markerfacecolor=face,
-            markeredgecolor=colour, markeredgewidth=1.3 if bigger else 0.0,
+            markeredgecolor=colour, markeredgewidth=1.3 if bigger else 0.0, zorder=above,
         )  # fmt: skip
     if axes is axes.figure.axes[0]:
         axes.legend(loc="lower right", bbox_to_anchor=(1.0, 1.0), ncols=2, frameon=False,
                     borderaxespad=0.2, labelcolor=_INK, numpoints=1 if not connected else 2,
-                    handlelength=3.0, prop={"family": _FONT, "size": 13.5})  # fmt: skip
+                    handlelength=3.0, markerscale=max(1.0, 4.5 / mark),
+                    prop={"family": _FONT, "size": 13.5})  # fmt: skip
     _at_least(axes, np.concatenate([own, other]), scale)
     worst = _worst(curves)
     if worst is not None and curves.jump[worst]:

@@ -1,0 +1,189 @@
+"""Shared by the tests of `seamfold check`: solved sectors written to a case, and what is found.
+
+The solutions come from `demo_cases.solver` (scikit-fem), complex ones from scipy with the cyclic
+condition written out by hand; nothing here knows how the check looks at a seam.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Mapping, Sequence
+from dataclasses import dataclass, field
+from functools import cached_property
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+from numpy.typing import ArrayLike
+
+from demo_cases.solver import (
+    CutPlane,
+    Cyclic,
+    Fixed,
+    Material,
+    Mesh,
+    Solution,
+    on_plane,
+    solve,
+)
+from expander.checking.report import CheckUp, report
+from expander.checkup import check
+from tests.against_outside.bodies import SHIFT, SIX, SKEW, Floats, Model, mirrors
+from tests.against_outside.elastic import word
+
+STEEL = Material(young=200e3, poisson=0.3)
+
+KINDS: dict[str, Mapping[str, object]] = {
+    "displacement": {"kind": "polar vector"},
+    "stress": {"kind": "symmetric tensor", "components": SIX, "seam": "recovered"},
+    "cell_stress": {"kind": "symmetric tensor", "components": SIX},
+    "rotation": {"kind": "axial vector", "seam": "recovered"},
+    "applied_force": {"kind": "polar vector", "seam": "sum"},
+    "reaction": {"kind": "polar vector", "seam": "sum"},
+}
+
+
+@dataclass(frozen=True)
+class Found:
+    """What `seamfold check` found, as an object and as the plain data of its report."""
+
+    checkup: CheckUp
+
+    @cached_property
+    def facts(self) -> dict[str, Any]:
+        return report(self.checkup, "test")
+
+    @property
+    def verdict(self) -> str:
+        return self.checkup.verdict
+
+    @property
+    def loads(self) -> list[dict[str, Any]]:
+        return self.facts["loads"]
+
+    @property
+    def wrong_loads(self) -> list[dict[str, Any]]:
+        """Loads that are not closed, the worst first."""
+        return sorted((f for f in self.loads if f["verdict"] != "closed"),
+                      key=lambda f: -f["residual"])  # fmt: skip
+
+    def load(self, seam: str) -> dict[str, Any]:
+        """What was found of the load on the seam whose name contains the word."""
+        (one,) = [f for f in self.loads if seam in f["seam"]]
+        return one
+
+    def measures(self, name: str | None = None) -> list[dict[str, Any]]:
+        """Every measure of a field at a seam, or of all fields."""
+        return [
+            {"field": f["field"], **s}
+            for f in self.facts["fields"]
+            if name in (None, f["field"])
+            for s in f["seams"]
+        ]
+
+    def results(self, name: str) -> set[str]:
+        """The verdicts on a field at all seams."""
+        return {s["verdict"] for s in self.measures(name)}
+
+    def times(self, measure: str) -> float:
+        """Largest jump by a measure in multiples of the cells' scatter."""
+        return max((s["times_scatter"] or 0.0 for s in self.measures() if s["measure"] == measure),
+                   default=0.0)  # fmt: skip
+
+    def says(self, *words: str, weight: str | None = None) -> str:
+        """All findings that contain each of the words, one to a line; "" if there are none."""
+        return "\n".join(
+            f"{f.weight}: {f.about}: {f.words} {f.line}"
+            for f in self.checkup.findings
+            if weight in (None, f.weight)
+            and all(w in f"{f.about}: {f.words} {f.line}" for w in words)
+        )
+
+    @property
+    def all_findings(self) -> str:
+        return self.says()
+
+
+def found_in(case: Path, **options: bool) -> Found:
+    return Found(check(case, **options))
+
+
+@dataclass(frozen=True)
+class Part:
+    """The modelled part of an elastic body with everything that its solver was told.
+
+    Attributes
+    ----------
+    planes, cyclic : its seam conditions.
+    halves : `planes[1]` follows from the axis and `planes[0]`, and is not declared.
+    """
+
+    mesh: Mesh
+    load: Floats
+    fixed: Sequence[Fixed] = ()
+    planes: Sequence[CutPlane] = ()
+    cyclic: Cyclic | None = None
+    material: Material = STEEL
+    halves: bool = False
+
+    @cached_property
+    def solution(self) -> Solution:
+        cyclic = None if self.halves else self.cyclic
+        return solve(self.mesh, self.material, self.load, fixed=self.fixed, planes=self.planes,
+                     cyclic=cyclic)  # fmt: skip
+
+    def tables(self) -> dict[str, object]:
+        """[[mirror]] and [cyclic] as they are."""
+        declared = self.planes[:1] if self.halves else self.planes
+        tables: dict[str, object] = {
+            "mirror": mirrors(*((f"p{i}", p.unit, np.asarray(p.point, dtype=float), word(p.parity))
+                                for i, p in enumerate(declared)))
+        }  # fmt: skip
+        if self.cyclic is not None:
+            N = self.cyclic.sectors
+            tables["cyclic"] = {
+                "sectors": N,
+                "axis": np.asarray(self.cyclic.axis, dtype=float),
+                "point": np.asarray(self.cyclic.point, dtype=float),
+                "nodal_diameters": 0 if self.cyclic.parity == 1 else N // 2,
+            }
+        return tables
+
+    def model(self, folder: Path, names: Sequence[str] = tuple(KINDS), **values: Floats) -> Model:
+        """The case with these fields of the solution, some of them given other values."""
+        s = self.solution
+        points = {"displacement": s.displacement, "stress": s.nodal_stress, "rotation": s.rotation,
+                  "applied_force": s.external_force, "reaction": s.reaction}  # fmt: skip
+        cells = {"cell_stress": s.cell_stress}
+        mesh = self.mesh
+        model = Model(folder, mesh.points, {mesh.shape.vtk_type: mesh.cells})
+        for name in names:
+            model.field(name, **KINDS[name])  # type: ignore[arg-type]
+        model.values(
+            points={n: values.get(n, v) for n, v in points.items() if n in names},
+            cells={n: values.get(n, v) for n, v in cells.items() if n in names},
+        )
+        return model.table(**self.tables())
+
+    def found(self, folder: Path, names: Sequence[str] = tuple(KINDS), **values: Floats) -> Found:
+        return found_in(self.model(folder, names, **values).write())
+
+
+def with_mirror(model: Model, number: int, **words: object) -> Model:
+    """The case with other words for one of its planes."""
+    table = [dict(m) for m in model.tables["mirror"]]  # type: ignore[attr-defined]
+    table[number].update(words)
+    return model.table(mirror=table)
+
+
+def skewed(points: ArrayLike) -> Floats:
+    """Points moved to a system aligned with nothing, off the origin."""
+    return np.asarray(points) @ SKEW.T + SHIFT
+
+
+def in_skew(mesh: Mesh) -> Mesh:
+    return mesh.mapped(lambda *x: skewed(np.stack(x, axis=1)).T)
+
+
+def sides(mesh: Mesh, normal: ArrayLike, point: ArrayLike = (0.0, 0.0, 0.0)) -> np.ndarray:
+    """Numbers of the nodes in a plane."""
+    return np.flatnonzero(on_plane(mesh, normal, point))
