@@ -53,6 +53,10 @@ def findings(continuity: Continuity, audit: Audit | None) -> list[Finding]:
     found += [f for x in continuity.found for f in _of_declared(x, apart)]
     found += [f for v in continuity.verdicts for f in _of_verdict(v, told, apart)]
     found += _of_near_misses(continuity.sector)
+    found += [
+        Finding(NOTE, name, f"{count} values are not finite numbers; they were not compared")
+        for name, count in continuity.sector.invalid_numbers.items()
+    ]
     if audit is not None:
         found += list(_of_audit(continuity.sector, audit))
     order = (FAILS, DOUBTS, NOTE)

@@ -35,12 +35,12 @@ def cell_gradients(mesh: Mesh, cells: Ints, values: Numbers) -> Numbers:
         rows = np.searchsorted(cells, numbers)
         x = mesh.points[nodes].astype(float)
         x -= x.mean(axis=1, keepdims=True)
-        v = values[nodes]
-        v = v - v.mean(axis=1, keepdims=True)
         moment = np.einsum("fsi,fsj->fij", x, x)
         size = np.trace(moment, axis1=1, axis2=2)
         size[size == 0.0] = 1.0  # a point has no gradient
-        with np.errstate(invalid="ignore"):
+        with np.errstate(invalid="ignore"):  # accepted values that are not finite spread
+            v = values[nodes]
+            v = v - v.mean(axis=1, keepdims=True)
             right = np.einsum("fsi,fsc->fic", x, v) / size[:, None, None]
         flat = np.linalg.det(moment / size[:, None, None]) < 1e-12
         inverse = np.empty_like(moment)
@@ -48,7 +48,8 @@ def cell_gradients(mesh: Mesh, cells: Ints, values: Numbers) -> Numbers:
         inverse[~flat] = np.linalg.inv(scaled[~flat])
         # A shell or a line has no gradient across itself.
         inverse[flat] = np.linalg.pinv(scaled[flat], rcond=1e-9, hermitian=True)
-        out[rows] = np.einsum("fij,fjc->fci", inverse, right)
+        with np.errstate(invalid="ignore"):
+            out[rows] = np.einsum("fij,fjc->fci", inverse, right)
     return out
 
 
@@ -56,5 +57,6 @@ def cell_means(mesh: Mesh, cells: Ints, values: Numbers) -> Numbers:
     """Mean of nodal values (n, c) over the nodes of each cell, (f, c)."""
     out = np.zeros((len(cells), values.shape[1]), dtype=np.result_type(values, float))
     for _, numbers, nodes in blocks(mesh, cells) if len(cells) else ():
-        out[np.searchsorted(cells, numbers)] = values[nodes].mean(axis=1)
+        with np.errstate(invalid="ignore"):
+            out[np.searchsorted(cells, numbers)] = values[nodes].mean(axis=1)
     return out

@@ -77,13 +77,7 @@ class Surroundings:
         """
         jumps = []
         for face in self.faces:
-            difference = per_cell[face.first] - per_cell[face.second]
-            jump = (
-                np.einsum("pci,pi->pc", difference, face.normals)
-                if per_cell.ndim == 3
-                else difference
-            )
-            jumps.append(np.linalg.norm(jump, axis=1))
+            jumps.append(_length(per_cell[face.first], per_cell[face.second], face.normals))
         found = self._near(jumps, nodes, parallel=True)
         alone = np.isnan(found)
         if alone.any():  # no layer of cells beside this one: compare along the seam
@@ -106,10 +100,7 @@ class Surroundings:
             rows = self.rows(numbers)
             most = np.zeros(len(rows))
             for column in block.T:
-                difference = nodal[column] - per_cell[rows]
-                if nodal.ndim == 3:
-                    difference = np.einsum("pci,pi->pc", difference, self.towards[rows])
-                most = np.maximum(most, np.linalg.norm(difference, axis=1))
+                most = np.maximum(most, _length(nodal[column], per_cell[rows], self.towards[rows]))
             for column in block.T:
                 np.maximum.at(value, column, 2.0 * most)
         return self._spread(value, nodes)
@@ -133,6 +124,17 @@ class Surroundings:
             value = wider
         found = value[nodes]
         return np.where(found < 0.0, np.nan, found)
+
+
+def _length(a: Numbers, b: Numbers, normal: Floats) -> Floats:
+    """(p,) length of a - b, contracted with the normal (p, 3) where both are (p, c, 3); a value
+    that is not finite was accepted and counted, and is no jump."""
+    with np.errstate(invalid="ignore", over="ignore"):
+        difference = a - b
+        if difference.ndim == 3:
+            difference = np.einsum("pci,pi->pc", difference, normal)
+        length = np.linalg.norm(difference, axis=1)
+    return np.where(np.isfinite(length), length, 0.0)
 
 
 def surroundings(mesh: Mesh, nodes: Ints, towards: Floats) -> Surroundings:

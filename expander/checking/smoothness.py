@@ -119,7 +119,7 @@ def kink(
     if not near.seam.faces:
         return None
     gradients = cell_gradients(near.mesh, near.around.cells, _turned(near.mesh, field, values))
-    scale = float(np.linalg.norm(gradients, axis=(1, 2)).max(initial=0.0))
+    scale = largest_value(gradients.reshape(len(gradients), -1))
     q = quantity_of(field)
     return _at_faces(near, field, case, gradients, q, chi, scale, "kink", limit)
 
