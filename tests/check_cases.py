@@ -87,17 +87,31 @@ def shells() -> Given:
     )
 
 
-def not_a_number() -> Given:
-    """Values that are not finite on the seam and off it, in every kind of field."""
+def without_a_value(value: float) -> Given:
+    """A displacement that is not finite at a node of the seam and at one off it."""
     given = half()
-    n = len(given.sector.points)
-    force = np.ones((n, 3))
-    force[7] = [np.nan, np.inf, -np.inf]
-    stress = np.ones((n, 6))
+    given.points["displacement"][0] = value
+    given.points["displacement"][-1, 1] = value
+    given.allow_nan = True
+    return given
+
+
+def forces_not_finite() -> Given:
+    """Loads that are not finite at a node."""
+    given = half()
+    force = np.ones((len(given.sector.points), 3))
+    force[20] = [np.nan, np.inf, -np.inf]
+    given.points["applied_force"] = force
+    given.allow_nan = True
+    return given
+
+
+def stress_not_finite() -> Given:
+    """A stress that is missing at a node of the seam and at one off it."""
+    given = half()
+    stress = np.ones((len(given.sector.points), 6)) * [1, 2, 3, 0, 1, 0]
     stress[[0, 30]] = np.nan
-    given.points["displacement"][0] = np.nan
-    given.points["displacement"][-1, 1] = np.inf
-    given.points |= {"applied_force": force, "stress": stress}
+    given.points["stress"] = stress
     given.allow_nan = True
     return given
 
@@ -172,6 +186,8 @@ def apart() -> Given:
 
 AWKWARD: dict[str, Callable[[], Given]] = {
     "as declared": half, "open seam": open_seam, "clamped": clamped, "no forces": no_forces,
-    "shells": shells, "not a number": not_a_number, "sections": sections, "expected": expected,
-    "other mesh": other_mesh, "wave": wave, "apart": apart,
+    "shells": shells, "sections": sections, "expected": expected, "other mesh": other_mesh,
+    "wave": wave, "apart": apart, "no displacement at a node": lambda: without_a_value(np.nan),
+    "infinite displacement": lambda: without_a_value(np.inf),
+    "forces that are not finite": forces_not_finite, "no stress at a node": stress_not_finite,
 }  # fmt: skip

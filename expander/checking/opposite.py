@@ -59,7 +59,7 @@ class Side:
     apart : opposite the other surface, but farther off.
     gap : (f,) distance between each facet and the other surface, the largest of its corners, along
         the other surface's normal; 0 if matched, NaN where nothing lies opposite.
-    node : (f,) the corner at which it is largest; -1 where nothing lies opposite.
+    node : (f,) the corner at which it is largest; -1 if matched or where nothing lies opposite.
     """
 
     matched: Ints

@@ -22,13 +22,14 @@ from expander.checking.facets import (
     normals,
     outer_facets,
     shares,
+    subset,
     tokens,
 )
 from expander.checking.feet import FACING
 from expander.checking.opposite import Against, Opposite, classify, opposite
 from expander.groups import Group
 from expander.model import Mesh
-from expander.placements import Floats
+from expander.placements import Floats, Placement
 from expander.seams import OF_EDGE, Tolerance
 from expander.sector import Sector
 from expander.topology import Ints, cell_sizes, cells_touching, local_edges
@@ -183,7 +184,7 @@ def _face_seam(sector: Sector, g: int, i: Ints, j: Ints, mirror: bool) -> Seam |
                    _distance(mesh, group, g, i, j))  # fmt: skip
     rows, against, found = [paired], None, []
     if not mirror:
-        against, reach = _against(sector, g, i, j)
+        against, reach = _against(sector, g, i, j, faces)
         for s, nodes, opposing, taken in (
             (g, against.nodes_here, against.facets_there, i),
             (int(group.inverse[g]), against.nodes_there, against.facets_here, j),
@@ -314,16 +315,59 @@ def _at_nodes(mesh: Mesh, faces: tuple[FacePair, ...], nodes: Ints) -> tuple[Flo
     return normal[nodes] / np.where(length > 0.0, length, 1.0), area[nodes]
 
 
-def _against(sector: Sector, g: int, i: Ints, j: Ints) -> tuple[Against, float]:
-    """How the faces of turned neighbours meet, where nodes do not pair."""
-    mesh = sector.mesh
-    outer = outer_facets(mesh)
+def _against(
+    sector: Sector, g: int, i: Ints, j: Ints, faces: tuple[FacePair, ...]
+) -> tuple[Against, float]:
+    """How the faces of turned neighbours meet, where nodes do not pair; and how far was looked."""
+    mesh, placement = sector.mesh, sector.group.placements[g]
     partner = np.full(mesh.point_count, -1, dtype=np.int64)
     partner[j] = i
+    outer = outer_facets(mesh)
     corners = [f.nodes[:, : f.corners].ravel() for f in outer]
     edge = local_edges(mesh, np.unique(np.concatenate(corners))) if corners else np.ones(1)
     usual = float(np.median(edge[np.isfinite(edge)])) if np.isfinite(edge).any() else mesh.size
     tolerance = Tolerance(mesh, sector.case.seam.tolerance)
     touching = max(OF_EDGE * usual, tolerance.spacing, tolerance.given or 0.0)
     reach = REACH * usual
-    return classify(mesh, outer, sector.group.placements[g], partner, touching, reach), reach
+    back = np.full(mesh.point_count, -1, dtype=np.int64)
+    back[i] = j
+    met = [(f.corners, back[f.corners]) for f in faces]
+    near = near_each_other(mesh, outer, placement, [c for pair in met for c in pair], reach)
+    return classify(mesh, near, placement, partner, touching, reach), reach
+
+
+def near_each_other(
+    mesh: Mesh, outer: list[Facets], placement: Placement, met: list[Ints], reach: float
+) -> list[Facets]:
+    """Outer facets near the image of another one by `placement`, without those that meet already.
+
+    Parameters
+    ----------
+    met : corners (f, c) of the facets that meet node to node, on both sides.
+    """
+    from scipy.spatial import cKDTree
+
+    token = tokens(mesh.point_count)
+    known = np.concatenate([np.zeros(0, dtype=np.uint64), *(facet_keys(token, c) for c in met)])
+    left, centres, radii = [], [], []
+    for f in outer:
+        corners = f.nodes[:, : f.corners]
+        free = np.flatnonzero(~np.isin(facet_keys(token, corners), known))
+        for kept in subset([f], free):
+            p = mesh.points[kept.nodes].astype(float)
+            centre = p.mean(axis=1)
+            left.append(kept)
+            centres.append(centre)
+            radii.append(np.linalg.norm(p - centre[:, None], axis=2).max(axis=1))
+    if not left:
+        return []
+    centre, radius = np.concatenate(centres), np.concatenate(radii)
+    image = placement.apply(centre)
+    most = 2.0 * float(radius.max()) + reach
+    keep = np.zeros(len(centre), dtype=bool)
+    for a, b in ((centre, image), (image, centre)):
+        low, high = b.min(axis=0) - most, b.max(axis=0) + most
+        inside = np.flatnonzero(((a >= low) & (a <= high)).all(axis=1))
+        distance = cKDTree(b).query(a[inside], distance_upper_bound=most)[0]
+        keep[inside[distance <= radius[inside] + float(radius.max()) + reach]] = True
+    return subset(left, np.flatnonzero(keep))
