@@ -7,10 +7,9 @@ from pathlib import Path
 import numpy as np
 from numpy.typing import NDArray
 
-from expander.behaviours import Behaviour, Factors
 from expander.casefile import CaseFile, CaseTable
 from expander.cells import require_known
-from expander.errors import InputError, NotYetError
+from expander.errors import InputError
 from expander.fields import Field
 from expander.frames import Cylindrical
 from expander.groups import Group
@@ -135,30 +134,6 @@ def check_linear(case: CaseFile, cases: tuple[LoadCase, ...]) -> None:
             "A nonlinear response cannot be scaled, added or taken as antisymmetric: use symmetric "
             "cases alone, or set linear = true if the analysis is linear.",
         )
-
-
-def refuse_complex(case: CaseFile, behaviours: list[Behaviour], chis: list[Factors]) -> None:
-    """Refuse complex fields and factors where they cannot be served yet."""
-    for behaviour, chi in zip(behaviours, chis, strict=True):
-        if np.iscomplexobj(chi) and case.cyclic is not None:
-            h, sectors = behaviour.nodal_diameters, case.cyclic.sectors
-            half = f" and {sectors // 2}" if sectors % 2 == 0 else ""
-            raise NotYetError(
-                f"nodal_diameters = {h} with {sectors} sectors needs complex results (a phase of "
-                f"{360.0 * h / sectors:.6g} degrees from sector to sector), which this version "
-                "does not expand yet.",
-                f"This version expands nodal_diameters = 0{half} for {sectors} sectors; it checks "
-                "the others: seamfold check.",
-            )
-    for name, table in case.fields.items():
-        if table.real is not None or table.amplitude is not None:
-            raise NotYetError(
-                f"fields.{name} is complex, which this version checks (seamfold check) but does "
-                "not expand yet.",
-                f'Give one part of it as a field of its own: arrays = ["{(table.real or [""])[0]}"]'
-                if table.real is not None
-                else "Leave the table out with --skip-undeclared.",
-            )
 
 
 def check_complex(fields: list[Field], case: LoadCase) -> None:

@@ -20,6 +20,7 @@ from expander.groups import Group
 from expander.loadcases import LoadCase, Result
 from expander.model import Mesh
 from expander.numbering import Numbering, shared_cells
+from expander.phases import decided
 from expander.placements import Floats
 from expander.referencing import referenced
 from expander.resolve import Resolved, resolve
@@ -94,7 +95,8 @@ def prepare(
     CheckFailed
         If a primary field does not close along a seam (exit status 1).
     """
-    return plan_body(referenced(read_sector(case, skip_undeclared, allow_nan, step)), step)
+    sector = decided(read_sector(case, skip_undeclared, allow_nan, step))
+    return plan_body(referenced(sector), step)
 
 
 def plan_body(sector: Sector, step: Step = lambda words: None) -> WholeBody:

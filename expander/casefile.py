@@ -44,6 +44,7 @@ class ModelTable(Table):
     linear: bool = True
     results: Names = []
     unit: str | None = None
+    time_factor: Literal["+i omega t", "-i omega t"] = "+i omega t"
 
 
 class MirrorTable(Table):
@@ -93,11 +94,20 @@ class CaseTable(Table):
     nodal_diameters: int | None = Field(default=None, ge=0)
     phase: Literal["auto", "+", "-"] | None = None
     factor: float = 1.0
+    wave: Literal["as given", "forward", "backward", "standing"] = "as given"
+    undamped: bool = False
+    mean: str | None = None
+    mode_mass: Literal["sector", "sector, real pair"] | None = None
+
+
+Complex = Annotated[list[float], Field(min_length=2, max_length=2)]
 
 
 class SumTable(Table):
     name: str
-    terms: dict[str, float] = Field(min_length=1)
+    terms: dict[str, float | Complex] = Field(min_length=1)
+    mean: str | None = None
+    part: Literal["complex", "real"] = "complex"
 
 
 class SeamTable(Table):
@@ -145,6 +155,8 @@ class OutputTable(Table):
     merge: bool = True
     encoding: Literal["raw"] = "raw"
     derived: list[Literal["von mises", "principal stresses", "magnitude"]] = []
+    phases: int | None = Field(default=None, ge=1, le=3600)
+    peaks: list[Literal["von mises", "principal stresses", "magnitude"]] = []
 
 
 class CaseFile(Table):
@@ -183,7 +195,6 @@ _OTHER_WORDS = {
 _LATER = {
     r"model\.(step|once)": "Steps and parts modelled whole",
     r"case\[\d+\]\.step": "Steps",
-    r"output\.phases": "Phases of complex results",
 }
 _LATER_VALUES = {
     (r"output\.encoding", "compressed"): "Compressed files",
@@ -245,15 +256,6 @@ def validate_case(raw: Mapping[str, Any], folder: Path, source: Path | None = No
                     f"{where}: {path} = {word!r} is not yet served by this version.",
                     f"{what} come with a later version.",
                 )
-        if (
-            re.fullmatch(r"sum\[\d+\]\.terms\..+\[0\]", path)
-            and isinstance(value, int | float)
-            and not isinstance(value, bool)
-        ):
-            raise NotYetError(
-                f"{where}: {path[:-3]} is a complex factor, which this version does not serve yet.",
-                "Complex results come with a later version; give a real factor.",
-            )
     try:
         case = CaseFile.model_validate({**raw, "folder": folder, "source": source})
     except ValidationError as error:
@@ -323,6 +325,13 @@ def _check_names(case: CaseFile, where: str) -> None:
                     f"{where}: sum {entry_sum.name!r} adds case {term!r}, which is not declared.",
                     _suggest(term, cases) + f"Declared cases: {', '.join(cases)}.",
                 )
+    means = [(t.name, t.mean) for t in case.case] + [(t.name, t.mean) for t in case.sum]
+    for of, mean in means:
+        if mean is not None and mean not in cases:
+            raise InputError(
+                f"{where}: {of!r} has the mean {mean!r}, which is not a case.",
+                _suggest(mean, cases) + f"Declared cases: {', '.join(cases)}.",
+            )
     results = cases + sums
     named = [("output.results", r) for r in case.output.results or []]
     named += [("expect.result", e.result) for e in case.expect if e.result is not None]

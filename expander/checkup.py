@@ -9,6 +9,7 @@ from expander.casefile import CaseFile, read_case
 from expander.checking.continuity import continuity
 from expander.checking.findings import findings
 from expander.checking.report import CheckUp
+from expander.phases import decided
 from expander.referencing import referenced
 from expander.sector import Step, read_sector
 
@@ -36,8 +37,7 @@ def check(
     """
     if not isinstance(case, CaseFile):
         case = read_case(Path(case))
-    sector = read_sector(case, skip_undeclared, allow_nan, step, complex_results=True)
-    sector = referenced(sector)
+    sector = referenced(decided(read_sector(case, skip_undeclared, allow_nan, step)))
     seams = continuity(sector, step)
     chis = {c.case.name: c.chi for c in seams.cases}
     body = None if seams_only else audit(sector, chis, step)

@@ -72,7 +72,9 @@ def check_closing(
             if not len(found.jumps):
                 continue
             # A component bounds the length from below, and costs less than all lengths.
-            bound = float(np.fmax.reduce(f.values(case.model), axis=None, initial=0.0))
+            values = f.values(case.model)
+            real = values.real if np.iscomplexobj(values) else values
+            bound = float(np.fmax.reduce(real, axis=None, initial=0.0))
             if np.isfinite(bound) and float(found.jumps.max()) <= limit * bound:
                 continue
             largest = scale_of(f, case, cases)
@@ -209,7 +211,9 @@ def _open(
 
 
 def _other_word(group: Group, case: LoadCase, copy: int) -> str:
-    odd = case.chi[copy] < 0
+    if case.complex_factors:
+        return "seamfold check tells the number of nodal diameters that fits."
+    odd = case.chi[copy].real < 0
     if group.axis is not None and not group.placements[copy].mirrored:
         h = 0 if odd else group.axis.sectors // 2
         return f"the load of this case looks like nodal_diameters = {h}."

@@ -17,8 +17,8 @@ import numpy as np
 from expander.body import WholeBody, prepare
 from expander.casefile import CaseFile, CaseTable, read_case
 from expander.errors import InputError, NotYetError
-from expander.images import arrays_of
-from expander.loadcases import Result
+from expander.images import arrays_of, is_complex
+from expander.loadcases import LoadCase, Result, direction_words
 from expander.sector import Step
 from expander.summary import CAUTIONS, summary
 from expander.writers.newfiles import NewFiles, check_place
@@ -31,10 +31,23 @@ Advance = Callable[[int], None]
 
 @dataclass(frozen=True)
 class Target:
-    """A result and the file that it goes to."""
+    """A result and the file that it goes to.
+
+    Attributes
+    ----------
+    moment : of the cycle, in degrees of omega t; None for the amplitude or a result without time.
+    """
 
     result: Result
     file: Path
+    moment: float | None = None
+
+    @property
+    def name(self) -> str:
+        """The result's name, with the moment."""
+        if self.moment is None:
+            return self.result.name
+        return f"{self.result.name}, omega t = {self.moment:.6g} degrees"
 
 
 def program_version() -> str:
@@ -74,10 +87,17 @@ def digests(files: list[Path], stop: Event | None = None) -> dict[str, str]:
     return found
 
 
-def targets(case: CaseFile, results: tuple[Result, ...]) -> tuple[list[Target], Path | None]:
+def targets(
+    case: CaseFile, results: tuple[Result, ...], cases: tuple[LoadCase, ...] = ()
+) -> tuple[list[Target], Path | None]:
     """The file of each result, and the index if there is one.
 
-    One result goes to exactly `output.file`; several to one file each beside an index.
+    One result goes to exactly `output.file`; several, or several phases of a complex one, to one
+    file each beside an index.
+
+    Parameters
+    ----------
+    cases : those of the results, to tell which are complex; without them none is.
     """
     name = case.output.file or _default_name(case)
     path = case.folder / name
@@ -93,15 +113,17 @@ def targets(case: CaseFile, results: tuple[Result, ...]) -> tuple[list[Target], 
             "written.",
             "Expected .vtu, or .pvd for several results.",
         )
-    if len(results) == 1 and suffix == ".vtu":
+    moments = {r.name: _moments(case, r, cases) for r in results}
+    if len(results) == 1 and suffix == ".vtu" and moments[results[0].name] == [None]:
         chosen = [Target(results[0], path)]
         index = None
     else:
         index = path.with_suffix(".pvd")
         slugs = _file_words([r.name for r in results])
         chosen = [
-            Target(r, path.with_name(f"{path.stem}_{s}.vtu"))
+            Target(r, path.with_name(f"{path.stem}_{s}{_moment_word(case, m)}.vtu"), m)
             for r, s in zip(results, slugs, strict=True)
+            for m in moments[r.name]
         ]
     for target in chosen:
         check_place(target.file)
@@ -113,6 +135,24 @@ def targets(case: CaseFile, results: tuple[Result, ...]) -> tuple[list[Target], 
                 "Choose another output.file.",
             )
     return chosen, index
+
+
+def _moments(case: CaseFile, result: Result, cases: tuple[LoadCase, ...]) -> list[float | None]:
+    """The moments of the cycle at which a complex result is wanted."""
+    count = case.output.phases
+    complex_fields = any(t.real is not None or t.amplitude is not None
+                         for t in case.fields.values())  # fmt: skip
+    is_complex = complex_fields or (bool(cases) and result.complex_factors(cases))
+    if count is None or not is_complex or result.real:
+        return [None]
+    return [360.0 * k / count for k in range(count)]
+
+
+def _moment_word(case: CaseFile, moment: float | None) -> str:
+    if moment is None or case.output.phases is None:
+        return ""
+    number = round(moment * case.output.phases / 360.0)
+    return f"_phase_{number:0{len(str(case.output.phases - 1))}d}"
 
 
 def _file_words(names: list[str]) -> list[str]:
@@ -139,18 +179,25 @@ def _default_name(case: CaseFile) -> str:
     return f"{source.stem}_full.vtu"
 
 
-def field_data(body: WholeBody, result: Result, hashes: dict[str, str]) -> dict[str, Any]:
+def field_data(
+    body: WholeBody, result: Result, hashes: dict[str, str], moment: float | None = None
+) -> dict[str, Any]:
     """What is recorded in the file: how the body was made and what was assumed."""
     placements = np.stack([_matrix(body, g) for g in body.copies])
     terms = [(body.cases[k], a) for k, a in result.terms]
     chi = np.stack([a * c.chi[list(body.copies)] for c, a in terms], axis=1)
     return {
         "result": [result.name],
-        "terms": [f"{a:.17g} * {c.name}: {c.behaviour.words()}" for c, a in terms],
+        "terms": [f"{_exact(a)} * {c.name}: {c.behaviour.words()}" for c, a in terms],
+        **_wave_data(body, result, moment),
         "copies": np.array(body.copies, dtype=np.int32),
         "copy_words": [body.group.words(g) for g in body.copies],
         "placements": placements,
-        "factors": chi,
+        **(
+            {"factors": chi}
+            if not np.iscomplexobj(chi)
+            else {"factors_real": chi.real.copy(), "factors_imag": chi.imag.copy()}
+        ),
         "fields": [
             f"{f.name}: {f.kind} on {f.on} ({f.decided}), follows {f.follows}, seam {f.seam}, "
             f"frame {f.frame.name}" + (f", {f.unit}" if f.unit else "")
@@ -164,6 +211,27 @@ def field_data(body: WholeBody, result: Result, hashes: dict[str, str]) -> dict[
             f"{_relative(name, body.case.folder)} {digest}" for name, digest in hashes.items()
         ],
     }
+
+
+def _exact(a: complex) -> str:
+    return f"({a.real:.17g}{a.imag:+.17g}i)" if np.iscomplexobj(a) else f"{a:.17g}"
+
+
+def _wave_data(body: WholeBody, result: Result, moment: float | None) -> dict[str, Any]:
+    """What a complex result means in time: conventions, direction, moment and mean."""
+    if not any(is_complex(body, result, f) for f in body.fields):
+        return {}
+    if result.real:
+        return {"time": ["constant: the real part of the sum of complex amplitudes"]}
+    words = [f"field = Re(amplitude * exp({body.case.model.time_factor}))"]
+    running = direction_words(result, body.cases)
+    words += [running] if running else []
+    if result.mean is not None and moment is not None:
+        words.append(f"with the mean {body.cases[result.mean].name} added")
+    found: dict[str, Any] = {"time": words}
+    if moment is not None:
+        found["phase_degrees"] = np.array([moment])
+    return found
 
 
 def _relative(name: str, folder: Path) -> str:
@@ -190,7 +258,7 @@ class Expansion:
 
     def size(self) -> int:
         """Bytes of all arrays of all results."""
-        return sum(a.nbytes for t in self.targets for a in arrays_of(self.body, t.result))
+        return sum(a.nbytes for t in self.targets for a in arrays_of(self.body, t.result, t.moment))
 
     def write(self, advance: Advance = lambda done: None) -> None:
         """Write all results; each file appears only when all are whole."""
@@ -203,16 +271,16 @@ class Expansion:
                 write_vtu(
                     files,
                     target.file,
-                    arrays_of(self.body, target.result),
-                    field_data(self.body, target.result, hashes),
+                    arrays_of(self.body, target.result, target.moment),
+                    field_data(self.body, target.result, hashes, target.moment),
                     advance,
                 )
             if self.index is not None:
-                write_pvd(files, self.index, [(t.result.name, t.file) for t in self.targets])
+                write_pvd(files, self.index, [(t.name, t.file) for t in self.targets])
 
     def summary(self) -> dict[str, Any]:
         """What was done, as plain data for the table and for JSON."""
-        return summary(self.body, [(t.result, t.file) for t in self.targets], self.index,
+        return summary(self.body, [(t.result, t.file, t.moment) for t in self.targets], self.index,
                        program_version())  # fmt: skip
 
 
@@ -229,7 +297,7 @@ def plan(
         hashes = pool.submit(digests, input_files(case), stop)
         try:
             body = prepare(case, skip_undeclared, allow_nan, step)
-            chosen, index = targets(case, body.results)
+            chosen, index = targets(case, body.results, body.cases)
         except BaseException:
             stop.set()
             raise
@@ -241,6 +309,7 @@ def expand(
     result: str | None = None,
     skip_undeclared: bool = False,
     allow_nan: bool = False,
+    moment: float | None = None,
 ) -> pyvista.UnstructuredGrid:
     """The whole body in memory, for scripts.
 
@@ -248,6 +317,8 @@ def expand(
     ----------
     case : a case file, or a case that was read.
     result : name of the case or sum, if there are several.
+    moment : of the cycle, in degrees of omega t, at which complex fields are taken; their real and
+        imaginary parts (``X_real``, ``X_imag``) if None.
 
     Returns
     -------
@@ -274,4 +345,4 @@ def expand(
         raise InputError(f"There is no result {result!r}.", f"Results: {', '.join(names)}.")
     chosen = next(r for r in body.results if result in (None, r.name))
     hashes = digests(input_files(case))
-    return build_grid(arrays_of(body, chosen), field_data(body, chosen, hashes))
+    return build_grid(arrays_of(body, chosen, moment), field_data(body, chosen, hashes, moment))

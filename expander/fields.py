@@ -80,6 +80,10 @@ class Field:
         """Whether it is a property of the body, the same in every case."""
         return self.follows == "body"
 
+    def stored_type(self, model: Model) -> np.dtype[np.generic]:
+        """Number type of the arrays, also where they make up a complex field."""
+        return self._part(model, self.arrays).dtype
+
     def values(self, model: Model) -> NDArray[np.generic]:
         """The field on the sector, (n, k), in the number type of the file; complex if it is."""
         first = self._part(model, self.arrays)

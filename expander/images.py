@@ -33,7 +33,7 @@ from expander.loadcases import Result
 from expander.numbering import Numbering
 from expander.placements import Floats
 from expander.quantities import Quantity
-from expander.resolve import acting, from_global, product, to_global
+from expander.resolve import Numbers, acting, from_global, product, to_global
 
 Block = NDArray[np.generic]
 
@@ -79,8 +79,14 @@ class BodyArray:
                 yield copy, begin + row, slice(row, min(row + step, end - begin))
 
 
-def arrays_of(body: WholeBody, result: Result) -> Iterator[BodyArray]:
-    """All arrays of one result of the whole body, mesh first."""
+def arrays_of(body: WholeBody, result: Result, moment: float | None = None) -> Iterator[BodyArray]:
+    """All arrays of one result of the whole body, mesh first.
+
+    Parameters
+    ----------
+    moment : of the cycle, in degrees of omega t, at which complex fields are taken; their real and
+        imaginary parts if None.
+    """
     mesh = BodyMesh(body)
     points, cells = body.point_numbering, body.cell_numbering
     index = mesh.index
@@ -102,8 +108,8 @@ def arrays_of(body: WholeBody, result: Result) -> Iterator[BodyArray]:
     yield BodyArray("offsets", "offsets", index, (), cells.first, cells.total, mesh.offsets)
     yield BodyArray("types", "types", np.dtype(np.uint8), (), cells.first, cells.total,
                     mesh.types)  # fmt: skip
-    for f in fields_in(body, result):
-        yield from _field_arrays(body, result, f)
+    for f in fields_in(body, result, moment):
+        yield from _field_arrays(body, result, f, moment)
     yield _numbers_array("sector_point", "points", points)
     yield _numbers_array("sector_cell", "cells", cells)
     yield _copy_array(cells)
@@ -118,15 +124,25 @@ def _copy_array(cells: Numbering) -> BodyArray:
     return BodyArray("copy", "cells", kind, (), cells.first, cells.total, block)
 
 
-def fields_in(body: WholeBody, result: Result) -> list[Field]:
-    """The fields that this result holds: a sum, or a case times a factor, holds no invariants."""
-    plain = len(result.terms) == 1 and result.terms[0][1] == 1.0
-    return [f for f in body.fields if plain or f.constant or f.summable]
+def fields_in(body: WholeBody, result: Result, moment: float | None = None) -> list[Field]:
+    """The fields that this result holds: a sum, or a case times a factor, holds no invariants, and
+    a moment of the cycle holds nothing that is not known as an amplitude."""
+    plain = len(result.terms) == 1 and result.terms[0][1] == 1.0 and result.mean is None
+    return [
+        f for f in body.fields
+        if f.constant
+        or ((plain or f.summable) and (moment is None or is_complex(body, result, f)))
+    ]  # fmt: skip
 
 
-def left_out_of(body: WholeBody, result: Result) -> list[str]:
-    """Names of fields that do not add up and are left out of a sum."""
-    there = fields_in(body, result)
+def is_complex(body: WholeBody, result: Result, f: Field) -> bool:
+    """Whether a field is complex in a result."""
+    return not f.constant and (f.complex_values or result.complex_factors(body.cases))
+
+
+def left_out_of(body: WholeBody, result: Result, moment: float | None = None) -> list[str]:
+    """Names of fields that do not add up and are left out of a sum, or of a moment."""
+    there = fields_in(body, result, moment)
     return [f.name for f in body.fields if f not in there]
 
 
@@ -143,38 +159,48 @@ def _numbers_array(name: str, section: str, numbering: Numbering) -> BodyArray:
                      lambda g, rows: _kept(everything, numbering, g, rows))  # fmt: skip
 
 
+_MOST_PATTERNS = 4  # kept at once: waves of several numbers of diameters differ on every copy
+
+
 class _Signed:
     """A field's values summed over the terms of a result, for each pattern of chi."""
 
     def __init__(self, body: WholeBody, result: Result, f: Field) -> None:
         self.body, self.result, self.field = body, result, f
-        self._known: dict[tuple[float, ...], Block] = {}
+        self._known: dict[tuple[complex, ...], Block] = {}
         self._lock = Lock()
-        kinds = [f.values(body.cases[k].model).dtype for k, _ in result.terms]
+        kinds = [f.stored_type(body.cases[k].model) for k, _ in result.terms]
         self.plain = f.constant or (len(kinds) == 1 and result.terms[0][1] == 1.0)
+        self.complex = is_complex(body, result, f)
         if self.plain or all(np.issubdtype(k, np.integer) for k in kinds):
             self.dtype = np.result_type(*kinds[: 1 if self.plain else None])
         else:  # a float of the widest kind
             floats = [k if np.issubdtype(k, np.floating) else np.float64 for k in kinds]
             self.dtype = np.result_type(*floats)
+        if self.complex and not np.issubdtype(self.dtype, np.floating):
+            self.dtype = np.dtype(np.float64)
+        self.held = np.result_type(self.dtype, 1j) if self.complex else self.dtype
 
-    def pattern(self, copy: int) -> tuple[float, ...]:
-        """Signs of chi relative to the first term, whose own sign goes into the matrix."""
-        signs = [float(self.body.cases[k].chi[copy]) for k, _ in self.result.terms]
-        return tuple(s * signs[0] for s in signs)
+    def pattern(self, copy: int) -> tuple[complex, ...]:
+        """chi relative to that of the first term, whose own goes into the matrix."""
+        chi = [self.body.cases[k].chi[copy].item() for k, _ in self.result.terms]
+        return tuple(c * chi[0].conjugate() for c in chi)
 
-    def lead(self, copy: int) -> float:
-        return float(self.body.cases[self.result.terms[0][0]].chi[copy])
+    def lead(self, copy: int) -> complex:
+        found: complex = self.body.cases[self.result.terms[0][0]].chi[copy].item()
+        return found
 
     def values(self, copy: int) -> Block:
-        """(n, k) on the sector, seams resolved, in the field's number type."""
+        """(n, k) on the sector, seams resolved, in the field's number type, or complex."""
         key = self.pattern(copy)
         with self._lock:
             if key not in self._known:
+                while len(self._known) >= _MOST_PATTERNS:
+                    del self._known[next(iter(self._known))]
                 self._known[key] = self._make(key)
             return self._known[key]
 
-    def _make(self, signs: tuple[float, ...]) -> Block:
+    def _make(self, signs: tuple[complex, ...]) -> Block:
         f, terms = self.field, self.result.terms
         items = (self.body.nodes if f.on == "points" else self.body.cells).items
         first = f.values(self.body.cases[terms[0][0]].model)
@@ -182,18 +208,20 @@ class _Signed:
             terms = ((terms[0][0], 1.0),)
             total = first
         else:
-            total = np.zeros(first.shape)
+            wide = np.complex128 if self.complex else np.float64
+            added: Numbers = np.zeros(first.shape, dtype=wide)
             for (k, a), sign in zip(terms, signs, strict=True):
-                total += (a * sign) * f.values(self.body.cases[k].model).astype(float, copy=False)
-        patch = np.zeros((len(items), first.shape[1]))
+                added += (a * sign) * f.values(self.body.cases[k].model).astype(wide, copy=False)
+            total = added
+        patch = np.zeros((len(items), first.shape[1]), dtype=np.result_type(total, float))
         for (k, a), sign in zip(terms, signs, strict=False):
             resolved = self.body.resolved.get((f.name, k))
             if resolved is None or resolved.patch is None:
-                return _as(total, self.dtype, f)
+                return _as(total, self.held, f)
             patch += (a * sign) * resolved.patch
         total = np.array(total)
         total[items] = _as(patch, total.dtype, f)
-        return _as(total, self.dtype, f)
+        return _as(total, self.held, f)
 
     def release(self) -> None:
         self._known.clear()
@@ -214,18 +242,47 @@ def _as(values: Block, dtype: np.dtype[np.generic], f: Field) -> Block:
     return np.asarray(values.astype(dtype))
 
 
-def _field_arrays(body: WholeBody, result: Result, f: Field) -> Iterator[BodyArray]:
+def _field_arrays(
+    body: WholeBody, result: Result, f: Field, moment: float | None
+) -> Iterator[BodyArray]:
     numbering = body.point_numbering if f.on == "points" else body.cell_numbering
     signed = _Signed(body, result, f)
     dtype = signed.dtype
     image = _local_image if isinstance(f.frame, Cylindrical) else _global_image
 
-    def block(copy: int, rows: slice) -> Block:
+    def real_block(copy: int, rows: slice) -> Block:
         values = _kept(signed.values(copy), numbering, copy, rows)
-        return _as(image(body, f, numbering, values, copy, rows, signed.lead(copy)), dtype, f)
+        lead = signed.lead(copy).real
+        return _as(image(body, f, numbering, values, copy, rows, lead), dtype, f)
 
-    yield BodyArray(f.name, f.on, dtype, component_names(f), numbering.first, numbering.total,
-                    block, signed.release)  # fmt: skip
+    mean = None
+    if moment is not None and result.mean is not None:
+        mean = _Signed(body, Result(result.name, ((result.mean, 1.0),)), f)
+
+    def part_block(weight: complex) -> Callable[[int, slice], Block]:
+        """``Re(weight chi rho f)``: a part of the amplitude, or the field at a moment."""
+
+        def block(copy: int, rows: slice) -> Block:
+            values = _kept(signed.values(copy), numbering, copy, rows)
+            s = weight * signed.lead(copy)
+            real = values.real * s.real - values.imag * s.imag
+            out = image(body, f, numbering, real, copy, rows, 1.0)
+            if mean is not None:
+                still = _kept(mean.values(copy), numbering, copy, rows)
+                out = np.add(out, image(body, f, numbering, still, copy, rows,
+                                        mean.lead(copy).real))  # fmt: skip
+            return _as(out, dtype, f)
+
+        return block
+
+    parts: list[tuple[str, Callable[[int, slice], Block]]] = [("", real_block)]
+    if signed.complex:
+        parts = [(suffix, part_block(w)) for suffix, w in result.parts(moment)]
+    for suffix, block in parts:
+        yield BodyArray(f.name + suffix, f.on, dtype, component_names(f), numbering.first,
+                        numbering.total, block, signed.release)  # fmt: skip
+    if signed.complex:
+        return
     there = [g.name for g in fields_in(body, result)]
     for extra in derived_fields(f, body.case.output.derived):
         if extra.name in there:
@@ -307,11 +364,11 @@ def _derived_array(
     body: WholeBody, signed: _Signed, f: Field, extra: Derived, numbering: Numbering
 ) -> BodyArray:
     """Von Mises, principal values and magnitudes: the same on all copies with one chi pattern."""
-    known: dict[tuple[float, tuple[float, ...]], Block] = {}
+    known: dict[tuple[float, tuple[complex, ...]], Block] = {}
     lock = Lock()
 
     def block(copy: int, rows: slice) -> Block:
-        chi = signed.lead(copy) if f.follows == "load" else 1.0
+        chi = signed.lead(copy).real if f.follows == "load" else 1.0
         key = (chi, signed.pattern(copy))
         with lock:
             if key not in known:

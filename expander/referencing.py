@@ -40,12 +40,6 @@ def referenced(sector: Sector) -> Sector:
         )
     cases, notes = [], list(sector.notes)
     for case in sector.cases:
-        if case.complex_factors and case.behaviour.phase == "auto":
-            raise InputError(
-                f"re_reference, case {case.name!r}: which motion is free depends on the direction "
-                "of the wave.",
-                'Give phase = "+" or phase = "-".',
-            )
         motions = free_motions(sector.group, case.chi, plane_normal(sector),
                                sector.mesh.bounds.mean(axis=0))  # fmt: skip
         try:

@@ -22,7 +22,6 @@ from expander.admission import (
     check_same_mesh,
     check_storage,
     read_models,
-    refuse_complex,
 )
 from expander.behaviours import factors, is_plain
 from expander.casefile import CaseFile, CaseTable, Direction, plane_names
@@ -36,7 +35,7 @@ from expander.fields import (
     frames_of,
 )
 from expander.groups import CutPlane, CyclicAxis, Group, make_group
-from expander.loadcases import LoadCase, Result, behaviour_of, results_of
+from expander.loadcases import LoadCase, Result, behaviour_of, mode_factor, results_of
 from expander.model import Mesh, Model
 from expander.placements import Floats, unit
 from expander.seams import Seams, find_seams
@@ -82,14 +81,12 @@ def read_sector(
     skip_undeclared: bool = False,
     allow_nan: bool = False,
     step: Step = lambda words: None,
-    complex_results: bool = False,
 ) -> Sector:
     """Read and check everything that a case describes.
 
     Parameters
     ----------
     step : called with a few words before each slow part, for a progress display.
-    complex_results : whether the caller can serve complex fields and factors.
 
     Raises
     ------
@@ -100,8 +97,6 @@ def read_sector(
     tables = case.case or [CaseTable(name="result")]
     behaviours = [behaviour_of(case, t) for t in tables]
     chis = [factors(group, b) for b in behaviours]
-    if not complex_results:
-        refuse_complex(case, behaviours, chis)
     step("reading")
     models = read_models(case, tables, allow_nan)
     mesh = models[0].mesh
@@ -111,7 +106,7 @@ def read_sector(
         check_same_mesh(models[0], model, name)
         notes += check_same_arrays(models[0], model, name, skip_undeclared)
     cases = tuple(
-        LoadCase(t.name, m, b, chi, t.factor)
+        LoadCase(t.name, m, b, chi, t.factor * mode_factor(t, chi))
         for t, m, b, chi in zip(tables, models, behaviours, chis, strict=True)
     )
     results = results_of(case, cases)

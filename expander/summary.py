@@ -11,7 +11,7 @@ from expander.body import WholeBody
 from expander.fields import Field
 from expander.frames import Cylindrical
 from expander.images import component_names, left_out_of
-from expander.loadcases import Result
+from expander.loadcases import Result, direction_words
 from expander.quantities import sign_words
 
 SCHEMA = 1
@@ -27,7 +27,10 @@ CAUTIONS = (
 
 
 def summary(
-    body: WholeBody, files: list[tuple[Result, Path]], index: Path | None, program: str
+    body: WholeBody,
+    files: list[tuple[Result, Path, float | None]],
+    index: Path | None,
+    program: str,
 ) -> dict[str, Any]:
     """Everything a reviewer needs to follow what was done.
 
@@ -85,16 +88,23 @@ def summary(
         "results": [
             {
                 "name": r.name,
-                "terms": {body.cases[k].name: a for k, a in r.terms},
+                "terms": {body.cases[k].name: _plain(a) for k, a in r.terms},
                 "file": str(file),
-                "left_out": left_out_of(body, r),
+                "left_out": left_out_of(body, r, moment),
+                "phase_degrees": moment,
+                "wave": direction_words(r, body.cases) or None,
             }
-            for r, file in files
+            for r, file, moment in files
         ],
         "index": str(index) if index else None,
         "notes": list(body.notes),
         "cautions": list(CAUTIONS),
     }  # fmt: skip
+
+
+def _plain(a: complex) -> float | list[float]:
+    """A factor as JSON can hold it: a complex one as [re, im]."""
+    return [a.real, a.imag] if np.iscomplexobj(a) else float(a.real)
 
 
 def _field(body: WholeBody, f: Field) -> dict[str, Any]:
@@ -134,14 +144,14 @@ def changed_signs(body: WholeBody, f: Field, chi: np.ndarray) -> dict[str, str]:
                 continue
             Q = local
         A = f.quantity.matrix(Q)
-        if chi[copy] < 0 and f.follows == "load":
+        if chi[copy].real < 0 and f.follows == "load":
             A = f.quantity.odd @ A
         words = sign_words(f.quantity, A)
         names = component_names(f)
         if names and words not in ("mixed", "none", "sign"):
             flipped = [n for n, a in zip(names, np.diag(A), strict=True) if a < 0]
             words = " ".join(flipped)
-        if f.kind == "principal values" and chi[copy] < 0:
+        if f.kind == "principal values" and chi[copy].real < 0:
             words = "order and sign"
         found[plane.name] = words
     return found

@@ -11,7 +11,7 @@ from numpy.typing import ArrayLike
 from expander.body import WholeBody
 from expander.fields import Field
 from expander.frames import Cylindrical
-from expander.images import arrays_of, fields_in, left_out_of
+from expander.images import arrays_of, fields_in, is_complex, left_out_of
 from expander.loadcases import Result
 from expander.placements import Floats
 from expander.resolve import to_global
@@ -84,7 +84,7 @@ def scene_of(
     InputError
         For an unknown field or component, with those that there are.
     """
-    fields = fields_in(body, result)
+    fields = fields_in(body, result, _moment(body, result))
     shown = choose(fields, field, component, left_out_of(body, result))
     moving = moving_field(fields)
     grid = _grid(body, result, shown, moving)
@@ -129,7 +129,7 @@ def _grid(
 
     wanted = {f.name for f in (shown.field if shown else None, moving) if f is not None}
     arrays = [
-        a for a in arrays_of(body, result)
+        a for a in arrays_of(body, result, _moment(body, result))
         if a.section not in ("points", "cells") or a.name == "copy" or a.name in wanted
     ]  # fmt: skip
     grid = build_grid(arrays, {})
@@ -146,6 +146,12 @@ def _grid(
         moved = _global_vectors(moving, stored[moving.name], grid, body.on_axis)
         grid.point_data[MOVED] = np.nan_to_num(moved, nan=0.0, posinf=0.0, neginf=0.0)
     return grid
+
+
+def _moment(body: WholeBody, result: Result) -> float | None:
+    """A complex result is drawn at the beginning of its cycle."""
+    waves = any(is_complex(body, result, f) for f in body.fields)
+    return 0.0 if waves and not result.real else None
 
 
 def _measured(shown: Shown, stored: Floats) -> Floats:
@@ -177,7 +183,8 @@ def _source(body: WholeBody) -> str:
 
 def _title(body: WholeBody, result: Result) -> str:
     """The result's name; a single result has none of its own and is called after its model."""
-    return result.name if body.case.case else body.cases[0].model.source.stem
+    name = result.name if body.case.case else body.cases[0].model.source.stem
+    return name if _moment(body, result) is None else f"{name}, beginning of the cycle"
 
 
 def _words(body: WholeBody, result: Result) -> str:

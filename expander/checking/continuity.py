@@ -7,13 +7,13 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from expander.behaviours import Behaviour, Factors, factors
+from expander.behaviours import Factors
 from expander.checking.declared import Found, declared_against_found, primary
 from expander.checking.jumps import Jump, jump_at
 from expander.checking.seamlist import Seam, seams_of
 from expander.checking.smoothness import Near, kink, recovered
 from expander.checking.verdicts import CLOSED, DOUBTFUL, OPEN, TOLD, Verdict, verdict_of
-from expander.closing import largest_value, scale_of
+from expander.closing import scale_of
 from expander.errors import CheckFailed
 from expander.fields import Field
 from expander.loadcases import LoadCase
@@ -64,9 +64,10 @@ def continuity(sector: Sector, step: Step = lambda words: None) -> Continuity:
     for case in sector.cases:
         step(f"comparing the sides, case {case.name}")
         values = {f.name: f.values(case.model) for f in sector.fields if _numeric(f)}
-        chi, phase = decided_phase(sector, seams, case, values)
+        chi = case.chi
         found = [declared_against_found(sector, n, case, chi, values) for n in nears]
         verdicts = [v for n in nears for v in _verdicts(sector, n, case, chi, values)]
+        phase = case.behaviour.phase if case.complex_factors else ""
         cases.append(CaseContinuity(case, chi, phase, tuple(verdicts),
                                     tuple(f for f in found if f is not None)))  # fmt: skip
     return Continuity(sector, tuple(seams), tuple(cases))
@@ -74,33 +75,6 @@ def continuity(sector: Sector, step: Step = lambda words: None) -> Continuity:
 
 def _numeric(f: Field) -> bool:
     return f.kind != "label"
-
-
-def decided_phase(
-    sector: Sector, seams: list[Seam], case: LoadCase, values: dict[str, Numbers]
-) -> tuple[Factors, str]:
-    """The factors of a case; where the direction of a wave is left to the data, the one whose
-    seam closes better."""
-    if not case.complex_factors:
-        return case.chi, ""
-    declared = case.behaviour.phase
-    if declared != "auto":
-        return case.chi, declared
-    fields = [f for f in sector.fields if primary(f)]
-    gaps = {}
-    for phase in ("+", "-"):
-        h = case.behaviour.nodal_diameters
-        chi = factors(sector.group, Behaviour(case.behaviour.load, h, phase))
-        squares = 0.0
-        for seam in seams:
-            for f in fields:
-                scale = largest_value(values[f.name])
-                if scale > 0.0:
-                    jump = jump_at(sector.mesh, sector.group, seam, f, case, values[f.name], chi)
-                    squares += float((jump.lengths**2).sum()) / scale**2
-        gaps[phase] = (squares, chi)
-    best = min(gaps, key=lambda p: gaps[p][0])
-    return gaps[best][1], best
 
 
 def _verdicts(

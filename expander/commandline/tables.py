@@ -102,7 +102,7 @@ def print_summary(found: dict[str, Any]) -> None:
             console.print("combined: the plane is oblique, so components mix (Q v, Q T Q^T)")
     several = len(found["cases"]) > 1
     for result in found["results"]:
-        terms = " + ".join(f"{a:g} {name}" for name, a in result["terms"].items())
+        terms = " + ".join(f"{_factor(a)} {name}" for name, a in result["terms"].items())
         mark = "wrote" if found["written"] else "would write"
         left = f"; left out: {', '.join(result['left_out'])}" if result["left_out"] else ""
         alone = list(result["terms"].items()) == [(result["name"], 1.0)]
@@ -116,6 +116,10 @@ def print_summary(found: dict[str, Any]) -> None:
     for note in found["notes"]:
         console.print(escape(f"note: {note}"))
     console.print("[dim]" + escape("caution: " + " ".join(found["cautions"])) + "[/dim]")
+
+
+def _factor(a: float | list[float]) -> str:
+    return f"({a[0]:g}{a[1]:+g}i)" if isinstance(a, list) else f"{a:g}"
 
 
 def _field_table(found: dict[str, Any]) -> Table:
