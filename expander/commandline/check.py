@@ -169,7 +169,7 @@ def _seam(continuity: Continuity, chosen: _Chosen) -> Seam:
     if chosen.seam is None:
         worst = _worst(continuity, None, chosen)
         return seams[0] if worst is None else seams[names.index(worst.seam)]
-    given = [n for n in names if chosen.seam in (n, n.replace("'", "").removeprefix("plane "))]
+    given = [s.name for s in seams if chosen.seam in (s.name, s.plane)]
     if not given:
         raise InputError(f"There is no seam {chosen.seam!r}.", f"Seams: {', '.join(names)}.")
     return seams[names.index(given[0])]
@@ -189,6 +189,10 @@ def _worst(continuity: Continuity, seam: str | None, chosen: _Chosen) -> Verdict
 
 
 def _field_and_case(continuity: Continuity, seam: Seam, chosen: _Chosen) -> tuple[str, str]:
+    from expander.checking.along import case_named
+
+    if chosen.case is not None:
+        case_named(continuity, chosen.case)
     worst = _worst(continuity, seam.name, chosen)
     field = chosen.field or (worst.field if worst is not None else None)
     case = chosen.case or (worst.case if worst is not None else continuity.cases[0].case.name)
