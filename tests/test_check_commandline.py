@@ -575,9 +575,22 @@ def test_files_are_the_same_every_time_and_replace_old_ones(seamfold: Seamfold) 
 def test_no_files_without_options(seamfold: Seamfold) -> None:
     wrong()
     before = listing()
-    for more in ([], ["--json"], ["--seam", "mid"], ["--show", "displacement"]):
+    for more in ([], ["--json"], ["--seams-only"]):
         assert seamfold("check", "wrong.vtu", *X, *more).status == 1
         assert listing() == before
+
+
+@pytest.mark.parametrize(
+    ("option", "value"),
+    [("--show", "displacement"), ("--in-case", "a"), ("--component", "x"), ("--seam", "mid"),
+     ("--along", "z")],
+)  # fmt: skip
+def test_options_of_a_plot_need_one(seamfold: Seamfold, option: str, value: str) -> None:
+    good()
+    found = seamfold("check", "good.vtu", *X, option, value)
+    assert found.status == 2
+    assert option in found.stderr
+    assert "--plot" in found.stderr
 
 
 def quarter() -> None:

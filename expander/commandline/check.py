@@ -85,6 +85,16 @@ def check(
     from expander.commandline.tables import Progress
     from expander.expansion import program_version
 
+    of_plot = {"--show": show, "--in-case": in_case, "--component": component}
+    of_both = {"--seam": seam, "--along": None if along == "auto" else along}
+    idle = [o for o, v in of_plot.items() if v is not None and plot is None]
+    idle += [o for o, v in of_both.items() if v is not None and plot is None and csv_file is None]
+    if idle:
+        where = "--plot or --csv" if idle[0] in of_both else "--plot"
+        raise InputError(
+            f"{idle[0]} belongs to {where}, which was not given.",
+            "Add --plot seam.png, or leave it out.",
+        )
     case = case_from(sections=section, **description)
     with Progress() as progress:
         found = run(case, skip_undeclared, allow_nan, seams_only, progress.step)
