@@ -141,7 +141,8 @@ def _six(sector: Sector, field: Field, case: LoadCase) -> Numbers:
     """(n, 6) a stress as xx yy zz xy yz zx in global directions."""
     mesh = sector.mesh
     places = mesh.points if field.on == "points" else cell_centres(mesh)
-    values = np.nan_to_num(to_global(field, field.values(case.model), places, on_axis(mesh)))
+    values = to_global(field, field.values(case.model), places, on_axis(mesh))
+    values = np.nan_to_num(values, posinf=0.0, neginf=0.0)
     q = field.quantity if field.frame.letters == "x y z" else field.quantity.complete
     six = quantity("symmetric tensor", 6)
     return np.asarray(values @ (six.gather @ q.spread).T)

@@ -44,7 +44,8 @@ def referenced(sector: Sector) -> Sector:
                                sector.mesh.bounds.mean(axis=0))  # fmt: skip
         try:
             found = remove(
-                motions, sector.mesh.points, global_vectors(sector, fields[0], case), table.method,
+                motions, sector.mesh.points,
+                global_vectors(sector, fields[0], case, known=False), table.method,
                 1.0 / multiplicity(sector), table.nodes,
             )  # fmt: skip
         except InputError as error:
@@ -84,9 +85,9 @@ def _with_values(sector: Sector, model: Model, f: Field, vectors: Numbers) -> Mo
             old = np.asarray(data[name])
             kind = old.dtype if np.issubdtype(old.dtype, np.floating) else np.dtype(float)
             new = old.reshape(len(old), -1).astype(kind)
-            if len(arrays) > 1:
-                new[:, 0] = values[:, k]
-            else:
-                new[:, slice(None) if f.columns is None else list(f.columns)] = values
+            columns = list(f.columns if f.columns is not None else range(new.shape[1]))
+            columns = [0] if len(arrays) > 1 else columns
+            part = values[:, [k]] if len(arrays) > 1 else values
+            new[:, columns] = np.where(np.isfinite(new[:, columns]), part, new[:, columns])
             data[name] = new.reshape(old.shape)
     return replace(model, point_data=data)

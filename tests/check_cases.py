@@ -87,11 +87,11 @@ def shells() -> Given:
     )
 
 
-def without_a_value(value: float) -> Given:
+def without_a_value(on_seam: float, off_seam: float) -> Given:
     """A displacement that is not finite at a node of the seam and at one off it."""
     given = half()
-    given.points["displacement"][0] = value
-    given.points["displacement"][-1, 1] = value
+    given.points["displacement"][0] = on_seam
+    given.points["displacement"][-1, 1] = off_seam
     given.allow_nan = True
     return given
 
@@ -106,11 +106,11 @@ def forces_not_finite() -> Given:
     return given
 
 
-def stress_not_finite() -> Given:
+def stress_not_finite(value: float = np.nan) -> Given:
     """A stress that is missing at a node of the seam and at one off it."""
     given = half()
     stress = np.ones((len(given.sector.points), 6)) * [1, 2, 3, 0, 1, 0]
-    stress[[0, 30]] = np.nan
+    stress[[0, 30]] = value
     given.points["stress"] = stress
     given.allow_nan = True
     return given
@@ -187,7 +187,10 @@ def apart() -> Given:
 AWKWARD: dict[str, Callable[[], Given]] = {
     "as declared": half, "open seam": open_seam, "clamped": clamped, "no forces": no_forces,
     "shells": shells, "sections": sections, "expected": expected, "other mesh": other_mesh,
-    "wave": wave, "apart": apart, "no displacement at a node": lambda: without_a_value(np.nan),
-    "infinite displacement": lambda: without_a_value(np.inf),
+    "wave": wave, "apart": apart,
+    "no displacement at a node": lambda: without_a_value(np.nan, np.nan),
+    "infinite displacement": lambda: without_a_value(np.inf, -np.inf),
+    "neither at two nodes": lambda: without_a_value(np.nan, np.inf),
     "forces that are not finite": forces_not_finite, "no stress at a node": stress_not_finite,
+    "infinite stress": lambda: stress_not_finite(np.inf),
 }  # fmt: skip

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import copy
 import json
+import warnings
 from collections.abc import Iterator
 from functools import cache
 from importlib import resources
@@ -189,6 +190,16 @@ def test_only_the_seams(tmp_path: Path) -> None:
     assert problems(facts) == []
 
 
+@pytest.mark.parametrize("name", AWKWARD)
+def test_nothing_overflows_on_the_way(name: str, tmp_path: Path) -> None:
+    """A warning of numpy on the error stream is no message to a user."""
+    given = AWKWARD[name]()
+    case = given.case(tmp_path)
+    with warnings.catch_warnings():
+        warnings.simplefilter("error")
+        check(case, allow_nan=given.allow_nan)
+
+
 # --- what JSON can hold ---------------------------------------------------------------------------
 
 
@@ -208,7 +219,8 @@ def test_only_plain_types(name: str, folder: Path) -> None:
     ("value", "expected"),
     [
         (np.float32(0.5), 0.5), (np.float64("inf"), None), (float("nan"), None),
-        (complex(1, float("nan")), [1.0, None]), (np.array([2 - 1j], dtype=np.complex64), [[2.0, -1.0]]),
+        (complex(1, float("nan")), [1.0, None]),
+        (np.array([2 - 1j], dtype=np.complex64), [[2.0, -1.0]]),
         (np.array([[1 + 2j]]), [[[1.0, 2.0]]]), (np.int64(7), 7), ((1, "a", None), [1, "a", None]),
         (np.array([], dtype=float), []),
     ],
@@ -432,7 +444,9 @@ def test_a_wave_is_told_in_pairs(folder: Path) -> None:
     assert all(len(m["amount"]) == 2 and m["reactions_work"] is None for m in motions)
 
 
-@pytest.mark.parametrize("name", ["no displacement at a node", "infinite displacement"])
+@pytest.mark.parametrize(
+    "name", ["no displacement at a node", "infinite displacement", "neither at two nodes"]
+)
 def test_values_that_are_not_finite_are_left_out(name: str, folder: Path) -> None:
     """The other nodes are compared, and they close."""
     told = reported(name, folder)

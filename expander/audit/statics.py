@@ -88,12 +88,17 @@ def multiplicity(sector: Sector) -> NDArray[np.int64]:
     return count
 
 
-def global_vectors(sector: Sector, f: Field, case: LoadCase) -> Numbers:
-    """(n, 3) a vector in global directions; components that are not stored are zero."""
+def global_vectors(sector: Sector, f: Field, case: LoadCase, known: bool = True) -> Numbers:
+    """(n, 3) a vector in global directions; components that are not stored are zero.
+
+    What is not finite is taken as zero, or left as it is if not `known`.
+    """
     mesh = sector.mesh
     values = to_global(f, f.values(case.model), mesh.points, on_axis(mesh))
     q = f.quantity if f.frame.letters == "x y z" else f.quantity.complete
-    return np.asarray(np.nan_to_num(values) @ q.spread.T)
+    if known:
+        values = np.nan_to_num(values, posinf=0.0, neginf=0.0)
+    return product(values, q.spread)
 
 
 def _added(sector: Sector, fields: list[Field], case: LoadCase) -> Numbers | None:
@@ -133,7 +138,7 @@ def case_audit(
     coefficients: Numbers = np.zeros(motions.count)
     if u:
         part, coefficients = share(
-            motions, mesh.points, global_vectors(sector, u[0], case), 1.0 / shares
+            motions, mesh.points, global_vectors(sector, u[0], case, known=False), 1.0 / shares
         )
     held = None
     if reaction is not None:

@@ -3,12 +3,12 @@
 from __future__ import annotations
 
 from collections.abc import Iterator
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
 from expander.behaviours import Factors
-from expander.checking.declared import Found, declared_against_found, primary
+from expander.checking.declared import CLAMPED, Found, declared_against_found, primary
 from expander.checking.jumps import Jump, jump_at
 from expander.checking.seamlist import Seam, seams_of
 from expander.checking.smoothness import Near, kink, recovered
@@ -68,6 +68,12 @@ def continuity(sector: Sector, step: Step = lambda words: None) -> Continuity:
         found = [declared_against_found(sector, n, case, chi, values) for n in nears]
         verdicts = [v for n in nears for v in _verdicts(sector, n, case, chi, values)]
         phase = case.behaviour.phase if case.complex_factors else ""
+        held = {f.seam for f in found if f is not None and f.found == CLAMPED and f.result != OPEN}
+        verdicts = [
+            replace(v, result=TOLD, words="the plane is held, as declared")
+            if v.seam in held and v.measure in ("kink", "traction") else v
+            for v in verdicts
+        ]  # fmt: skip
         cases.append(CaseContinuity(case, chi, phase, tuple(verdicts),
                                     tuple(f for f in found if f is not None)))  # fmt: skip
     return Continuity(sector, tuple(seams), tuple(cases))

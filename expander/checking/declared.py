@@ -9,6 +9,7 @@ the number of sectors, and the direction in which the wave runs.
 
 from __future__ import annotations
 
+import json
 from dataclasses import dataclass, field, replace
 
 import numpy as np
@@ -17,8 +18,8 @@ from expander.behaviours import Factors
 from expander.checking.jumps import Jump, jump_at
 from expander.checking.seamlist import Seam
 from expander.checking.smoothness import Near, is_stress, kink, recovered
-from expander.checking.verdicts import CLOSED, DOUBTFUL, OPEN, TOLD
-from expander.closing import largest_value
+from expander.checking.verdicts import CLOSED, DOUBTFUL, OPEN, TOLD, worst_of
+from expander.closing import scale_of
 from expander.fields import Field
 from expander.loadcases import LoadCase
 from expander.placements import Floats
@@ -175,7 +176,7 @@ def _sides(sector: Sector, seam: Seam, case: LoadCase, values: dict[str, Numbers
         if not primary(f):
             continue
         jump = jump_at(sector.mesh, sector.group, seam, f, case, values[f.name], plain)
-        found.append(_Sides(f, jump, largest_value(values[f.name])))
+        found.append(_Sides(f, jump, scale_of(f, case, sector.cases)))
     return found
 
 
@@ -193,7 +194,8 @@ def _words(sector: Sector, seam: Seam, case: LoadCase, chi: Factors) -> list[_Wo
             if seam.plane is None:
                 lines[s] = f"the load words and nodal_diameters must make this plane {word}"
             elif several:
-                lines[s] = f'[[case]] {case.name!r}: load = {{ "{seam.plane}" = "{word}" }}'
+                key = json.dumps(seam.plane, ensure_ascii=False)
+                lines[s] = f'[[case]] {case.name!r}: load = {{ {key} = "{word}" }}'
             else:
                 lines[s] = f'[[mirror]] {seam.plane!r}: load = "{word}"'
         return [_Word(words[s], complex(s), lines[s]) for s in (sign, -sign)]
@@ -273,22 +275,25 @@ def _by_slope(
 ) -> Found:
     """Both words close since the values vanish on the seam: the slope across it decides."""
     scatter = sector.case.seam.scatter
-    times = {}
+    slopes = {}
     for word in (own, best):
         chi = np.full(len(sector.group), word.chi if word.chi.imag else word.chi.real)
         found = [kink(near, s.field, case, values[s.field.name], chi, scatter) for s in sides]
-        judged = [v.times for v in found if v is not None and v.times is not None]
-        times[word.name] = max(judged) if judged else None
-    mine, other = times[own.name], times[best.name]
-    told = replace(told, kink=mine, alternative_kink=other)
-    if mine is None or other is None:
+        slopes[word.name] = [v for v in found if v is not None]
+    if not slopes[own.name]:
         return replace(told, result=TOLD, found=UNTOLD, words="the values vanish on the seam, and "
                         "no faces meet there whose slope could tell")  # fmt: skip
-    if mine <= scatter:
+    mine, other = (worst_of([v.result for v in slopes[w.name]]) for w in (own, best))
+    times = [max(v.times or 0.0 for v in slopes[w.name]) for w in (own, best)]
+    told = replace(told, kink=times[0], alternative_kink=times[1])
+    if mine == CLOSED:
         return replace(told, words="the values vanish there; the slope agrees")
-    if other <= scatter:
+    if DOUBTFUL in (mine, other):
+        return replace(told, result=DOUBTFUL, found=UNTOLD, words="the values vanish there, and "
+                       "the mesh is too coarse for the slope to tell")  # fmt: skip
+    if other == CLOSED:
         return replace(told, result=OPEN, found=best.name, line=best.line,
-                        words=f"the values vanish there; the slope says {best.name}")  # fmt: skip
+                       words=f"the values vanish there; the slope says {best.name}")  # fmt: skip
     held = next((m.held for m, p in zip(sector.case.mirror, sector.group.planes, strict=True)
                  if p.name == near.seam.plane), False)  # fmt: skip
     words = "the values vanish there under both words, the slope does not"

@@ -62,8 +62,8 @@ class Surroundings:
         """Rows of these cells, which must be near the seam."""
         return np.searchsorted(self.cells, cells)
 
-    def yardstick(self, per_cell: Numbers, nodes: Ints) -> Floats:
-        """Largest jump of a cell quantity near each of `nodes`, (k,).
+    def yardstick(self, per_cell: Numbers, nodes: Ints) -> tuple[Floats, NDArray[np.bool_]]:
+        """Largest jump of a cell quantity near each of `nodes`, (k,), and whether it is sure.
 
         Parameters
         ----------
@@ -73,7 +73,8 @@ class Surroundings:
 
         Returns
         -------
-        NaN where there is no face to compare with.
+        NaN where there is no face to compare with. Where the mesh is one cell thick, so that no
+        other face is parallel to the seam, faces across it are taken: they say less.
         """
         jumps = []
         for face in self.faces:
@@ -82,7 +83,7 @@ class Surroundings:
         alone = np.isnan(found)
         if alone.any():  # no layer of cells beside this one: compare along the seam
             found[alone] = self._near(jumps, nodes[alone], parallel=False)
-        return found
+        return found, ~alone
 
     def nodal_yardstick(self, nodal: Numbers, per_cell: Numbers, nodes: Ints) -> Floats:
         """Largest difference of nodal values within a cell near each of `nodes`, (k,).

@@ -229,7 +229,7 @@ def _total(t: Total) -> dict[str, Any]:
         "sector": _resultant(t.sector),
         "copies": [_resultant(r) for r in t.copies],
         "whole": _resultant(t.body),
-        "sum_of_magnitudes": {"force": t.scale[0], "moment": t.scale[1]},
+        "sum_of_magnitudes": {"force": plain(t.scale[0]), "moment": plain(t.scale[1])},
         "supports": [
             {"name": s.name, "nodes": len(s.nodes), "sector": _resultant(own),
              "whole": _resultant(whole)}

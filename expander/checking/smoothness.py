@@ -33,7 +33,7 @@ from expander.loadcases import LoadCase
 from expander.model import Mesh
 from expander.placements import Floats
 from expander.quantities import Quantity, quantity
-from expander.resolve import Numbers, to_global
+from expander.resolve import Numbers, product, to_global
 from expander.sector import on_axis
 from expander.topology import Ints
 
@@ -93,13 +93,15 @@ class Near:
         """(f,) the cell whose image lies on the other side."""
         return self.around.rows(_joined([f.across for f in self.seam.faces], np.int64))
 
-    def face_yardstick(self, per_cell: Numbers) -> Floats:
-        """(f,) yardstick of each face: the largest of its corners'."""
-        found = []
+    def face_yardstick(self, per_cell: Numbers) -> tuple[Floats, NDArray[np.bool_]]:
+        """(f,) yardstick of each face, the largest of its corners', and whether it is sure."""
+        found: list[Floats] = []
+        sure: list[NDArray[np.bool_]] = []
         for f in self.seam.faces:
-            at = self.around.yardstick(per_cell, f.corners.ravel()).reshape(f.corners.shape)
-            found.append(at.max(axis=1))
-        return _joined(found, np.float64)
+            at, known = self.around.yardstick(per_cell, f.corners.ravel())
+            found.append(at.reshape(f.corners.shape).max(axis=1))
+            sure.append(np.asarray(known.reshape(f.corners.shape).any(axis=1)))
+        return _joined(found, np.float64), _joined(sure, np.bool_)
 
 
 def _joined(parts: list[NDArray[Any]], kind: type) -> NDArray[Any]:
@@ -176,7 +178,8 @@ def _at_faces(
     seam = near.by_face
     jump = _contracted(near.group, seam, field, case, per_cell[near.here], per_cell[near.across],
                        q, chi)  # fmt: skip
-    return judged(jump, near.mesh.points, near.face_yardstick(per_cell), scale, measure, limit)
+    yardstick, sure = near.face_yardstick(per_cell)
+    return judged(jump, near.mesh.points, yardstick, scale, measure, limit, sure)
 
 
 def _contracted(
@@ -207,6 +210,7 @@ def judged(
     scale: float,
     measure: str,
     limit: float,
+    sure: NDArray[np.bool_] | None = None,
 ) -> Verdict:
     """A jump beside the scatter around it.
 
@@ -215,6 +219,7 @@ def judged(
     yardstick : (k,) largest jump between neighbouring cells near each row; NaN if unknown.
     scale : the largest value over the body.
     limit : how many times the yardstick counts as closed.
+    sure : (k,) whether more than that is open, and not only doubtful; all if None.
     """
     lengths = jump.lengths
     known = np.isfinite(yardstick)
@@ -224,8 +229,11 @@ def judged(
     worst = int(np.argmax(times)) if times.max(initial=0.0) > 0.0 else None
     ratio = _ratio(jump, scale)
     result, words = CLOSED, ""
-    if (times > limit).any():
+    beyond = times > limit
+    if (beyond if sure is None else beyond & sure).any():
         result = OPEN
+    elif beyond.any():
+        result, words = DOUBTFUL, "one cell thick: there is no layer of cells to compare with"
     elif ratio is not None:
         result, words = DOUBTFUL, f"the two sides stand in the ratio {_number(ratio)}"
     elif unknown.any():
@@ -275,4 +283,5 @@ def _as_stored(field: Field, values: Numbers) -> Numbers:
 
 def _indexed(field: Field, values: Numbers) -> Numbers:
     """A stress as (k, 3, 3), a vector as (k, 1, 3), from stored components in global directions."""
-    return np.asarray((values @ quantity_of(field).spread.T).reshape(len(values), -1, 3))
+    full = product(values, quantity_of(field).spread)
+    return np.asarray(full.reshape(len(values), -1, 3))

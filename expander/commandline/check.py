@@ -85,6 +85,16 @@ def check(
     from expander.commandline.tables import Progress
     from expander.expansion import program_version
 
+    of_plot = {"--show": show, "--in-case": in_case, "--component": component}
+    of_both = {"--seam": seam, "--along": None if along == "auto" else along}
+    idle = [o for o, v in of_plot.items() if v is not None and plot is None]
+    idle += [o for o, v in of_both.items() if v is not None and plot is None and csv_file is None]
+    if idle:
+        where = "--plot or --csv" if idle[0] in of_both else "--plot"
+        raise InputError(
+            f"{idle[0]} belongs to {where}, which was not given.",
+            "Add --plot seam.png, or leave it out.",
+        )
     case = case_from(sections=section, **description)
     with Progress() as progress:
         found = run(case, skip_undeclared, allow_nan, seams_only, progress.step)
@@ -169,7 +179,7 @@ def _seam(continuity: Continuity, chosen: _Chosen) -> Seam:
     if chosen.seam is None:
         worst = _worst(continuity, None, chosen)
         return seams[0] if worst is None else seams[names.index(worst.seam)]
-    given = [n for n in names if chosen.seam in (n, n.replace("'", "").removeprefix("plane "))]
+    given = [s.name for s in seams if chosen.seam in (s.name, s.plane)]
     if not given:
         raise InputError(f"There is no seam {chosen.seam!r}.", f"Seams: {', '.join(names)}.")
     return seams[names.index(given[0])]
@@ -189,6 +199,10 @@ def _worst(continuity: Continuity, seam: str | None, chosen: _Chosen) -> Verdict
 
 
 def _field_and_case(continuity: Continuity, seam: Seam, chosen: _Chosen) -> tuple[str, str]:
+    from expander.checking.along import case_named
+
+    if chosen.case is not None:
+        case_named(continuity, chosen.case)
     worst = _worst(continuity, seam.name, chosen)
     field = chosen.field or (worst.field if worst is not None else None)
     case = chosen.case or (worst.case if worst is not None else continuity.cases[0].case.name)

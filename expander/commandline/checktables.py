@@ -18,7 +18,7 @@ _MEASURES = {"value": "values", "traction": "traction", "flux": "normal part", "
 
 def print_check(found: dict[str, Any]) -> None:
     """The whole report, the verdict last."""
-    console = Console(highlight=False)
+    console = Console(highlight=False, emoji=False)
     if not console.is_terminal:
         console.width = FILE_WIDTH
     facts = Table.grid(padding=(0, 2))

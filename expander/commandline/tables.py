@@ -56,7 +56,7 @@ class Progress:
 
 def print_summary(found: dict[str, Any]) -> None:
     """The short table of an expansion."""
-    console = Console(highlight=False)
+    console = Console(highlight=False, emoji=False)
     if not console.is_terminal:
         console.width = FILE_WIDTH
     points, cells = found["points"], found["cells"]
