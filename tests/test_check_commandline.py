@@ -589,8 +589,8 @@ def test_options_of_a_plot_need_one(seamfold: Seamfold, option: str, value: str)
     good()
     found = seamfold("check", "good.vtu", *X, option, value)
     assert found.status == 2
-    assert option in found.stderr
-    assert "--plot" in found.stderr
+    assert option in found.err
+    assert "--plot" in found.err
 
 
 def quarter() -> None:

@@ -7,7 +7,7 @@ condition written out by hand; nothing here knows how the check looks at a seam.
 from __future__ import annotations
 
 from collections.abc import Callable, Mapping, Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass, replace
 from functools import cached_property
 from pathlib import Path
 from typing import Any
@@ -22,12 +22,15 @@ from demo_cases.solver import (
     Material,
     Mesh,
     Solution,
+    block,
     on_plane,
+    quadratic,
     solve,
+    tetrahedra,
 )
 from expander.checking.report import CheckUp, report
 from expander.checkup import check
-from tests.against_outside.bodies import SHIFT, SIX, SKEW, Floats, Model, mirrors
+from tests.against_outside.bodies import SHIFT, SIX, SKEW, Floats, Ints, Model, mirrors
 from tests.against_outside.elastic import word
 
 STEEL = Material(young=200e3, poisson=0.3)
@@ -184,6 +187,90 @@ def in_skew(mesh: Mesh) -> Mesh:
     return mesh.mapped(lambda *x: skewed(np.stack(x, axis=1)).T)
 
 
-def sides(mesh: Mesh, normal: ArrayLike, point: ArrayLike = (0.0, 0.0, 0.0)) -> np.ndarray:
+def sides(mesh: Mesh, normal: ArrayLike, point: ArrayLike = (0.0, 0.0, 0.0)) -> Ints:
     """Numbers of the nodes in a plane."""
     return np.flatnonzero(on_plane(mesh, normal, point))
+
+
+# --- bodies -------------------------------------------------------------------------------------
+
+X, Y, Z = np.eye(3)
+
+CELLS: dict[str, Callable[[Mesh], Mesh]] = {
+    "hexa 8": lambda mesh: mesh,
+    "tetra 4": tetrahedra,
+    "hexa 20": quadratic,
+    "tetra 10": lambda mesh: quadratic(tetrahedra(mesh)),
+}
+
+
+def bulge(u: Floats, v: Floats, w: Floats) -> Sequence[ArrayLike]:
+    """A cube made uneven; its faces in u = 0, v = 0 and w = 0 stay plane."""
+    return u * (1 + 0.2 * v * w), 0.8 * v * (1 + 0.3 * u), 1.3 * w * (1 - 0.2 * u * v)
+
+
+def graded(u: Floats, v: Floats, w: Floats) -> Sequence[ArrayLike]:
+    """The same with cells that grow away from the planes."""
+    return bulge(u**2, v**1.5, w**2)
+
+
+def v_notch(u: Floats, v: Floats, w: Floats) -> Sequence[ArrayLike]:
+    """A notch across the top whose sharp tip lies in the plane u = 0."""
+    return u, 0.8 * v, w * (0.55 + 0.45 * np.minimum(u / 0.4, 1.0))
+
+
+def elbow(count: int, across: int) -> Mesh:
+    """A cube less a quarter of it: a re-entrant edge at half the height, along y (across = 0),
+    which ends in the plane y = 0, or along x (across = 1), which ends in the plane x = 0."""
+    mesh = block(count, count, count)
+    centre = mesh.centroids()
+    return mesh.keep(~((centre[:, across] < 0.5) & (centre[:, 2] > 0.5)))
+
+
+SHAPES: dict[str, Callable[[int], Mesh]] = {
+    "bulge": lambda n: block(n, n, n).mapped(bulge),
+    "graded": lambda n: block(n, n, n).mapped(graded),
+    "notch": lambda n: block(2 * n, n, n).mapped(v_notch),
+    "elbow along y": lambda n: elbow(n, 0),
+    "elbow along x": lambda n: elbow(n, 1),
+}
+
+
+def ring(sectors: int, counts: Sequence[int], lean: float = 0.0, part: float = 1.0) -> Mesh:
+    """A sector of a ring about z, radii 1 to 2, between z = 0 and an uneven top.
+
+    Seams curved by `lean` radians; `part` is the modelled part of the sector's angle.
+    """
+
+    def place(u: Floats, v: Floats, w: Floats) -> Sequence[ArrayLike]:
+        r = 1 + u * (1 + 0.2 * w)
+        angle = 2 * np.pi / sectors * part * v + lean * (u + w * w)
+        return r * np.cos(angle), r * np.sin(angle), 0.8 * w * (1 + 0.1 * u)
+
+    return block(*counts).mapped(place)
+
+
+def bore(mesh: Mesh) -> Ints:
+    """Nodes of `ring` at the inner radius."""
+    return np.flatnonzero(np.hypot(*mesh.points[:, :2].T) < 1 + 1e-3)
+
+
+def uneven(x: Floats) -> Floats:
+    """A force per volume along all directions, different everywhere."""
+    return np.stack(
+        [1 + 0.3 * x[..., 1], -0.5 + 0.1 * x[..., 2] ** 2, 0.3 - 0.2 * x[..., 0]], axis=-1
+    )
+
+
+def in_skew_system(part: Part) -> Part:
+    """The same body, moved: its mesh, planes, axis, supports and load."""
+    planes = [
+        CutPlane(SKEW @ p.unit, skewed(np.asarray(p.point, dtype=float)), p.parity)
+        for p in part.planes
+    ]
+    axis = part.cyclic and Cyclic(
+        part.cyclic.sectors, SKEW @ part.cyclic.axis, skewed(np.zeros(3)), part.cyclic.parity
+    )
+    fixed = [replace(f, directions=np.asarray(f.directions) @ SKEW.T) for f in part.fixed]
+    return replace(part, mesh=in_skew(part.mesh), load=part.load @ SKEW.T, fixed=fixed,
+                   planes=planes, cyclic=axis)  # fmt: skip
