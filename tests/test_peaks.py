@@ -203,8 +203,9 @@ def test_degenerate_cases(f, mean, value, phase) -> None:
 def test_circular_to_round_off_is_circular(steady) -> None:
     """Then the value lasts all the time, and the phase is 0, not that of the round-off."""
     angles = np.random.default_rng(2).uniform(0.0, 6.0, 200)
-    f = 0.1 * np.exp(1j * angles)[:, None] * np.array([1.0, 1.0j])
-    peak = largest_magnitude(f, None if steady is None else np.full((200, 2), steady))
+    plane = np.linalg.qr(np.random.default_rng(3).normal(size=(3, 3)))[0][:2]
+    f = 0.1 * np.exp(1j * angles)[:, None] * (plane[0] + 1j * plane[1])
+    peak = largest_magnitude(f, None if steady is None else np.full((200, 3), steady))
     assert peak.value == pytest.approx(0.1, rel=1e-14)
     assert (peak.phase == 0.0).all()
 

@@ -147,14 +147,16 @@ def seams_of(sector: Sector) -> list[Seam]:
     group, mesh, found = sector.group, sector.mesh, sector.seams
     classes = found.nodes
     mirrors = {g for g, _, _ in group.mirrors}
+    neighbours = _neighbours(group) | {min(g, int(group.inverse[g])) for g, _ in found.unmatched}
     present = set(np.unique(classes.via).tolist()) - {0}
     candidates = sorted({min(g, int(group.inverse[g])) for g in present}
-                        | {min(g, int(group.inverse[g])) for g, _ in found.unmatched}
-                        | _neighbours(group))  # fmt: skip
+                        | neighbours)  # fmt: skip
     seams, primary = [], set()
     for g in candidates:
         rows = classes.via == g
-        seam = _face_seam(sector, g, classes.item[rows], classes.source[rows], g in mirrors)
+        # Faces of other copies may come near along a line or an axis, without lying opposite.
+        seam = _face_seam(sector, g, classes.item[rows], classes.source[rows], g in mirrors,
+                          g in neighbours)  # fmt: skip
         if seam is not None:
             seams.append(seam)
             primary |= {g, int(group.inverse[g])}
@@ -175,28 +177,28 @@ def _neighbours(group: Group) -> set[int]:
     return {min(1, group.axis.sectors - 1)}
 
 
-def _face_seam(sector: Sector, g: int, i: Ints, j: Ints, mirror: bool) -> Seam | None:
-    """The seam towards the copy `g`, or None if no face meets or comes near."""
+def _face_seam(sector: Sector, g: int, i: Ints, j: Ints, mirror: bool, near: bool) -> Seam | None:
+    """The seam towards the copy `g`, or None if no face meets or, if `near`, comes near."""
     group, mesh = sector.group, sector.mesh
     name, plane = _name(group, g)
     faces = tuple(_meeting(mesh, group, g, i, j))
     paired = _Rows(i, np.full(len(i), g), j[:, None], np.ones((len(i), 1)),
                    _distance(mesh, group, g, i, j))  # fmt: skip
     rows, against, found = [paired], None, []
-    if not mirror:
+    if near and not mirror:
         against, reach = _against(sector, g, i, j, faces)
         for s, nodes, opposing, taken in (
             (g, against.nodes_here, against.facets_there, i),
             (int(group.inverse[g]), against.nodes_there, against.facets_here, j),
         ):
             nodes = np.setdiff1d(nodes, taken)
-            opposed = opposite(mesh.points[nodes].astype(float), mesh, opposing,
+            beyond = opposite(mesh.points[nodes].astype(float), mesh, opposing,
                                group.placements[s], reach)  # fmt: skip
             start = sum(len(r.nodes) for r in rows)
-            keep = opposed.found
-            rows.append(_Rows(nodes[keep], np.full(int(keep.sum()), s), opposed.partners[keep],
-                              opposed.weights[keep], opposed.gap[keep]))  # fmt: skip
-            found.append(Interpolated(start, np.flatnonzero(keep), opposing, opposed))
+            keep = beyond.found
+            rows.append(_Rows(nodes[keep], np.full(int(keep.sum()), s), beyond.partners[keep],
+                              beyond.weights[keep], beyond.gap[keep]))  # fmt: skip
+            found.append(Interpolated(start, np.flatnonzero(keep), opposing, beyond))
     if not faces and (
         against is None or not (against.here.against.size or against.here.apart.size)
     ):
