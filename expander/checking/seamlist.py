@@ -34,6 +34,7 @@ from expander.seams import OF_EDGE, Tolerance
 from expander.sector import Sector
 from expander.topology import Ints, cell_sizes, cells_touching, local_edges
 
+_SAMPLE = 2_000  # faces are enough to tell their usual size
 REACH = 1.0  # edges: faces that lie farther apart are not opposite each other
 
 
@@ -181,12 +182,13 @@ def _face_seam(sector: Sector, g: int, i: Ints, j: Ints, mirror: bool, near: boo
     """The seam towards the copy `g`, or None if no face meets or, if `near`, comes near."""
     group, mesh = sector.group, sector.mesh
     name, plane = _name(group, g)
-    faces = tuple(_meeting(mesh, group, g, i, j))
+    outer = outer_facets(mesh) if near and not mirror else None
+    faces = tuple(_meeting(mesh, group, g, i, j, outer))
     paired = _Rows(i, np.full(len(i), g), j[:, None], np.ones((len(i), 1)),
                    _distance(mesh, group, g, i, j))  # fmt: skip
     rows, against, found = [paired], None, []
-    if near and not mirror:
-        against, reach = _against(sector, g, i, j, faces)
+    if outer is not None:
+        against, reach = _against(sector, g, i, j, faces, outer)
         for s, nodes, opposing, taken in (
             (g, against.nodes_here, against.facets_there, i),
             (int(group.inverse[g]), against.nodes_there, against.facets_here, j),
@@ -258,8 +260,15 @@ def _name(group: Group, g: int) -> tuple[str, str | None]:
     return f"towards the copy {group.words(g)}", None
 
 
-def _meeting(mesh: Mesh, group: Group, g: int, i: Ints, j: Ints) -> list[FacePair]:
-    """Faces all of whose corners lie on the seam, with those whose images they meet."""
+def _meeting(
+    mesh: Mesh, group: Group, g: int, i: Ints, j: Ints, outer: list[Facets] | None
+) -> list[FacePair]:
+    """Faces all of whose corners lie on the seam, with those whose images they meet.
+
+    Parameters
+    ----------
+    outer : all outer facets of the mesh, where they are known.
+    """
     partner = np.full(mesh.point_count, -1, dtype=np.int64)
     partner[i] = j
     marked = np.zeros(mesh.point_count, dtype=bool)
@@ -267,10 +276,11 @@ def _meeting(mesh: Mesh, group: Group, g: int, i: Ints, j: Ints) -> list[FacePai
     near = cells_touching(mesh, marked)
     # A cell that lies in the seam altogether, as a web in a cut plane, has no face across it.
     inside = np.logical_and.reduceat(marked[_connectivity(mesh, near)], _starts(mesh, near))
-    facets = outer_facets(mesh, near[~inside]) if len(near) else []
+    if outer is None or inside.any():
+        outer = outer_facets(mesh, near[~inside]) if len(near) else []
     token = tokens(mesh.point_count)
     found = []
-    for f in facets:
+    for f in outer:
         corners = f.nodes[:, : f.corners]
         on = marked[corners].all(axis=1)
         f, corners = Facets(f.nodes[on], f.vtk_type, f.cells[on]), corners[on]
@@ -318,15 +328,19 @@ def _at_nodes(mesh: Mesh, faces: tuple[FacePair, ...], nodes: Ints) -> tuple[Flo
 
 
 def _against(
-    sector: Sector, g: int, i: Ints, j: Ints, faces: tuple[FacePair, ...]
+    sector: Sector,
+    g: int,
+    i: Ints,
+    j: Ints,
+    faces: tuple[FacePair, ...],
+    outer: list[Facets],
 ) -> tuple[Against, float]:
     """How the faces of turned neighbours meet, where nodes do not pair; and how far was looked."""
     mesh, placement = sector.mesh, sector.group.placements[g]
     partner = np.full(mesh.point_count, -1, dtype=np.int64)
     partner[j] = i
-    outer = outer_facets(mesh)
-    corners = [f.nodes[:, : f.corners].ravel() for f in outer]
-    edge = local_edges(mesh, np.unique(np.concatenate(corners))) if corners else np.ones(1)
+    sample = [f.nodes[:: max(1, len(f) // _SAMPLE), 0] for f in outer]
+    edge = local_edges(mesh, np.concatenate(sample)) if sample else np.ones(1)
     usual = float(np.median(edge[np.isfinite(edge)])) if np.isfinite(edge).any() else mesh.size
     tolerance = Tolerance(mesh, sector.case.seam.tolerance)
     touching = max(OF_EDGE * usual, tolerance.spacing, tolerance.given or 0.0)
