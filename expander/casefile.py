@@ -113,7 +113,7 @@ class SumTable(Table):
 class SeamTable(Table):
     tolerance: float | None = Field(default=None, gt=0.0)
     limit: float = Field(default=1e-4, gt=0.0)
-    scatter: float = Field(default=4.0, gt=0.0)
+    scatter: float = Field(default=6.0, gt=0.0)
     open: Literal["refuse", "keep apart"] = "refuse"
 
 

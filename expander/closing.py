@@ -100,7 +100,8 @@ def scale_of(field: Field, case: LoadCase, cases: tuple[LoadCase, ...]) -> float
     """The field's largest value in a case; in all cases, where the one holds nothing but round-off
     beside the others."""
     own = largest_value(field.values(case.model))
-    others = max(largest_value(field.values(c.model)) for c in cases)
+    rest = (largest_value(field.values(c.model)) for c in cases if c is not case)
+    others = max(rest, default=0.0)
     return others if own <= _ROUND_OFF * others else own
 
 

@@ -23,6 +23,7 @@ from expander.topology import (
     boundary_faces,
     boundary_nodes,
     faces_met,
+    free_faces,
     local_edges,
     pieces,
 )
@@ -181,8 +182,8 @@ def find_seams(mesh: Mesh, group: Group, given_tolerance: float | None) -> Seams
         found.append((g, on, on, 2.0 * off[on], allowed[fits]))
         misses += _near_misses(mesh, on, off, tolerance)
     if not group.is_reflection_group:
-        boundary = boundary_nodes(mesh)
-        faces = boundary_faces(mesh)
+        free = free_faces(mesh)
+        boundary, faces = boundary_nodes(mesh, free), boundary_faces(mesh, free)
         mirrors = {g for g, _, _ in group.mirrors}
         piece = None
         for g in _touching(mesh.points[boundary].astype(float), group, tolerance.reach, mirrors):
@@ -350,8 +351,8 @@ def close_classes(
     def packed(item: Ints, via: Ints, source: Ints) -> Ints:
         return (item * size + via) * count + source
 
-    touched = np.unique(np.concatenate([p[0] for p in parts]))
-    keys = np.unique(
+    touched = _distinct(np.concatenate([p[0] for p in parts]))
+    keys = _distinct(
         np.concatenate([packed(*p) for p in parts] + [packed(touched, touched * 0, touched)])
     )
     while True:
@@ -366,8 +367,14 @@ def close_classes(
             inside = np.arange(int(reps.sum())) - np.repeat(np.cumsum(reps) - reps, reps)
             other = start[entry] + inside
             through = group.product[via[entry], via[other]]
-            new.append(np.unique(packed(item[entry], through, source[other])))
-        grown = np.unique(np.concatenate(new))
+            new.append(_distinct(packed(item[entry], through, source[other])))
+        grown = _distinct(np.concatenate(new))
         if len(grown) == len(keys):
             return Classes(item, via, source)
         keys = grown
+
+
+def _distinct(keys: Ints) -> Ints:
+    """As numpy's unique, which hashes and is several times slower than a sort."""
+    ranked = np.sort(keys)
+    return ranked[np.concatenate([[True], ranked[1:] != ranked[:-1]])] if len(ranked) else ranked

@@ -63,7 +63,8 @@ def cells_touching(mesh: Mesh, marked: NDArray[np.bool_]) -> Ints:
     if not hit.any():
         return np.empty(0, dtype=np.int64)
     positions = np.flatnonzero(hit)
-    return np.unique(np.searchsorted(mesh.offsets, positions, side="right") - 1)
+    cells = np.searchsorted(mesh.offsets, positions, side="right") - 1  # ascending
+    return np.asarray(cells[np.concatenate([[True], cells[1:] != cells[:-1]])])
 
 
 def local_edges(mesh: Mesh, nodes: Ints) -> Floats:
@@ -85,42 +86,80 @@ def local_edges(mesh: Mesh, nodes: Ints) -> Floats:
     return shortest[nodes]
 
 
-def boundary_nodes(mesh: Mesh) -> Ints:
-    """Nodes on faces of one solid cell only, all nodes of other cells, and loose nodes, sorted.
+@dataclass(frozen=True, eq=False)
+class FreeFaces:
+    """Faces that belong to one solid cell only, of cells of one type and at one place of the cell.
+
+    Attributes
+    ----------
+    cells : (k, size) nodes of the cells.
+    face : columns of the corners of the face. on_face : columns of all its nodes.
+    corners : number of corners of the cell.
+    """
+
+    cells: Ints
+    face: tuple[int, ...]
+    on_face: tuple[int, ...]
+    corners: int
+
+
+def free_faces(mesh: Mesh) -> list[FreeFaces]:
+    """Faces that belong to one solid cell only.
 
     A face is known by the sum of random numbers given to its corners: one sort of 64-bit keys,
     instead of sorting rows of node numbers. Two different faces share a key with a probability
     of about (number of faces)^2 / 2^64.
     """
     token = _tokens(mesh)
+    lots, keys = [], []
+    for vtk_id, _, nodes in blocks(mesh):
+        kind = CELL_TYPES.get(vtk_id)
+        if kind is None or kind.dimension < 3:
+            continue
+        corners = len(kind.shape.mirrored)
+        column = [token[nodes[:, c]] for c in range(corners)]
+        for face in kind.shape.faces:
+            key = column[face[0]] + column[face[1]]
+            for c in face[2:]:
+                key += column[c]
+            keys.append(key)
+            on_face = tuple(i for i, c in enumerate(kind.nodes) if set(c) <= set(face))
+            lots.append((nodes, tuple(face), on_face, corners))
+    if not keys:
+        return []
+    ranked = np.sort(np.concatenate(keys))
+    new = np.concatenate([[True], ranked[1:] != ranked[:-1], [True]])
+    single = ranked[new[1:] & new[:-1]]
+    del ranked, new
+    return [
+        FreeFaces(nodes[among(key, single)], face, on_face, corners)
+        for (nodes, face, on_face, corners), key in zip(lots, keys, strict=True)
+    ]
+
+
+def among(keys: NDArray[np.uint64], some: NDArray[np.uint64]) -> NDArray[np.bool_]:
+    """Which of many `keys` are among `some` few, sorted ones."""
+    bits = min(26, max(8, 4 + len(some).bit_length()))
+    shift = np.uint64(64 - bits)
+    table = np.zeros(2**bits, dtype=bool)  # most keys are told from their first bits
+    table[some >> shift] = True
+    hit: NDArray[np.bool_] = table[keys >> shift]
+    rows = np.flatnonzero(hit)
+    place = np.minimum(np.searchsorted(some, keys[rows]), max(0, len(some) - 1))
+    hit[rows] = some[place] == keys[rows]
+    return hit
+
+
+def boundary_nodes(mesh: Mesh, free: list[FreeFaces] | None = None) -> Ints:
+    """Nodes on faces of one solid cell only, all nodes of other cells, and loose nodes, sorted."""
     marked = np.ones(mesh.point_count, dtype=bool)
     marked[mesh.connectivity] = False
-    keys, owners = [], []
     for vtk_id, _, nodes in blocks(mesh):
         kind = CELL_TYPES.get(vtk_id)
         if kind is None or kind.dimension < 3:
             marked[nodes] = True
-            continue
-        for face in kind.shape.faces:
-            corners = nodes[:, face]
-            keys.append(token[corners].sum(axis=1, dtype=np.uint64))
-            on_face = [i for i, c in enumerate(kind.nodes) if set(c) <= set(face)]
-            owners.append((nodes, on_face))
-    if keys:
-        flat = np.concatenate(keys)
-        order = np.argsort(flat, kind="stable")
-        ranked = flat[order]
-        single = np.ones(len(flat), dtype=bool)
-        same = ranked[1:] == ranked[:-1]
-        single[1:][same] = False
-        single[:-1][same] = False
-        alone = np.zeros(len(flat), dtype=bool)
-        alone[order[single]] = True
-        start = 0
-        for (nodes, on_face), key in zip(owners, keys, strict=True):
-            picked = alone[start : start + len(key)]
-            marked[nodes[picked][:, on_face]] = True
-            start += len(key)
+    for f in free_faces(mesh) if free is None else free:
+        marked[f.cells[:, f.on_face]] = True
     return np.flatnonzero(marked)
 
 
@@ -138,29 +177,16 @@ class Faces:
     inside: Floats
 
 
-def boundary_faces(mesh: Mesh) -> list[Faces]:
+def boundary_faces(mesh: Mesh, free: list[FreeFaces] | None = None) -> list[Faces]:
     """Faces that belong to one solid cell only, by size."""
-    token = _tokens(mesh)
-    found: dict[int, list[tuple[Ints, Ints]]] = {}
-    for vtk_id, _, nodes in blocks(mesh):
-        kind = CELL_TYPES.get(vtk_id)
-        for face in kind.shape.faces if kind is not None and kind.dimension == 3 else ():
-            corners = nodes[:, : len(kind.shape.mirrored)] if kind is not None else nodes
-            found.setdefault(len(face), []).append((nodes[:, face], corners))
-    alone = []
-    for parts in found.values():
-        keys = np.concatenate([token[f].sum(axis=1, dtype=np.uint64) for f, _ in parts])
-        _, first, counts = np.unique(keys, return_index=True, return_counts=True)
-        single = np.zeros(len(keys), dtype=bool)
-        single[first[counts == 1]] = True
-        outer, inside, start = [], [], 0
-        for block, nodes in parts:
-            picked = single[start : start + len(block)]
-            outer.append(block[picked])
-            inside.append(mesh.points[nodes[picked]].astype(float).mean(axis=1))
-            start += len(block)
-        alone.append(Faces(np.concatenate(outer), np.concatenate(inside)))
-    return alone
+    found: dict[int, list[tuple[Ints, Floats]]] = {}
+    for f in free_faces(mesh) if free is None else free:
+        inside = mesh.points[f.cells[:, : f.corners]].astype(float).mean(axis=1)
+        found.setdefault(len(f.face), []).append((f.cells[:, f.face], inside))
+    return [
+        Faces(np.concatenate([c for c, _ in parts]), np.concatenate([i for _, i in parts]))
+        for parts in found.values()
+    ]
 
 
 def _tokens(mesh: Mesh) -> NDArray[np.uint64]:

@@ -71,7 +71,7 @@ def continuity(sector: Sector, step: Step = lambda words: None) -> Continuity:
         held = {f.seam for f in found if f is not None and f.found == CLAMPED and f.result != OPEN}
         verdicts = [
             replace(v, result=TOLD, words="the plane is held, as declared")
-            if v.seam in held and v.measure in ("kink", "traction") else v
+            if v.seam in held and v.times is not None else v
             for v in verdicts
         ]  # fmt: skip
         cases.append(CaseContinuity(case, chi, phase, tuple(verdicts),

@@ -19,13 +19,16 @@ from expander.checking.jumps import Jump, jump_at
 from expander.checking.seamlist import Seam
 from expander.checking.smoothness import Near, is_stress, kink, recovered
 from expander.checking.verdicts import CLOSED, DOUBTFUL, OPEN, TOLD, worst_of
-from expander.closing import scale_of
+from expander.closing import largest_value, scale_of
 from expander.fields import Field
 from expander.loadcases import LoadCase
 from expander.placements import Floats
 from expander.resolve import Numbers
 from expander.sector import Sector
 
+# RMS of the slope's jumps over that of the scatter around, where all values vanish on a plane: at
+# most 0.66 in right solutions of half models, over 0.8 in 95 of 100 planes clamped by mistake.
+TYPICAL = 0.75
 MOST = 0.9  # of the nodes: as many closing under a word say that it is the word
 CLAMPED, NEITHER, ZERO, UNTOLD = "looks clamped", "neither", "zero field", "not told"
 
@@ -176,7 +179,9 @@ def _sides(sector: Sector, seam: Seam, case: LoadCase, values: dict[str, Numbers
         if not primary(f):
             continue
         jump = jump_at(sector.mesh, sector.group, seam, f, case, values[f.name], plain)
-        found.append(_Sides(f, jump, scale_of(f, case, sector.cases)))
+        scale = scale_of(f, case, sector.cases)
+        # Round-off beside the other cases says nothing of the load.
+        found.append(_Sides(f, jump, scale if scale == largest_value(values[f.name]) else 0.0))
     return found
 
 
@@ -275,11 +280,20 @@ def _by_slope(
 ) -> Found:
     """Both words close since the values vanish on the seam: the slope across it decides."""
     scatter = sector.case.seam.scatter
+    held = next((m.held for m, p in zip(sector.case.mirror, sector.group.planes, strict=True)
+                 if p.name == near.seam.plane), False)  # fmt: skip
+    if held:
+        return replace(told, found=CLAMPED, words="the values vanish there under both words, as "
+                       "declared (held = true)")  # fmt: skip
     slopes = {}
     for word in (own, best):
         chi = np.full(len(sector.group), word.chi if word.chi.imag else word.chi.real)
         found = [kink(near, s.field, case, values[s.field.name], chi, scatter) for s in sides]
-        slopes[word.name] = [v for v in found if v is not None]
+        slopes[word.name] = [
+            replace(v, result=OPEN) if v.result == CLOSED and (v.typical or 0.0) > TYPICAL else v
+            for v in found
+            if v is not None
+        ]
     if not slopes[own.name]:
         return replace(told, result=TOLD, found=UNTOLD, words="the values vanish on the seam, and "
                         "no faces meet there whose slope could tell")  # fmt: skip
@@ -294,11 +308,7 @@ def _by_slope(
     if other == CLOSED:
         return replace(told, result=OPEN, found=best.name, line=best.line,
                        words=f"the values vanish there; the slope says {best.name}")  # fmt: skip
-    held = next((m.held for m, p in zip(sector.case.mirror, sector.group.planes, strict=True)
-                 if p.name == near.seam.plane), False)  # fmt: skip
     words = "the values vanish there under both words, the slope does not"
-    if held:
-        return replace(told, found=CLAMPED, words=words + ", as declared (held = true)")
     line = (
         f"[[mirror]] {near.seam.plane!r}: held = true, if the body is really held along this plane"
     )

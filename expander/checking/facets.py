@@ -20,6 +20,7 @@ from __future__ import annotations
 
 from collections.abc import Iterator
 from dataclasses import dataclass
+from itertools import pairwise
 
 import numpy as np
 from numpy.typing import NDArray
@@ -75,7 +76,7 @@ class Shared:
     Attributes
     ----------
     first, second : (k,) cells. corners : (k, c) nodes.
-    normals : (k, 3) unit normals out of the first cell.
+    normals : (k, 3) unit normals, to either side.
     """
 
     first: Ints
@@ -250,7 +251,7 @@ def pairs(mesh: Mesh, facets: list[Facets]) -> list[Shared]:
         if len(i):
             cells = np.concatenate([f.cells for f in alike])
             corners = np.concatenate([f.nodes[:, :count] for f in alike])[i]
-            out = np.concatenate([normals(mesh, part) for part in subset(alike, i)])
+            out = _across(mesh, subset(alike, i))
             found.append(Shared(cells[i], cells[j], corners, out))
     return found
 
@@ -332,3 +333,26 @@ def shares(mesh: Mesh, facets: Facets) -> Floats:
     parts = np.zeros(facets.nodes.shape)
     parts[:, : facets.corners] = (areas(mesh, facets) / facets.corners)[:, None]
     return parts
+
+
+def _across(mesh: Mesh, facets: list[Facets]) -> Floats:
+    """Unit normals without regard to the side: of faces from their corners alone."""
+    found = []
+    for f in facets:
+        if f.dimension != 2:
+            found.append(normals(mesh, f))
+            continue
+        p = [mesh.points[f.nodes[:, c]].astype(float) for c in range(f.corners)]
+        total = np.zeros((len(f), 3))
+        for a, b in pairwise(p[1:]):
+            total += _cross(a - p[0], b - p[0])
+        found.append(unit_rows(total))
+    return np.concatenate(found)
+
+
+def _cross(a: Floats, b: Floats) -> Floats:
+    out = np.empty_like(a)
+    for i in range(3):
+        j, k = (i + 1) % 3, (i + 2) % 3
+        out[:, i] = a[:, j] * b[:, k] - a[:, k] * b[:, j]
+    return out

@@ -21,7 +21,9 @@ from expander.checking.declared import CLAMPED, Found
 from expander.checking.seamlist import Seam
 from expander.checking.verdicts import DOUBTFUL, OPEN, Verdict
 from expander.loadcases import Result
+from expander.seams import MOST_OF_EDGE
 from expander.sector import Sector
+from expander.topology import local_edges
 
 FAILS, DOUBTS, NOTE = "fails", "doubts", "note"
 SAME_VOLUME = 1e-9  # carried around against integrated: round-off only
@@ -84,8 +86,9 @@ def _of_seam(sector: Sector, seam: Seam) -> Iterator[Finding]:
         )  # fmt: skip
     if against.apart_area > _GAP_SHOWN * total:
         gap, node = against.largest_gap
+        edge = float(local_edges(sector.mesh, np.array([node]))[0])
         yield Finding(
-            NOTE, seam.name,
+            DOUBTS if gap < MOST_OF_EDGE * edge and not seam.measure else NOTE, seam.name,
             f"{100 * against.apart_area / total:.3g} % of the area stands off from the copy, by up "
             f"to {gap:.4g} (node {node}): a gap or a contact, not joined",
         )  # fmt: skip
@@ -167,9 +170,12 @@ def _of_audit(sector: Sector, audit: Audit) -> Iterator[Finding]:
     for expect in sector.case.expect:
         yield from _of_expected(sector, audit, expect)
     carried, direct = audit.carried_mass, audit.body_mass
+    # Merged nodes stand where the lowest copy puts them, rounded to the coordinates' precision.
+    size = np.abs(sector.mesh.bounds).max() / sector.mesh.size if sector.mesh.size else 1.0
+    rounding = 100.0 * float(np.finfo(sector.mesh.points.dtype).eps) * max(1.0, float(size))
     for name in ("volume", "area", "length"):
         a, b = getattr(carried, name), getattr(direct, name)
-        if abs(a - b) > SAME_VOLUME * max(abs(a), abs(b)):
+        if abs(a - b) > max(SAME_VOLUME, rounding) * max(abs(a), abs(b)):
             yield Finding(FAILS, "volume", f"the whole body's {name} is {b:.8g} by its own cells, "
                           f"{a:.8g} by carrying the sector's around")  # fmt: skip
     inverted = audit.sector_mass.inverted
@@ -215,7 +221,8 @@ def _of_case(case: CaseAudit, balanced: bool, mode_shape: bool) -> Iterator[Find
             words = f"{name}: free by symmetry: {'; '.join(work)}"
         part = f"; {100 * case.share:.3g} % of the displacement is such a motion"
         yield Finding(NOTE, "rigid body", words + (part if case.share else ""))
-    if case.share > 0.99 and case.motions.count:
+    by_force = case.held is not None and bool((np.abs(case.held) > 1e-6).any())
+    if case.share > 0.99 and case.motions.count and not by_force:
         yield Finding(
             DOUBTS, "rigid body",
             f"{name}: {100 * case.share:.4g} % of the displacement is a rigid-body motion of the "

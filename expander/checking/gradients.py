@@ -2,55 +2,63 @@
 
 from __future__ import annotations
 
+from dataclasses import dataclass
+
 import numpy as np
 
 from expander.model import Mesh
+from expander.placements import Floats
 from expander.resolve import Numbers
 from expander.topology import Ints, blocks
 
 
-def cell_gradients(mesh: Mesh, cells: Ints, values: Numbers) -> Numbers:
-    """Mean gradient of nodal values within each cell, by least squares over its nodes.
+@dataclass(frozen=True, eq=False)
+class Gradients:
+    """Mean gradients within cells, by least squares over their nodes.
 
-    Parameters
+    Attributes
     ----------
-    cells : (f,) cell numbers, each once, ascending.
-    values : (n, c) at the nodes of the mesh.
-
-    Returns
-    -------
-    (f, c, 3): derivatives of each component along x, y, z; along a shell or a line only, for
-    such cells. Exact for a linear field.
-
-    Examples
-    --------
-    >>> from expander.model import Mesh
-    >>> tetra = Mesh(np.array([[0.0, 0, 0], [1, 0, 0], [0, 1, 0], [0, 0, 1]]), np.arange(4),
-    ...              np.array([0, 4]), np.array([10], dtype=np.uint8))
-    >>> cell_gradients(tetra, np.array([0]), np.array([[1.0], [3.0], [1.0], [1.5]])).tolist()
-    [[[2.0, 0.0, 0.5]]]
+    count : number of cells.
+    parts : by cell type and size: rows of the cells, their nodes (k, s), and the weights
+        (k, s, 3) of the nodes' values in the gradient.
     """
-    out = np.zeros((len(cells), values.shape[1], 3), dtype=np.result_type(values, float))
-    for _, numbers, nodes in blocks(mesh, cells) if len(cells) else ():
-        rows = np.searchsorted(cells, numbers)
-        x = mesh.points[nodes].astype(float)
-        x -= x.mean(axis=1, keepdims=True)
-        moment = np.einsum("fsi,fsj->fij", x, x)
-        size = np.trace(moment, axis1=1, axis2=2)
-        size[size == 0.0] = 1.0  # a point has no gradient
-        with np.errstate(invalid="ignore"):  # accepted values that are not finite spread
-            v = values[nodes]
-            v = v - v.mean(axis=1, keepdims=True)
-            right = np.einsum("fsi,fsc->fic", x, v) / size[:, None, None]
-        flat = np.linalg.det(moment / size[:, None, None]) < 1e-12
-        inverse = np.empty_like(moment)
-        scaled = moment / size[:, None, None]
-        inverse[~flat] = np.linalg.inv(scaled[~flat])
-        # A shell or a line has no gradient across itself.
-        inverse[flat] = np.linalg.pinv(scaled[flat], rcond=1e-9, hermitian=True)
-        with np.errstate(invalid="ignore"):
-            out[rows] = np.einsum("fij,fjc->fci", inverse, right)
-    return out
+
+    count: int
+    parts: tuple[tuple[Ints, Ints, Floats], ...]
+
+    @staticmethod
+    def within(mesh: Mesh, cells: Ints) -> Gradients:
+        """Of these cells, each once, ascending."""
+        parts = []
+        for _, numbers, nodes in blocks(mesh, cells) if len(cells) else ():
+            x = mesh.points[nodes].astype(float)
+            x -= x.mean(axis=1, keepdims=True)
+            moment = np.matmul(x.transpose(0, 2, 1), x)
+            size = np.trace(moment, axis1=1, axis2=2)
+            size[size == 0.0] = 1.0  # a point has no gradient
+            moment /= size[:, None, None]
+            flat = np.linalg.det(moment) < 1e-12
+            inverse = np.empty_like(moment)
+            inverse[~flat] = np.linalg.inv(moment[~flat])
+            # A shell or a line has no gradient across itself.
+            inverse[flat] = np.linalg.pinv(moment[flat], rcond=1e-9, hermitian=True)
+            inverse /= size[:, None, None]
+            parts.append((np.searchsorted(cells, numbers), nodes, np.matmul(x, inverse)))
+        return Gradients(len(cells), tuple(parts))
+
+    def of(self, values: Numbers) -> Numbers:
+        """(f, c, 3) derivatives along x, y, z of nodal values (n, c)."""
+        out = np.zeros((self.count, values.shape[1], 3), dtype=np.result_type(values, float))
+        for rows, nodes, weights in self.parts:
+            with np.errstate(invalid="ignore"):  # accepted values that are not finite spread
+                v = values[nodes]
+                v = v - v[:, :1]  # a constant has no gradient, to the last digit
+                out[rows] = np.matmul(v.transpose(0, 2, 1), weights)
+        return out
+
+
+def cell_gradients(mesh: Mesh, cells: Ints, values: Numbers) -> Numbers:
+    return Gradients.within(mesh, cells).of(values)
 
 
 def cell_means(mesh: Mesh, cells: Ints, values: Numbers) -> Numbers:

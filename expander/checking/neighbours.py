@@ -9,19 +9,20 @@ left out; faces about parallel to the seam are compared first.
 from __future__ import annotations
 
 from dataclasses import dataclass
+from functools import cached_property
 
 import numpy as np
 from numpy.typing import NDArray
+from scipy.sparse import csr_array
 
-from expander.checking.facets import Facets, facets_of, normals, pairs
+from expander.checking.facets import facets_of, pairs
 from expander.model import Mesh
 from expander.placements import Floats
 from expander.resolve import Numbers
 from expander.topology import Ints, blocks, cells_touching
 
-_REACH = 2  # cells away from the seam that still count as near it
+NEAR = 2  # layers of cells that still count as near the seam
 _PARALLEL = 0.5  # cosine
-_LINEAR = {1: 1, 2: 3, 3: 5, 4: 9}  # VTK type of a facet by its corners; a polygon otherwise
 
 
 @dataclass(frozen=True, eq=False)
@@ -62,80 +63,112 @@ class Surroundings:
         """Rows of these cells, which must be near the seam."""
         return np.searchsorted(self.cells, cells)
 
-    def yardstick(self, per_cell: Numbers, nodes: Ints) -> tuple[Floats, NDArray[np.bool_]]:
-        """Largest jump of a cell quantity near each of `nodes`, (k,), and whether it is sure.
+    def jumps(self, per_cell: Numbers) -> list[Floats]:
+        """Jumps of a cell quantity across each of `faces`.
 
         Parameters
         ----------
         per_cell : (f, c, 3) a quantity of each cell near the seam, to be contracted with the
             normal of the face between two cells: a stress, or the gradient of a field; or (f, c),
             compared as it is.
+        """
+        return [length(per_cell[f.first], per_cell[f.second], f.normals) for f in self.faces]
 
-        Returns
-        -------
+    def yardstick(self, jumps: list[Floats], nodes: Ints) -> tuple[Floats, NDArray[np.bool_]]:
+        """Largest of the `jumps` near each of `nodes`, (k,), and whether it is sure.
+
         NaN where there is no face to compare with. Where the mesh is one cell thick, so that no
         other face is parallel to the seam, faces across it are taken: they say less.
         """
-        jumps = []
-        for face in self.faces:
-            jumps.append(_length(per_cell[face.first], per_cell[face.second], face.normals))
-        found = self._near(jumps, nodes, parallel=True)
+        found = self._near(jumps, nodes, [f.parallel for f in self.faces])
         alone = np.isnan(found)
         if alone.any():  # no layer of cells beside this one: compare along the seam
-            found[alone] = self._near(jumps, nodes[alone], parallel=False)
+            found[alone] = self._near(jumps, nodes[alone], None)
         return found, ~alone
 
+    @cached_property
+    def nodes(self) -> Ints:
+        """The nodes of the cells, ascending."""
+        marked = np.zeros(self.mesh.point_count, dtype=bool)
+        for _, _, block in blocks(self.mesh, self.cells) if len(self.cells) else ():
+            marked[block] = True
+        return np.flatnonzero(marked)
+
+    @cached_property
+    def place(self) -> Ints:
+        """(n,) row of each node of the mesh among `nodes`."""
+        row = np.zeros(self.mesh.point_count, dtype=np.int64)
+        row[self.nodes] = np.arange(len(self.nodes))
+        return row
+
+    @cached_property
+    def incidence(self) -> csr_array:
+        """(f, m) which cell has which of `nodes`."""
+        rows, columns = [], []
+        for _, numbers, block in blocks(self.mesh, self.cells):
+            rows.append(np.repeat(self.rows(numbers), block.shape[1]))
+            columns.append(self.place[block].ravel())
+        row, column = np.concatenate(rows), np.concatenate(columns)
+        ones = np.ones(len(row), dtype=np.float32)
+        return csr_array((ones, (row, column)), shape=(len(self.cells), len(self.nodes)))
+
     def nodal_yardstick(self, nodal: Numbers, per_cell: Numbers, nodes: Ints) -> Floats:
-        """Largest difference of nodal values within a cell near each of `nodes`, (k,).
+        """Largest difference of nodal values within a cell near each of `nodes`, (k,), doubled.
 
         Nodal means at a seam are one-sided, so both sides may differ by as much as the values
         within a cell.
 
         Parameters
         ----------
-        nodal : (n, c, 3), contracted with the seam's normal, or (n, c), at all nodes.
+        nodal : (m, c, 3), contracted with the seam's normal, or (m, c), at `nodes` of the cells.
         per_cell : (f, c, 3) or (f, c) their means over the nodes of each cell.
         """
         value = np.full(self.mesh.point_count, -1.0)
-        for _, numbers, block in blocks(self.mesh, self.cells):
+        for _, numbers, block in blocks(self.mesh, self.cells) if len(self.cells) else ():
             rows = self.rows(numbers)
             most = np.zeros(len(rows))
             for column in block.T:
-                most = np.maximum(most, _length(nodal[column], per_cell[rows], self.towards[rows]))
+                at = nodal[self.place[column]]
+                most = np.maximum(most, length(at, per_cell[rows], self.towards[rows]))
             for column in block.T:
                 np.maximum.at(value, column, 2.0 * most)
         return self._spread(value, nodes)
 
-    def _near(self, jumps: list[Floats], nodes: Ints, parallel: bool) -> Floats:
+    def _near(
+        self, jumps: list[Floats], nodes: Ints, used: list[NDArray[np.bool_]] | None
+    ) -> Floats:
         value = np.full(self.mesh.point_count, -1.0)
-        for face, jump in zip(self.faces, jumps, strict=True):
-            used = face.parallel | (not parallel)
+        for k, (face, jump) in enumerate(zip(self.faces, jumps, strict=True)):
+            taken = slice(None) if used is None else used[k]
             for column in face.corners.T:
-                np.maximum.at(value, column[used], jump[used])
+                np.maximum.at(value, column[taken], jump[taken])
         return self._spread(value, nodes)
 
     def _spread(self, value: Floats, nodes: Ints) -> Floats:
         """The largest value within reach of each of `nodes`; NaN where there is none."""
-        for _ in range(_REACH):
+        for _ in range(NEAR):
             wider = value.copy()
             for _, _, block in blocks(self.mesh, self.cells):
-                most = value[block].max(axis=1)
-                for column in block.T:
+                columns = [np.ascontiguousarray(c) for c in block.T]
+                most = value[columns[0]]
+                for column in columns[1:]:
+                    np.maximum(most, value[column], out=most)
+                for column in columns:
                     np.maximum.at(wider, column, most)
             value = wider
         found = value[nodes]
         return np.where(found < 0.0, np.nan, found)
 
 
-def _length(a: Numbers, b: Numbers, normal: Floats) -> Floats:
+def length(a: Numbers, b: Numbers, normal: Floats) -> Floats:
     """(p,) length of a - b, contracted with the normal (p, 3) where both are (p, c, 3); a value
     that is not finite was accepted and counted, and is no jump."""
     with np.errstate(invalid="ignore", over="ignore"):
         difference = a - b
         if difference.ndim == 3:
             difference = np.einsum("pci,pi->pc", difference, normal)
-        length = np.linalg.norm(difference, axis=1)
-    return np.where(np.isfinite(length), length, 0.0)
+        found = np.linalg.norm(difference, axis=1)
+    return np.where(np.isfinite(found), found, 0.0)
 
 
 def surroundings(mesh: Mesh, nodes: Ints, towards: Floats) -> Surroundings:
@@ -151,26 +184,25 @@ def surroundings(mesh: Mesh, nodes: Ints, towards: Floats) -> Surroundings:
     direction = np.zeros((mesh.point_count, 3))
     direction[nodes] = towards
     cells = np.empty(0, dtype=np.int64)
-    for _ in range(_REACH):
+    for _ in range(NEAR):
         cells = cells_touching(mesh, marked)
         for _, _, block in blocks(mesh, cells) if len(cells) else ():
             marked[block] = True
-            mean = direction[block].sum(axis=1)
-            unset = (direction[block] == 0.0).all(axis=2)
+            mean = _summed(direction, block)
+            unset = np.asarray(~direction.any(axis=1))[block]
             for column in range(block.shape[1]):  # the direction of the nearest seam, cell by cell
                 free = unset[:, column]
                 direction[block[free, column]] += mean[free]
     summed = np.zeros((len(cells), 3))
     for _, numbers, block in blocks(mesh, cells) if len(cells) else ():
-        summed[np.searchsorted(cells, numbers)] = direction[block].sum(axis=1)
-    length = np.linalg.norm(summed, axis=1, keepdims=True)
-    normal_near = summed / np.where(length > 0.0, length, 1.0)
+        summed[np.searchsorted(cells, numbers)] = _summed(direction, block)
+    size = np.linalg.norm(summed, axis=1, keepdims=True)
+    normal_near = summed / np.where(size > 0.0, size, 1.0)
     faces = []
     for shared in pairs(mesh, facets_of(mesh, cells)):
         keep = ~on_seam[shared.corners].all(axis=1)
         first, second, corners = shared.first[keep], shared.second[keep], shared.corners[keep]
-        count = corners.shape[1]
-        normal = normals(mesh, Facets(corners, _LINEAR.get(count, 7), first))
+        normal = shared.normals[keep]
         parallel = _parallel(normal, direction[corners].sum(axis=1))
         faces.append(Between(np.searchsorted(cells, first), np.searchsorted(cells, second), normal,
                              corners, parallel))  # fmt: skip
@@ -178,6 +210,14 @@ def surroundings(mesh: Mesh, nodes: Ints, towards: Floats) -> Surroundings:
 
 
 def _parallel(normal: Floats, towards: Floats) -> NDArray[np.bool_]:
-    length = np.linalg.norm(towards, axis=1)
-    cosine = np.abs(np.einsum("pi,pi->p", normal, towards)) / np.where(length > 0.0, length, 1.0)
+    size = np.linalg.norm(towards, axis=1)
+    cosine = np.abs(np.einsum("pi,pi->p", normal, towards)) / np.where(size > 0.0, size, 1.0)
     return np.asarray(cosine > _PARALLEL)
+
+
+def _summed(values: Floats, block: Ints) -> Floats:
+    """Sum of nodal values over the nodes of each cell, column by column."""
+    total = values[block[:, 0]]
+    for column in block.T[1:]:
+        total += values[column]
+    return total

@@ -22,14 +22,15 @@ from expander.checking.facets import (
     unit_rows,
 )
 from expander.checking.feet import FACING, Opposite, interpolate, opposite
-from expander.checking.roughness import roughness
+from expander.checking.roughness import roughness, surface_slopes
 from expander.model import Mesh
 from expander.placements import Floats, Placement
 from expander.topology import Ints
 
 __all__ = ["Against", "Opposite", "Side", "classify", "error_bound", "interpolate", "opposite"]
 
-_BESIDE = 0.25  # of a facet's radius: a foot farther aside than this is beside the other surface
+# Of a facet's inner radius: a foot farther aside than this is beside the other surface.
+_BESIDE = 0.25
 
 
 def error_bound(
@@ -45,7 +46,13 @@ def error_bound(
     values : (n, c) nodal values; components are taken together by their root of squares.
     """
     estimate = np.concatenate([np.zeros(0), roughness(mesh, facets, values), [np.nan]])
-    return estimate[opposite.facet]
+    # Beside the facet the value goes on with its slope, which the foot on the rim does not know.
+    slopes = surface_slopes(mesh, facets, values)
+    aside = np.zeros(len(opposite.facet))
+    there = np.flatnonzero(opposite.found)
+    change = np.einsum("kci,ki->kc", slopes[opposite.facet[there]], opposite.offset[there])
+    aside[there] = np.linalg.norm(change, axis=1)
+    return np.asarray(estimate[opposite.facet] + aside)
 
 
 @dataclass(frozen=True, eq=False)
@@ -226,6 +233,20 @@ def _matched(
     return there[met], np.unique(here[met])
 
 
+def _inner_radius(corners: Floats) -> Floats:
+    """(f,) distance from the centre to the nearest side, corners (f, c, 3) relative to it.
+
+    Not the distance to the corners: a slender facet would reach over to what lies beside it.
+    """
+    if corners.shape[1] < 3:
+        return np.asarray(np.linalg.norm(corners, axis=2).min(axis=1))
+    after = np.roll(corners, -1, axis=1)
+    length = np.linalg.norm(after - corners, axis=2)
+    twice_area = np.linalg.norm(np.cross(corners, after), axis=2)
+    away = np.divide(twice_area, length, out=np.full_like(length, np.inf), where=length > 0.0)
+    return np.asarray(away.min(axis=1))
+
+
 def _side(
     mesh: Mesh,
     surface: _Surface,
@@ -244,7 +265,7 @@ def _side(
         nodes = f.nodes[rows, : f.corners]
         p = mesh.points[nodes].astype(float)
         centre = p.mean(axis=1)
-        aside = _BESIDE * np.linalg.norm(p - centre[:, None], axis=2).max(axis=1, initial=0.0)
+        aside = _BESIDE * _inner_radius(p - centre[:, None])
         rows += start
         start += len(f)
         out = surface.out[rows]

@@ -69,6 +69,17 @@ def roughness(mesh: Mesh, facets: list[Facets], values: NDArray[np.inexact]) -> 
     return np.asarray(worst * factor)
 
 
+def surface_slopes(mesh: Mesh, facets: list[Facets], values: NDArray[np.inexact]) -> Floats:
+    """Mean slope of nodal values (n, c) along each facet, (f, c, 3), counted through the blocks."""
+    found = [np.zeros((0, values.shape[1], 3), dtype=np.result_type(values, float))]
+    for f in facets:
+        if f.dimension == 0:
+            found.append(np.zeros((len(f), values.shape[1], 3)))
+        else:
+            found.append(_Fit(mesh, f).slope(values[f.nodes[:, : f.corners]]))
+    return np.concatenate(found)
+
+
 def _largest(
     worst: Floats, i: Ints, j: Ints, values: NDArray[np.inexact], skip: NDArray[np.bool_]
 ) -> None:

@@ -34,6 +34,7 @@ from expander.seams import OF_EDGE, Tolerance
 from expander.sector import Sector
 from expander.topology import Ints, cell_sizes, cells_touching, local_edges
 
+_SAMPLE = 2_000  # faces are enough to tell their usual size
 REACH = 1.0  # edges: faces that lie farther apart are not opposite each other
 
 
@@ -147,14 +148,16 @@ def seams_of(sector: Sector) -> list[Seam]:
     group, mesh, found = sector.group, sector.mesh, sector.seams
     classes = found.nodes
     mirrors = {g for g, _, _ in group.mirrors}
+    neighbours = _neighbours(group) | {min(g, int(group.inverse[g])) for g, _ in found.unmatched}
     present = set(np.unique(classes.via).tolist()) - {0}
     candidates = sorted({min(g, int(group.inverse[g])) for g in present}
-                        | {min(g, int(group.inverse[g])) for g, _ in found.unmatched}
-                        | _neighbours(group))  # fmt: skip
+                        | neighbours)  # fmt: skip
     seams, primary = [], set()
     for g in candidates:
         rows = classes.via == g
-        seam = _face_seam(sector, g, classes.item[rows], classes.source[rows], g in mirrors)
+        # Faces of other copies may come near along a line or an axis, without lying opposite.
+        seam = _face_seam(sector, g, classes.item[rows], classes.source[rows], g in mirrors,
+                          g in neighbours)  # fmt: skip
         if seam is not None:
             seams.append(seam)
             primary |= {g, int(group.inverse[g])}
@@ -175,28 +178,29 @@ def _neighbours(group: Group) -> set[int]:
     return {min(1, group.axis.sectors - 1)}
 
 
-def _face_seam(sector: Sector, g: int, i: Ints, j: Ints, mirror: bool) -> Seam | None:
-    """The seam towards the copy `g`, or None if no face meets or comes near."""
+def _face_seam(sector: Sector, g: int, i: Ints, j: Ints, mirror: bool, near: bool) -> Seam | None:
+    """The seam towards the copy `g`, or None if no face meets or, if `near`, comes near."""
     group, mesh = sector.group, sector.mesh
     name, plane = _name(group, g)
-    faces = tuple(_meeting(mesh, group, g, i, j))
+    outer = outer_facets(mesh) if near and not mirror else None
+    faces = tuple(_meeting(mesh, group, g, i, j, outer))
     paired = _Rows(i, np.full(len(i), g), j[:, None], np.ones((len(i), 1)),
                    _distance(mesh, group, g, i, j))  # fmt: skip
     rows, against, found = [paired], None, []
-    if not mirror:
-        against, reach = _against(sector, g, i, j, faces)
+    if outer is not None:
+        against, reach = _against(sector, g, i, j, faces, outer)
         for s, nodes, opposing, taken in (
             (g, against.nodes_here, against.facets_there, i),
             (int(group.inverse[g]), against.nodes_there, against.facets_here, j),
         ):
             nodes = np.setdiff1d(nodes, taken)
-            opposed = opposite(mesh.points[nodes].astype(float), mesh, opposing,
+            beyond = opposite(mesh.points[nodes].astype(float), mesh, opposing,
                                group.placements[s], reach)  # fmt: skip
             start = sum(len(r.nodes) for r in rows)
-            keep = opposed.found
-            rows.append(_Rows(nodes[keep], np.full(int(keep.sum()), s), opposed.partners[keep],
-                              opposed.weights[keep], opposed.gap[keep]))  # fmt: skip
-            found.append(Interpolated(start, np.flatnonzero(keep), opposing, opposed))
+            keep = beyond.found
+            rows.append(_Rows(nodes[keep], np.full(int(keep.sum()), s), beyond.partners[keep],
+                              beyond.weights[keep], beyond.gap[keep]))  # fmt: skip
+            found.append(Interpolated(start, np.flatnonzero(keep), opposing, beyond))
     if not faces and (
         against is None or not (against.here.against.size or against.here.apart.size)
     ):
@@ -256,8 +260,15 @@ def _name(group: Group, g: int) -> tuple[str, str | None]:
     return f"towards the copy {group.words(g)}", None
 
 
-def _meeting(mesh: Mesh, group: Group, g: int, i: Ints, j: Ints) -> list[FacePair]:
-    """Faces all of whose corners lie on the seam, with those whose images they meet."""
+def _meeting(
+    mesh: Mesh, group: Group, g: int, i: Ints, j: Ints, outer: list[Facets] | None
+) -> list[FacePair]:
+    """Faces all of whose corners lie on the seam, with those whose images they meet.
+
+    Parameters
+    ----------
+    outer : all outer facets of the mesh, where they are known.
+    """
     partner = np.full(mesh.point_count, -1, dtype=np.int64)
     partner[i] = j
     marked = np.zeros(mesh.point_count, dtype=bool)
@@ -265,10 +276,11 @@ def _meeting(mesh: Mesh, group: Group, g: int, i: Ints, j: Ints) -> list[FacePai
     near = cells_touching(mesh, marked)
     # A cell that lies in the seam altogether, as a web in a cut plane, has no face across it.
     inside = np.logical_and.reduceat(marked[_connectivity(mesh, near)], _starts(mesh, near))
-    facets = outer_facets(mesh, near[~inside]) if len(near) else []
+    if outer is None or inside.any():
+        outer = outer_facets(mesh, near[~inside]) if len(near) else []
     token = tokens(mesh.point_count)
     found = []
-    for f in facets:
+    for f in outer:
         corners = f.nodes[:, : f.corners]
         on = marked[corners].all(axis=1)
         f, corners = Facets(f.nodes[on], f.vtk_type, f.cells[on]), corners[on]
@@ -316,15 +328,19 @@ def _at_nodes(mesh: Mesh, faces: tuple[FacePair, ...], nodes: Ints) -> tuple[Flo
 
 
 def _against(
-    sector: Sector, g: int, i: Ints, j: Ints, faces: tuple[FacePair, ...]
+    sector: Sector,
+    g: int,
+    i: Ints,
+    j: Ints,
+    faces: tuple[FacePair, ...],
+    outer: list[Facets],
 ) -> tuple[Against, float]:
     """How the faces of turned neighbours meet, where nodes do not pair; and how far was looked."""
     mesh, placement = sector.mesh, sector.group.placements[g]
     partner = np.full(mesh.point_count, -1, dtype=np.int64)
     partner[j] = i
-    outer = outer_facets(mesh)
-    corners = [f.nodes[:, : f.corners].ravel() for f in outer]
-    edge = local_edges(mesh, np.unique(np.concatenate(corners))) if corners else np.ones(1)
+    sample = [f.nodes[:: max(1, len(f) // _SAMPLE), 0] for f in outer]
+    edge = local_edges(mesh, np.concatenate(sample)) if sample else np.ones(1)
     usual = float(np.median(edge[np.isfinite(edge)])) if np.isfinite(edge).any() else mesh.size
     tolerance = Tolerance(mesh, sector.case.seam.tolerance)
     touching = max(OF_EDGE * usual, tolerance.spacing, tolerance.given or 0.0)

@@ -20,8 +20,9 @@ import numpy as np
 from numpy.typing import NDArray
 
 from expander.behaviours import Factors
-from expander.checking.gradients import cell_gradients, cell_means
+from expander.checking.gradients import Gradients, cell_means
 from expander.checking.jumps import Jump, carried, quantity_of
+from expander.checking.leaveout import standing_out, without_cells, without_nodes
 from expander.checking.neighbours import Surroundings, surroundings
 from expander.checking.seamlist import Seam
 from expander.checking.verdicts import CLOSED, DOUBTFUL, OPEN, Verdict, verdict_of
@@ -70,6 +71,10 @@ class Near:
         return surroundings(self.mesh, np.concatenate(nodes), np.concatenate(directions))
 
     @cached_property
+    def gradients(self) -> Gradients:
+        return Gradients.within(self.mesh, self.around.cells)
+
+    @cached_property
     def by_face(self) -> Seam:
         """The seam with a row for each pair of faces, which its first corner stands for."""
         faces = self.seam.faces
@@ -93,15 +98,43 @@ class Near:
         """(f,) the cell whose image lies on the other side."""
         return self.around.rows(_joined([f.across for f in self.seam.faces], np.int64))
 
-    def face_yardstick(self, per_cell: Numbers) -> tuple[Floats, NDArray[np.bool_]]:
-        """(f,) yardstick of each face, the largest of its corners', and whether it is sure."""
-        found: list[Floats] = []
-        sure: list[NDArray[np.bool_]] = []
-        for f in self.seam.faces:
-            at, known = self.around.yardstick(per_cell, f.corners.ravel())
-            found.append(at.reshape(f.corners.shape).max(axis=1))
-            sure.append(np.asarray(known.reshape(f.corners.shape).any(axis=1)))
-        return _joined(found, np.float64), _joined(sure, np.bool_)
+    @cached_property
+    def corners(self) -> Ints:
+        """(f, c) corners of the faces, the first repeated where a face has fewer."""
+        faces = [f.corners for f in self.seam.faces]
+        wide = max((c.shape[1] for c in faces), default=1)
+        filled = [c[:, [*range(c.shape[1]), *(0,) * (wide - c.shape[1])]] for c in faces]
+        return _joined(filled, np.int64).reshape(-1, wide)
+
+    @cached_property
+    def nodes_by_face(self) -> tuple[Ints, Ints]:
+        """Pairs of a row of the seam and a face that its node is a corner of, (e,) each."""
+        row = np.full(self.mesh.point_count, -1, dtype=np.int64)
+        row[self.seam.nodes[::-1]] = np.arange(len(self.seam.nodes))[::-1]
+        at = row[self.corners].ravel()
+        face = np.repeat(np.arange(len(self.corners)), self.corners.shape[1])
+        return at[at >= 0], face[at >= 0]
+
+    def face_yardstick(
+        self, per_cell: Numbers, lengths: Floats
+    ) -> tuple[Floats, NDArray[np.bool_]]:
+        """(f,) yardstick of each face, the largest of its corners', and whether it is sure.
+
+        Parameters
+        ----------
+        lengths : (f,) the jumps; those that stand out are measured without their own cells.
+        """
+        jumps, corners = self.around.jumps(per_cell), self.corners
+        at, known = self.around.yardstick(jumps, corners.ravel())
+        found = np.fmax.reduce(at.reshape(corners.shape), axis=1)
+        sure = known.reshape(corners.shape).any(axis=1)
+        each = np.repeat(np.arange(len(corners)), corners.shape[1])
+        rows = standing_out(lengths, each, corners.ravel())
+        if len(rows):
+            own = np.stack([self.here[rows], self.across[rows]], axis=1)
+            again = without_cells(self.around, jumps, corners[rows], own)
+            found[rows] = np.fmin(found[rows], again)
+        return found, np.asarray(sure)
 
 
 def _joined(parts: list[NDArray[Any]], kind: type) -> NDArray[Any]:
@@ -120,7 +153,7 @@ def kink(
     """
     if not near.seam.faces:
         return None
-    gradients = cell_gradients(near.mesh, near.around.cells, _turned(near.mesh, field, values))
+    gradients = near.gradients.of(_turned(near.mesh, field, values))
     scale = largest_value(gradients.reshape(len(gradients), -1))
     q = quantity_of(field)
     return _at_faces(near, field, case, gradients, q, chi, scale, "kink", limit)
@@ -144,6 +177,7 @@ def recovered(
         return _at_faces(near, field, case, full(field, own), q, chi, scale, measure, limit)
     nodal = _turned(mesh, field, values)
     per_cell = full(field, cell_means(mesh, cells, nodal))
+    beside = full(field, nodal[near.around.nodes])
     seam = near.seam
     here = full(field, nodal[seam.nodes])
     there = np.zeros_like(here)
@@ -151,7 +185,12 @@ def recovered(
         weight = seam.weights[:, m].reshape(-1, *(1,) * (here.ndim - 1))
         there += weight * full(field, nodal[seam.partners[:, m]])
     jump = _contracted(near.group, seam, field, case, here, there, q, chi)
-    yardstick = near.around.nodal_yardstick(full(field, nodal), per_cell, seam.nodes)
+    around = near.around
+    yardstick = around.nodal_yardstick(beside, per_cell, seam.nodes)
+    rows = standing_out(jump.lengths, *near.nodes_by_face)
+    if len(rows):
+        own = np.concatenate([seam.nodes[rows, None], seam.partners[rows]], axis=1)
+        yardstick[rows] = np.fmin(yardstick[rows], without_nodes(around, beside, own))
     return judged(jump, mesh.points, yardstick, scale, measure, limit)
 
 
@@ -178,7 +217,7 @@ def _at_faces(
     seam = near.by_face
     jump = _contracted(near.group, seam, field, case, per_cell[near.here], per_cell[near.across],
                        q, chi)  # fmt: skip
-    yardstick, sure = near.face_yardstick(per_cell)
+    yardstick, sure = near.face_yardstick(per_cell, jump.lengths)
     return judged(jump, near.mesh.points, yardstick, scale, measure, limit, sure)
 
 
@@ -219,15 +258,17 @@ def judged(
     yardstick : (k,) largest jump between neighbouring cells near each row; NaN if unknown.
     scale : the largest value over the body.
     limit : how many times the yardstick counts as closed.
-    sure : (k,) whether more than that is open, and not only doubtful; all if None.
+    sure : (k,) whether more than that is open, and not only doubtful; None for nodal values.
     """
     lengths = jump.lengths
     known = np.isfinite(yardstick)
     least = max(SMALL * scale, np.finfo(float).tiny)
     times = np.where(known, lengths / np.maximum(np.nan_to_num(yardstick), least), 0.0)
     unknown = ~known & (lengths > limit * least)
+    size = np.linalg.norm(np.maximum(yardstick[known], least))
+    typical = float(np.linalg.norm(lengths[known]) / size) if 0.0 < size < np.inf else 0.0
     worst = int(np.argmax(times)) if times.max(initial=0.0) > 0.0 else None
-    ratio = _ratio(jump, scale)
+    ratio = _ratio(jump, scale) if sure is None else None  # cells beside a seam differ by right
     result, words = CLOSED, ""
     beyond = times > limit
     if (beyond if sure is None else beyond & sure).any():
@@ -240,7 +281,7 @@ def judged(
         result, words = DOUBTFUL, "there are no neighbouring cells to compare with"
     return verdict_of(
         jump, points, scale, limit, measure, result, times > limit, worst, words=words,
-        times=float(times.max(initial=0.0)),
+        times=float(times.max(initial=0.0)), typical=typical,
     )  # fmt: skip
 
 
@@ -259,7 +300,10 @@ def _ratio(jump: Jump, scale: float) -> complex | None:
         return None  # both are as good as nothing
     a = complex(np.vdot(own, other)) / size
     rest = float(np.linalg.norm(other - a * own)) / np.sqrt(size)
-    return a if abs(a - 1.0) > RATIO and rest < EXACT * abs(a - 1.0) else None
+    # Of a wave the mean of the cells on one side is ahead of that on the other, by the same phase
+    # everywhere: only the magnitude tells.
+    off = abs(abs(a) - 1.0)
+    return a if off > RATIO and rest < EXACT * off else None
 
 
 def _number(value: complex) -> str:

@@ -57,6 +57,7 @@ class Verdict:
     other: tuple[complex, ...]
     words: str = ""
     times: float | None = None
+    typical: float | None = None
     open_nodes: int = 0
     worst_nodes: tuple[int, ...] = ()
 

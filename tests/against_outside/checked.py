@@ -61,13 +61,7 @@ class Found:
 
     @property
     def loads(self) -> list[dict[str, Any]]:
-        return self.facts["loads"]
-
-    @property
-    def wrong_loads(self) -> list[dict[str, Any]]:
-        """Loads that are not closed, the worst first."""
-        return sorted((f for f in self.loads if f["verdict"] != "closed"),
-                      key=lambda f: -f["residual"])  # fmt: skip
+        return list(self.facts["loads"])
 
     def load(self, seam: str) -> dict[str, Any]:
         """What was found of the load on the seam whose name contains the word."""
@@ -106,8 +100,8 @@ class Found:
         return self.says()
 
 
-def found_in(case: Path, **options: bool) -> Found:
-    return Found(check(case, **options))
+def found_in(case: Path) -> Found:
+    return Found(check(case))
 
 
 @dataclass(frozen=True)
@@ -180,11 +174,11 @@ def with_mirror(model: Model, number: int, **words: object) -> Model:
 
 def skewed(points: ArrayLike) -> Floats:
     """Points moved to a system aligned with nothing, off the origin."""
-    return np.asarray(points) @ SKEW.T + SHIFT
+    return np.asarray(np.asarray(points) @ SKEW.T + SHIFT)
 
 
 def in_skew(mesh: Mesh) -> Mesh:
-    return mesh.mapped(lambda *x: skewed(np.stack(x, axis=1)).T)
+    return mesh.mapped(lambda *x: list(skewed(np.stack(x, axis=1)).T))
 
 
 def sides(mesh: Mesh, normal: ArrayLike, point: ArrayLike = (0.0, 0.0, 0.0)) -> Ints:

@@ -1,0 +1,1 @@
+"""Waves around the body: load behaviours as sums over nodal diameters, and what excites them."""
