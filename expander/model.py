@@ -37,6 +37,16 @@ class Mesh:
         return len(self.types)
 
     @cached_property
+    def uniform(self) -> tuple[int, int] | None:
+        """Type and number of nodes of every cell, if they all have the same."""
+        if not len(self.types):
+            return None
+        size = int(self.offsets[1] - self.offsets[0])
+        if not (self.types == self.types[0]).all() or not (np.diff(self.offsets) == size).all():
+            return None
+        return int(self.types[0]), size
+
+    @cached_property
     def bounds(self) -> NDArray[np.float64]:
         """Lowest and highest coordinates, (2, 3)."""
         columns = self.points.T  # column by column: numpy reduces rows of three slowly

@@ -7,6 +7,7 @@ from __future__ import annotations
 
 from collections.abc import Iterator
 from dataclasses import dataclass
+from weakref import WeakKeyDictionary
 
 import numpy as np
 from numpy.typing import NDArray
@@ -31,20 +32,25 @@ def cell_centres(mesh: Mesh) -> Floats:
 
 def blocks(mesh: Mesh, cells: Ints | None = None) -> Iterator[tuple[int, Ints, Ints]]:
     """Cells of one type and size at a time: type, cell numbers (k,), nodes (k, size)."""
+    if mesh.uniform is not None:  # the usual case, no sorting
+        vtk_id, size = mesh.uniform
+        nodes = mesh.connectivity.reshape(-1, size)
+        if cells is None:
+            yield vtk_id, np.arange(mesh.cell_count), nodes
+        elif len(cells):
+            yield vtk_id, cells, nodes[cells]
+        return
     types = mesh.types if cells is None else mesh.types[cells]
     sizes = cell_sizes(mesh) if cells is None else cell_sizes(mesh)[cells]
     if len(types) and (types == types[0]).all() and (sizes == sizes[0]).all():
-        keys, which = np.array([types[0] + 256 * sizes[0]]), None  # the usual case, no sorting
+        keys, which = np.array([types[0] + 256 * sizes[0]]), None  # of a part of the mesh
     else:
         keys, which = np.unique(types.astype(np.int64) + 256 * sizes, return_inverse=True)
     for number, key in enumerate(keys.tolist()):
         picked = np.arange(len(types)) if which is None else np.flatnonzero(which == number)
         numbers = picked if cells is None else cells[picked]
         vtk_id, size = key % 256, key // 256
-        if which is None and cells is None:
-            nodes = mesh.connectivity.reshape(-1, size)
-        else:
-            nodes = mesh.connectivity[mesh.offsets[numbers][:, None] + np.arange(size)]
+        nodes = mesh.connectivity[mesh.offsets[numbers][:, None] + np.arange(size)]
         yield vtk_id, numbers, nodes
 
 
@@ -63,7 +69,10 @@ def cells_touching(mesh: Mesh, marked: NDArray[np.bool_]) -> Ints:
     if not hit.any():
         return np.empty(0, dtype=np.int64)
     positions = np.flatnonzero(hit)
-    cells = np.searchsorted(mesh.offsets, positions, side="right") - 1  # ascending
+    if mesh.uniform is not None:
+        cells = positions // mesh.uniform[1]
+    else:
+        cells = np.searchsorted(mesh.offsets, positions, side="right") - 1  # ascending
     return np.asarray(cells[np.concatenate([[True], cells[1:] != cells[:-1]])])
 
 
@@ -92,12 +101,13 @@ class FreeFaces:
 
     Attributes
     ----------
-    cells : (k, size) nodes of the cells.
+    cells : (k, size) nodes of the cells. numbers : (k,) of the cells.
     face : columns of the corners of the face. on_face : columns of all its nodes.
     corners : number of corners of the cell.
     """
 
     cells: Ints
+    numbers: Ints
     face: tuple[int, ...]
     on_face: tuple[int, ...]
     corners: int
@@ -108,11 +118,21 @@ def free_faces(mesh: Mesh) -> list[FreeFaces]:
 
     A face is known by the sum of random numbers given to its corners: one sort of 64-bit keys,
     instead of sorting rows of node numbers. Two different faces share a key with a probability
-    of about (number of faces)^2 / 2^64.
+    of about (number of faces)^2 / 2^64. The last answers are kept while their mesh is.
     """
+    known = _FREE.get(mesh)
+    if known is None:
+        known = _FREE[mesh] = _free_faces(mesh)
+    return known
+
+
+_FREE: WeakKeyDictionary[Mesh, list[FreeFaces]] = WeakKeyDictionary()
+
+
+def _free_faces(mesh: Mesh) -> list[FreeFaces]:
     token = _tokens(mesh)
     lots, keys = [], []
-    for vtk_id, _, nodes in blocks(mesh):
+    for vtk_id, numbers, nodes in blocks(mesh):
         kind = CELL_TYPES.get(vtk_id)
         if kind is None or kind.dimension < 3:
             continue
@@ -124,17 +144,18 @@ def free_faces(mesh: Mesh) -> list[FreeFaces]:
                 key += column[c]
             keys.append(key)
             on_face = tuple(i for i, c in enumerate(kind.nodes) if set(c) <= set(face))
-            lots.append((nodes, tuple(face), on_face, corners))
+            lots.append((nodes, numbers, tuple(face), on_face, corners))
     if not keys:
         return []
     ranked = np.sort(np.concatenate(keys))
     new = np.concatenate([[True], ranked[1:] != ranked[:-1], [True]])
     single = ranked[new[1:] & new[:-1]]
     del ranked, new
-    return [
-        FreeFaces(nodes[among(key, single)], face, on_face, corners)
-        for (nodes, face, on_face, corners), key in zip(lots, keys, strict=True)
-    ]
+    found = []
+    for (nodes, numbers, face, on_face, corners), key in zip(lots, keys, strict=True):
+        free = np.flatnonzero(among(key, single))
+        found.append(FreeFaces(nodes[free], numbers[free], face, on_face, corners))
+    return found
 
 
 def among(keys: NDArray[np.uint64], some: NDArray[np.uint64]) -> NDArray[np.bool_]:

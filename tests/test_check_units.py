@@ -65,7 +65,7 @@ def sector_of(
     allow_nan: bool = False,
 ) -> Read:
     case = case_of(folder, sector, tables, points, cells)
-    return read_sector(case, allow_nan=allow_nan, complex_results=True)
+    return read_sector(case, allow_nan=allow_nan)
 
 
 def seen(*arguments: Any, **more: Any) -> Continuity:

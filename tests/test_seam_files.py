@@ -35,7 +35,7 @@ def checked(
 ) -> Continuity:
     """The seams of a case on this sector."""
     case = case_of(folder, sector, {"model": {"linear": True}, **tables}, point_data)
-    return continuity(read_sector(case, complex_results=True))
+    return continuity(read_sector(case))
 
 
 def plate(nx: int = 10, ny: int = 4, hole: tuple[int, ...] = (), bend: float = 0.0) -> Sector:
@@ -270,7 +270,7 @@ def test_values_that_are_not_numbers_have_no_jump(tmp_path: Path) -> None:
     u[bad, 0] = np.nan
     case = case_of(tmp_path, sector, {"model": {"linear": True}, "mirror": [FOOT]},
                    {"displacement": u})  # fmt: skip
-    read = read_sector(case, allow_nan=True, complex_results=True)
+    read = read_sector(case, allow_nan=True)
     only = CaseContinuity(read.cases[0], read.cases[0].chi, "", (), ())
     made = Continuity(read, tuple(seams_of(read)), (only,))
     with NewFiles() as files:

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
 from dataclasses import dataclass, replace
 
 import numpy as np
@@ -84,29 +83,35 @@ def _numeric(f: Field) -> bool:
 
 
 def _verdicts(
-    sector: Sector, near: Near, case: LoadCase, chi: Factors, values: dict[str, Numbers]
-) -> Iterator[Verdict]:
+    sector: Sector,
+    near: Near,
+    case: LoadCase,
+    chi: Factors,
+    values: dict[str, Numbers],
+) -> list[Verdict]:
+    """All fields at one seam, in their order."""
+    if not near.seam.touches:
+        return []
+    there = [f for f in sector.fields if f.name in values]
+    return [v for f in there for v in _of_field(sector, near, case, chi, f, values[f.name])]
+
+
+def _of_field(
+    sector: Sector, near: Near, case: LoadCase, chi: Factors, f: Field, here: Numbers
+) -> list[Verdict]:
     mesh, group, seam = sector.mesh, sector.group, near.seam
     limit, scatter = sector.case.seam.limit, sector.case.seam.scatter
-    if not seam.touches:
-        return
-    for f in sector.fields:
-        if f.name not in values:
-            continue
-        here = values[f.name]
-        if f.on == "points" and f.seam in ("agree", "lowest copy"):
-            jump = jump_at(mesh, group, seam, f, case, here, chi)
-            yield value_verdict(jump, mesh.points, scale_of(f, case, sector.cases), limit)
-            if primary(f):
-                slope = kink(near, f, case, here, chi, scatter)
-                if slope is not None:
-                    yield slope
-        elif f.on == "points" and f.seam == "sum":
-            continue  # shares of both sides add up; the audit looks at their totals
-        elif f.follows == "load" and np.issubdtype(here.dtype, np.inexact):
-            found = recovered(near, f, case, here, chi, scatter)
-            if found is not None:
-                yield found
+    if f.on == "points" and f.seam in ("agree", "lowest copy"):
+        jump = jump_at(mesh, group, seam, f, case, here, chi)
+        found = [value_verdict(jump, mesh.points, scale_of(f, case, sector.cases), limit)]
+        slope = kink(near, f, case, here, chi, scatter) if primary(f) else None
+        return found + ([slope] if slope is not None else [])
+    if f.on == "points" and f.seam == "sum":
+        return []  # shares of both sides add up; the audit looks at their totals
+    if f.follows == "load" and np.issubdtype(here.dtype, np.inexact):
+        judged = recovered(near, f, case, here, chi, scatter)
+        return [judged] if judged is not None else []
+    return []
 
 
 def value_verdict(jump: Jump, points: np.ndarray, scale: float, limit: float) -> Verdict:

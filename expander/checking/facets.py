@@ -37,7 +37,7 @@ from expander.checking.reference import (
 )
 from expander.model import Mesh
 from expander.placements import Floats
-from expander.topology import Ints, blocks
+from expander.topology import Ints, blocks, free_faces
 
 
 @dataclass(frozen=True, eq=False)
@@ -186,12 +186,31 @@ def facets_of(mesh: Mesh, cells: Ints | None = None) -> list[Facets]:
     return _joined([(rule, lot.nodes, lot.cells) for lot in lots for rule in lot.rules])
 
 
+def _of_like_solids(mesh: Mesh) -> list[Facets] | None:
+    """The outer facets of a mesh of one type of solids, none of them collapsed: its free faces."""
+    if mesh.uniform is None or mesh.uniform[0] not in CELL_TYPES:
+        return None
+    vtk_type, size = mesh.uniform
+    rules = facet_rules(vtk_type, size)
+    nodes = mesh.connectivity.reshape(-1, size)
+    if CELL_TYPES[vtk_type].dimension < 3 or any(
+        (nodes[:, a] == nodes[:, b]).any() for a, b in CELL_TYPES[vtk_type].shape.edges
+    ):
+        return None
+    by_corners = {frozenset(rule.cycle): rule for rule in rules}
+    return _joined([(by_corners[frozenset(f.face)], f.cells, f.numbers) for f in free_faces(mesh)])
+
+
 def outer_facets(mesh: Mesh, cells: Ints | None = None) -> list[Facets]:
     """Facets of the given `cells` (all cells if None) that belong to one cell only, by type.
 
     A facet whose corners all belong to cells of a higher dimension is not an outer one: the edge
     of a shell that stands on a solid is joined to it, and so is the end of a beam on a shell.
     """
+    if cells is None:
+        of_solids = _of_like_solids(mesh)
+        if of_solids is not None:
+            return of_solids
     token = tokens(mesh.point_count)
     lots = list(_lots(mesh, cells))
     covered = np.zeros(mesh.point_count, dtype=bool)

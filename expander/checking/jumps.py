@@ -56,7 +56,8 @@ class Jump:
     @cached_property
     def lengths(self) -> Floats:
         """(k,) length of the jump over all components."""
-        return np.asarray(np.linalg.norm(self.difference, axis=1))
+        d = self.difference
+        return np.asarray(np.sqrt(np.einsum("kc,kc->k", d, d.conj()).real))
 
     @property
     def components(self) -> tuple[str, ...]:

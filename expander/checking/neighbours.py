@@ -102,15 +102,34 @@ class Surroundings:
         return row
 
     @cached_property
+    def cell_blocks(self) -> tuple[tuple[Ints, Ints], ...]:
+        """Cells of one type at a time: their rows (k,) and, for each of their nodes, a row of
+        `nodes`, (size, k)."""
+        if not len(self.cells):
+            return ()
+        return tuple(
+            (self.rows(numbers), np.ascontiguousarray(self.place[block].T))
+            for _, numbers, block in blocks(self.mesh, self.cells)
+        )
+
+    @cached_property
     def incidence(self) -> csr_array:
         """(f, m) which cell has which of `nodes`."""
-        rows, columns = [], []
-        for _, numbers, block in blocks(self.mesh, self.cells):
-            rows.append(np.repeat(self.rows(numbers), block.shape[1]))
-            columns.append(self.place[block].ravel())
+        rows = [np.tile(rows, len(columns)) for rows, columns in self.cell_blocks]
+        columns = [columns.ravel() for _, columns in self.cell_blocks]
         row, column = np.concatenate(rows), np.concatenate(columns)
         ones = np.ones(len(row), dtype=np.float32)
         return csr_array((ones, (row, column)), shape=(len(self.cells), len(self.nodes)))
+
+    def means(self, nodal: Numbers) -> Numbers:
+        """Mean over the nodes of each cell, (f, ..), of values at `nodes`, (m, ..)."""
+        out = np.zeros((len(self.cells), *nodal.shape[1:]), dtype=np.result_type(nodal, float))
+        for rows, columns in self.cell_blocks:
+            with np.errstate(invalid="ignore"):
+                for column in columns:
+                    out[rows] += nodal[column]
+                out[rows] /= len(columns)
+        return out
 
     def nodal_yardstick(self, nodal: Numbers, per_cell: Numbers, nodes: Ints) -> Floats:
         """Largest difference of nodal values within a cell near each of `nodes`, (k,), doubled.
@@ -123,40 +142,38 @@ class Surroundings:
         nodal : (m, c, 3), contracted with the seam's normal, or (m, c), at `nodes` of the cells.
         per_cell : (f, c, 3) or (f, c) their means over the nodes of each cell.
         """
-        value = np.full(self.mesh.point_count, -1.0)
-        for _, numbers, block in blocks(self.mesh, self.cells) if len(self.cells) else ():
-            rows = self.rows(numbers)
+        value = np.full(len(self.nodes), -1.0)
+        for rows, columns in self.cell_blocks:
+            means, towards = per_cell[rows], self.towards[rows]
             most = np.zeros(len(rows))
-            for column in block.T:
-                at = nodal[self.place[column]]
-                most = np.maximum(most, length(at, per_cell[rows], self.towards[rows]))
-            for column in block.T:
+            for column in columns:
+                most = np.maximum(most, length(nodal[column], means, towards))
+            for column in columns:
                 np.maximum.at(value, column, 2.0 * most)
         return self._spread(value, nodes)
 
     def _near(
         self, jumps: list[Floats], nodes: Ints, used: list[NDArray[np.bool_]] | None
     ) -> Floats:
-        value = np.full(self.mesh.point_count, -1.0)
+        value = np.full(len(self.nodes), -1.0)
         for k, (face, jump) in enumerate(zip(self.faces, jumps, strict=True)):
             taken = slice(None) if used is None else used[k]
-            for column in face.corners.T:
-                np.maximum.at(value, column[taken], jump[taken])
+            for column in self.place[face.corners[taken].T]:
+                np.maximum.at(value, column, jump[taken])
         return self._spread(value, nodes)
 
     def _spread(self, value: Floats, nodes: Ints) -> Floats:
         """The largest value within reach of each of `nodes`; NaN where there is none."""
         for _ in range(NEAR):
             wider = value.copy()
-            for _, _, block in blocks(self.mesh, self.cells):
-                columns = [np.ascontiguousarray(c) for c in block.T]
+            for _, columns in self.cell_blocks:
                 most = value[columns[0]]
                 for column in columns[1:]:
                     np.maximum(most, value[column], out=most)
                 for column in columns:
                     np.maximum.at(wider, column, most)
             value = wider
-        found = value[nodes]
+        found = value[self.place[nodes]]
         return np.where(found < 0.0, np.nan, found)
 
 
@@ -167,7 +184,7 @@ def length(a: Numbers, b: Numbers, normal: Floats) -> Floats:
         difference = a - b
         if difference.ndim == 3:
             difference = np.einsum("pci,pi->pc", difference, normal)
-        found = np.linalg.norm(difference, axis=1)
+        found = np.sqrt(np.einsum("pc,pc->p", difference, difference.conj()).real)
     return np.where(np.isfinite(found), found, 0.0)
 
 
@@ -189,7 +206,8 @@ def surroundings(mesh: Mesh, nodes: Ints, towards: Floats) -> Surroundings:
         for _, _, block in blocks(mesh, cells) if len(cells) else ():
             marked[block] = True
             mean = _summed(direction, block)
-            unset = np.asarray(~direction.any(axis=1))[block]
+            x, y, z = direction.T
+            unset = ((x == 0.0) & (y == 0.0) & (z == 0.0))[block]
             for column in range(block.shape[1]):  # the direction of the nearest seam, cell by cell
                 free = unset[:, column]
                 direction[block[free, column]] += mean[free]

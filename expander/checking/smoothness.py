@@ -20,7 +20,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from expander.behaviours import Factors
-from expander.checking.gradients import Gradients, cell_means
+from expander.checking.gradients import Gradients
 from expander.checking.jumps import Jump, carried, quantity_of
 from expander.checking.leaveout import standing_out, without_cells, without_nodes
 from expander.checking.neighbours import Surroundings, surroundings
@@ -173,11 +173,12 @@ def recovered(
     q = contracted if contracted is not None else quantity_of(field)
     mesh, cells, scale = near.mesh, near.around.cells, largest_value(values)
     if field.on == "cells":
-        own = to_global(field, values[cells], _centres(mesh, cells), on_axis(mesh))
+        centres = near.around.means(mesh.points[near.around.nodes].astype(float))
+        own = to_global(field, values[cells], centres, on_axis(mesh))
         return _at_faces(near, field, case, full(field, own), q, chi, scale, measure, limit)
     nodal = _turned(mesh, field, values)
-    per_cell = full(field, cell_means(mesh, cells, nodal))
     beside = full(field, nodal[near.around.nodes])
+    per_cell = near.around.means(beside)
     seam = near.seam
     here = full(field, nodal[seam.nodes])
     there = np.zeros_like(here)
@@ -315,10 +316,6 @@ def _number(value: complex) -> str:
 def _turned(mesh: Mesh, field: Field, values: Numbers) -> Numbers:
     """Nodal values in global directions at all nodes, (n, c)."""
     return to_global(field, values, mesh.points, on_axis(mesh))
-
-
-def _centres(mesh: Mesh, cells: Ints) -> Floats:
-    return cell_means(mesh, cells, mesh.points.astype(float))
 
 
 def _as_stored(field: Field, values: Numbers) -> Numbers:

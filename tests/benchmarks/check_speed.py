@@ -170,7 +170,7 @@ def run_once(case_file: Path, profile: bool) -> dict[str, float]:
     if profile:
         profiler.enable()
     start, cpu = time.perf_counter(), time.process_time()
-    sector = expander.sector.read_sector(case, complex_results=True)
+    sector = expander.sector.read_sector(case)
     found = time.perf_counter()
     seams = continuity(sector)
     end, cpu = time.perf_counter(), time.process_time() - cpu
