@@ -16,16 +16,16 @@ larger than the sector.
 from __future__ import annotations
 
 from collections.abc import Callable, Iterator
-from dataclasses import dataclass, field
 from functools import lru_cache
 from threading import Lock
 
 import numpy as np
-from numpy.typing import NDArray
 
 from expander.admission import integers_too_small
 from expander.body import WholeBody
+from expander.bodyarrays import Block, BodyArray
 from expander.bodymesh import BodyMesh
+from expander.cyclearrays import Cycle, peak_arrays
 from expander.derived import Derived, derived_fields
 from expander.fields import Field
 from expander.frames import Cylindrical
@@ -34,49 +34,6 @@ from expander.numbering import Numbering
 from expander.placements import Floats
 from expander.quantities import Quantity
 from expander.resolve import Numbers, acting, from_global, product, to_global
-
-Block = NDArray[np.generic]
-
-
-@dataclass(eq=False)
-class BodyArray:
-    """One array of the whole body.
-
-    Attributes
-    ----------
-    section : "points", "cells", or the mesh's own "coordinates", "connectivity", "offsets",
-        "types".
-    components : names of the components; empty for a single number.
-    first : row of the whole array at which each copy's part starts.
-    rows : rows of the whole array.
-    block : computes some of the rows of one copy, which are in the sector's order.
-    release : forgets what was kept between copies.
-    """
-
-    name: str
-    section: str
-    dtype: np.dtype[np.generic]
-    components: tuple[str, ...]
-    first: dict[int, int]
-    rows: int
-    block: Callable[[int, slice], Block]
-    release: Callable[[], None] = field(default=lambda: None)
-
-    @property
-    def width(self) -> int:
-        return max(1, len(self.components))
-
-    @property
-    def nbytes(self) -> int:
-        return self.rows * self.width * self.dtype.itemsize
-
-    def pieces(self, most_bytes: int) -> Iterator[tuple[int, int, slice]]:
-        """(copy, row of the whole array, rows of the copy) for pieces of at most so many bytes."""
-        step = max(1, most_bytes // (self.width * self.dtype.itemsize))
-        ends = [*list(self.first.values())[1:], self.rows]
-        for (copy, begin), end in zip(self.first.items(), ends, strict=True):
-            for row in range(0, end - begin, step):
-                yield copy, begin + row, slice(row, min(row + step, end - begin))
 
 
 def arrays_of(body: WholeBody, result: Result, moment: float | None = None) -> Iterator[BodyArray]:
@@ -268,7 +225,7 @@ def _field_arrays(
             real = values.real * s.real - values.imag * s.imag
             out = image(body, f, numbering, real, copy, rows, 1.0)
             if mean is not None:
-                still = _kept(mean.values(copy), numbering, copy, rows)
+                still = _kept(mean.values(copy).real, numbering, copy, rows)
                 out = np.add(out, image(body, f, numbering, still, copy, rows,
                                         mean.lead(copy).real))  # fmt: skip
             return _as(out, dtype, f)
@@ -281,13 +238,51 @@ def _field_arrays(
     for suffix, block in parts:
         yield BodyArray(f.name + suffix, f.on, dtype, component_names(f), numbering.first,
                         numbering.total, block, signed.release)  # fmt: skip
-    if signed.complex:
-        return
     there = [g.name for g in fields_in(body, result)]
     for extra in derived_fields(f, body.case.output.derived):
         if extra.name in there:
             continue  # the model has its own; said in the notes
-        yield _derived_array(body, signed, f, extra, numbering)
+        if not signed.complex:
+            yield _derived_array(body, signed, f, extra, numbering)
+        elif moment is not None or result.real:
+            ((_, weight),) = result.parts(moment)
+            at_moment = _AtMoment(signed, mean, weight, f, extra)
+            yield BodyArray(extra.name, f.on, dtype, extra.components, numbering.first,
+                            numbering.total, at_moment.block(numbering))  # fmt: skip
+    if signed.complex and moment is None and not result.real:
+        still = None if result.mean is None else _Signed(
+            body, Result(result.name, ((result.mean, 1.0),)), f
+        )  # fmt: skip
+        cycle = Cycle(signed.values, signed.pattern, signed.lead,
+                      None if still is None else still.values,
+                      None if still is None else still.lead,
+                      result.wave == "standing", result.turned_back)  # fmt: skip
+        yield from peak_arrays(f, body.case.output.peaks, cycle, numbering, dtype,
+                               lambda v, copy, rows: _kept(v, numbering, copy, rows))  # fmt: skip
+
+
+class _AtMoment:
+    """Von Mises and the like at one moment of the cycle: of components before they are carried,
+    since they do not change on the way."""
+
+    def __init__(
+        self, signed: _Signed, mean: _Signed | None, weight: complex, f: Field, extra: Derived
+    ) -> None:
+        self.signed, self.mean, self.weight = signed, mean, weight
+        self.field, self.extra = f, extra
+
+    def block(self, numbering: Numbering) -> Callable[[int, slice], Block]:
+        def block(copy: int, rows: slice) -> Block:
+            values = _kept(self.signed.values(copy), numbering, copy, rows)
+            s = self.weight * self.signed.lead(copy)
+            real = values.real * s.real - values.imag * s.imag
+            if self.mean is not None:
+                still = _kept(self.mean.values(copy).real, numbering, copy, rows)
+                real = np.add(real, np.multiply(self.mean.lead(copy).real, still))
+            found = self.extra.values(self.field.quantity, np.asarray(real, dtype=float))
+            return found.astype(self.signed.dtype, copy=False)
+
+        return block
 
 
 def component_names(f: Field) -> tuple[str, ...]:

@@ -57,6 +57,11 @@ class Result:
         """Whether a factor or a load behaviour is complex."""
         return any(np.iscomplexobj(a) or cases[k].complex_factors for k, a in self.terms)
 
+    @property
+    def turned_back(self) -> bool:
+        """Whether the field in time is that of the conjugate amplitude with ``exp(+i omega t)``."""
+        return (self.time_sign < 0) != (self.wave == "reversed")
+
     def parts(self, moment: float | None) -> list[tuple[str, complex]]:
         """Suffix and weight ``w`` of the arrays ``Re(w f)`` that a complex field is written as.
 

@@ -7,7 +7,7 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
-from expander.images import BodyArray
+from expander.bodyarrays import BodyArray
 from expander.writers.vtu import FieldData
 
 if TYPE_CHECKING:

@@ -17,7 +17,7 @@ from xml.sax.saxutils import quoteattr
 
 import numpy as np
 
-from expander.images import BodyArray
+from expander.bodyarrays import BodyArray
 from expander.writers.newfiles import NewFiles
 
 # Text, or numbers of shape (rows, components).
