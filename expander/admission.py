@@ -90,14 +90,21 @@ def check_same_mesh(first: Model, other: Model, name: str) -> None:
     )
 
 
-def check_same_arrays(first: Model, other: Model, name: str, skip: bool) -> list[str]:
-    """Refuse arrays that a later case holds alone, or holds in another order of components."""
+def check_same_arrays(
+    first: Model, other: Model, name: str, skip: bool, known: set[str]
+) -> list[str]:
+    """Refuse arrays that a later case holds alone, or holds in another order of components.
+
+    Parameters
+    ----------
+    known : keys of complex fields, under which a case may hold one real array instead.
+    """
     notes = []
     for on, mine, theirs in (
         ("points", first.point_data, other.point_data),
         ("cells", first.cell_data, other.cell_data),
     ):
-        extra = [a for a in theirs if a not in mine]
+        extra = [a for a in theirs if a not in mine and a not in known]
         if extra and not skip:
             raise InputError(
                 f"{other.source} (case {name!r}) has arrays on {on} that {first.source} has not: "
@@ -150,7 +157,7 @@ def check_complex(fields: list[Field], case: LoadCase) -> None:
                 "cannot be copied.",
                 "Leave the field out (--skip-undeclared), and compute it from the components.",
             )
-        if not f.complex_values:
+        if not f.complex_values or not np.iscomplexobj(f.values(case.model)):
             raise InputError(
                 f"Field {f.name!r} in case {case.name!r} ({case.behaviour.words()}) is real, but a "
                 "wave has an amplitude and a phase at each node.",

@@ -82,12 +82,20 @@ class Field:
 
     def stored_type(self, model: Model) -> np.dtype[np.generic]:
         """Number type of the arrays, also where they make up a complex field."""
-        return self._part(model, self.arrays).dtype
+        return self._part(model, self.stored_arrays(model)).dtype
+
+    def stored_arrays(self, model: Model) -> tuple[str, ...]:
+        """Its arrays in this model. A case that is constant in time may hold a complex field of
+        the others as one real array under the field's own name."""
+        data = model.point_data if self.on == "points" else model.cell_data
+        missing = self.second and any(a not in data for a in (*self.arrays, *self.second))
+        return (self.name,) if missing and self.name in data else self.arrays
 
     def values(self, model: Model) -> NDArray[np.generic]:
         """The field on the sector, (n, k), in the number type of the file; complex if it is."""
-        first = self._part(model, self.arrays)
-        if not self.second:
+        arrays = self.stored_arrays(model)
+        first = self._part(model, arrays)
+        if not self.second or arrays != self.arrays:
             return first
         second = self._part(model, self.second)
         if self.polar:

@@ -72,14 +72,15 @@ def _with_values(sector: Sector, model: Model, f: Field, vectors: Numbers) -> Mo
     full = quantity(f.kind, 3)
     stored = from_global(f, vectors @ (q.gather @ full.spread).T, mesh.points, on_axis(mesh))
     data = dict(model.point_data)
-    parts = [(f.arrays, stored)]
-    if f.second:
+    names = f.stored_arrays(model)
+    parts = [(names, stored)]
+    if f.second and names == f.arrays:
         first, second = (
             (np.abs(stored), np.rad2deg(np.angle(stored)))
             if f.polar
             else (stored.real, stored.imag)
         )
-        parts = [(f.arrays, first), (f.second, second)]
+        parts = [(names, first), (f.second, second)]
     for arrays, values in parts:
         for k, name in enumerate(arrays):
             old = np.asarray(data[name])

@@ -6,7 +6,7 @@ before anything is computed for the whole body.
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Mapping
 from dataclasses import dataclass, field
 
 import numpy as np
@@ -24,7 +24,7 @@ from expander.admission import (
     read_models,
 )
 from expander.behaviours import factors, is_plain
-from expander.casefile import CaseFile, CaseTable, Direction, plane_names
+from expander.casefile import CaseFile, CaseTable, Direction, FieldTable, plane_names
 from expander.declarations import fields_of
 from expander.errors import InputError
 from expander.fields import (
@@ -50,7 +50,7 @@ class Sector:
 
     Attributes
     ----------
-    model : that of the first case; all cases share its mesh and its arrays' names.
+    model : that of the first case, or the first with complex fields; all cases share its mesh.
     seams : which nodes of different copies are one.
     notes : what was assumed or left out, each a sentence.
     invalid_numbers : values that are not finite and were accepted, counted by field.
@@ -99,12 +99,15 @@ def read_sector(
     chis = [factors(group, b) for b in behaviours]
     step("reading")
     models = read_models(case, tables, allow_nan)
-    mesh = models[0].mesh
+    waves = {n: t for n, t in case.fields.items() if t.real is not None or t.amplitude is not None}
+    told = next((m for m in models if _holds(m, waves)), models[0])
+    mesh = told.mesh
     notes = [note for m in dict.fromkeys(models) for note in m.notes]
-    check_mesh(models[0])
-    for name, model in zip([t.name for t in tables][1:], models[1:], strict=True):
-        check_same_mesh(models[0], model, name)
-        notes += check_same_arrays(models[0], model, name, skip_undeclared)
+    check_mesh(told)
+    for table, model in zip(tables, models, strict=True):
+        if model is not told:
+            check_same_mesh(told, model, table.name)
+            notes += check_same_arrays(told, model, table.name, skip_undeclared, set(waves))
     cases = tuple(
         LoadCase(t.name, m, b, chi, t.factor * mode_factor(t, chi))
         for t, m, b, chi in zip(tables, models, behaviours, chis, strict=True)
@@ -115,7 +118,7 @@ def read_sector(
     frames = frames_of(case, {n: direction(t.axis, f"frames.{n}.axis")
                               for n, t in case.frames.items()})  # fmt: skip
     scaled = bool(case.sum) or any(c.factor != 1.0 for c in cases)
-    fields, left_out = fields_of(models[0], case, frames, skip_undeclared, odd, scaled)
+    fields, left_out = fields_of(told, case, frames, skip_undeclared, odd, scaled)
     notes += left_out
     check_shear(fields, group.placements)
     for c in cases:
@@ -136,8 +139,17 @@ def read_sector(
     notes += check_touch(mesh, group, seams, case.seam.open == "keep apart")
     notes += check_turns(mesh, group, seams, tolerance)
     notes += _order_notes(fields)
-    return Sector(case, group, models[0], tuple(fields), cases, results, seams, tuple(notes),
+    return Sector(case, group, told, tuple(fields), cases, results, seams, tuple(notes),
                   invalid)  # fmt: skip
+
+
+def _holds(model: Model, waves: Mapping[str, FieldTable]) -> bool:
+    """Whether a model has the arrays of all complex fields."""
+    names = {*model.point_data, *model.cell_data}
+    return all(
+        {*(t.real or t.amplitude or []), *(t.imaginary or t.phase_degrees or [])} <= names
+        for t in waves.values()
+    )
 
 
 def direction(word: Direction, key: str) -> Floats:

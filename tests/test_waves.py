@@ -238,6 +238,36 @@ def test_a_moment_with_its_mean(body: Ring) -> None:
     assert "mean still" in " ".join(grid.field_data["time"])
 
 
+def test_a_mean_with_real_arrays(body: Ring) -> None:
+    """A case that is constant in time may hold one real array under the field's own name."""
+    import pyvista
+
+    file = body.folder / "still.vtu"
+    grid = pyvista.read(file)
+    for key, name in (("u", "displacement"), ("s", "stress")):
+        grid.point_data[name] = np.array(grid.point_data.pop(f"{key}_re"))
+        del grid.point_data[f"{key}_im"]
+    grid.save(file)
+    for order in (1, -1):  # whichever case comes first
+        case = body.case({"mean": "still"})
+        case = case.model_copy(update={"case": case.case[::order]})
+        found = expander.expand(case, "wave", moment=50.0)
+        x = np.asarray(found.points)
+        expected = body.mean_u(x).real + (body.u(x) * np.exp(1j * np.deg2rad(50.0))).real
+        np.testing.assert_allclose(np.asarray(found["displacement"]), expected, atol=1e-12)
+
+
+def test_a_wave_with_a_real_array_is_refused(body: Ring) -> None:
+    import pyvista
+
+    grid = pyvista.read(body.folder / "wave.vtu")
+    grid.point_data["displacement"] = np.array(grid.point_data.pop("u_re"))
+    grid.save(body.folder / "wave.vtu")
+    with pytest.raises(InputError, match="'displacement'") as caught:
+        expander.expand(body.case(), "wave")
+    assert "amplitude" in str(caught.value)
+
+
 def test_a_mean_is_no_result_of_its_own(body: Ring) -> None:
     assert [t.result.name for t in plan(body.case({"mean": "still"})).targets] == ["wave"]
 
