@@ -15,7 +15,7 @@ from functools import cached_property
 import numpy as np
 from numpy.typing import NDArray
 from scipy.sparse import csc_matrix, csr_matrix, diags_array
-from scipy.sparse.linalg import LinearOperator, eigsh, splu
+from scipy.sparse.linalg import LinearOperator, SuperLU, eigsh, splu
 
 from demo_cases.solver import (
     Cyclic,
@@ -26,7 +26,6 @@ from demo_cases.solver import (
     Solution,
     cyclic_pairs,
     elimination,
-    stiffness,
 )
 
 Complex = NDArray[np.complex128]
@@ -61,16 +60,17 @@ def wave_elimination(
     first, second = cyclic_pairs(mesh, cyclic)
     if (first == second).any():
         raise ValueError("the sector has nodes on its axis")
-    chi = np.ones(len(mesh.points), dtype=complex)
-    chi[second] = np.exp(2j * np.pi * h / cyclic.sectors)
+    turn = np.exp(2j * np.pi * h / cyclic.sectors)
+    chi = np.ones(len(mesh.points), dtype=complex if 2 * h % cyclic.sectors else float)
+    chi[second] = turn if chi.dtype == complex else turn.real
     return csr_matrix(diags_array(np.repeat(chi, 3)) @ T)
 
 
-def _factors(matrix: csc_matrix):
+def _factors(matrix: csc_matrix) -> SuperLU:
     return splu(
         matrix,
         permc_spec="MMD_AT_PLUS_A",
-        diag_pivot_thresh=0.0,
+        diag_pivot_thresh=0.1,
         options={"SymmetricMode": True},
     )
 
@@ -88,17 +88,19 @@ def respond(stiff: csr_matrix, T: csr_matrix, load: Complex) -> Complex:
     return (T @ q).reshape(-1, 3)
 
 
-def modes(stiff: csr_matrix, heavy: csr_matrix, T: csr_matrix, count: int) -> tuple[Floats, Complex]:
-    """The lowest circular frequencies omega, and shapes (count, n, 3) of modal mass 1.
+def modes(
+    stiff: csr_matrix, heavy: csr_matrix, T: csr_matrix, count: int, near: float = 0.0
+) -> tuple[Floats, Complex]:
+    """Circular frequencies (count,) and shapes (count, n, 3) of modal mass 1 in `heavy`.
 
-    Shapes are real where T is. The modal mass is that of the matrix `heavy`: of the sector.
+    Those nearest to the circular frequency `near`, rising. Shapes are real where T is.
     """
     back = T.conj().T
     K, M = csc_matrix(back @ stiff @ T), csc_matrix(back @ heavy @ T)
-    factors = _factors(K)
+    factors = _factors(csc_matrix(K - near**2 * M))
     inverse = LinearOperator(K.shape, matvec=factors.solve, dtype=K.dtype)
     start = np.cos(np.arange(K.shape[0]))  # the same every time
-    square, found = eigsh(K, count, M, sigma=0.0, OPinv=inverse, v0=start, tol=0.0)
+    square, found = eigsh(K, count, M, sigma=near**2, OPinv=inverse, v0=start, tol=0.0)
     order = np.argsort(square)
     shapes = (T @ found[:, order]).T
     size = np.sqrt(np.einsum("ki,ki->k", shapes.conj(), (heavy @ shapes.T).T).real)
