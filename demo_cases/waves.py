@@ -75,14 +75,15 @@ def _factors(matrix: csc_matrix) -> SuperLU:
     )
 
 
-def respond(stiff: csr_matrix, T: csr_matrix, load: Complex) -> Complex:
+def respond(stiff: csr_matrix, T: csr_matrix, load: Floats | Complex) -> Floats | Complex:
     """(n, 3) displacement T q that balances a load (n, 3) along every free direction.
 
-    `stiff` is the stiffness, or the dynamic stiffness K (1 + i eta) - omega^2 M.
+    `stiff` is the stiffness, or the dynamic stiffness K (1 + i eta) - omega^2 M. Real if all is.
     """
     back = T.conj().T
-    factors = _factors(csc_matrix(back @ stiff @ T, dtype=complex))
-    q = np.zeros(T.shape[1], dtype=complex)
+    kind = np.result_type(stiff.dtype, T.dtype, load.dtype)
+    factors = _factors(csc_matrix(back @ stiff @ T, dtype=kind))
+    q = np.zeros(T.shape[1], dtype=kind)
     for _ in range(3):  # the later rounds take off the round-off of the first
         q += factors.solve(back @ (load.ravel() - stiff @ (T @ q)))
     return (T @ q).reshape(-1, 3)
@@ -113,7 +114,7 @@ class Wave:
 
     mesh: Mesh
     material: Material
-    displacement: Complex
+    displacement: Floats | Complex
 
     @cached_property
     def _parts(self) -> tuple[Solution, Solution]:

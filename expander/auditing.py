@@ -28,6 +28,7 @@ from expander.resolve import Numbers, to_global
 from expander.roles import having
 from expander.sector import Sector, Step, direction, on_axis
 from expander.topology import cell_centres
+from expander.tradewords import normalised
 
 
 @dataclass(frozen=True, eq=False)
@@ -40,6 +41,7 @@ class Audit:
     sector_mass, carried_mass, body_mass : of the modelled part, carried around, and integrated
         over all copies.
     sections : by name and result: the force and moment across a plane.
+    section_stress : the field they are from, or "".
     """
 
     cases: tuple[CaseAudit, ...]
@@ -51,6 +53,7 @@ class Audit:
     pieces: Pieces
     overlaps: Overlaps
     sections: tuple[tuple[str, str, Section], ...]
+    section_stress: str = ""
 
 
 def audit(sector: Sector, chis: dict[str, Factors], step: Step = lambda words: None) -> Audit:
@@ -75,8 +78,10 @@ def audit(sector: Sector, chis: dict[str, Factors], step: Step = lambda words: N
     step("looking for overlaps")
     overlap = overlaps(mesh, group)
     step("cutting sections")
+    stress = _section_stress(sector)
     return Audit(cases, about, mass_from, own, round_, direct, found, overlap,
-                 tuple(_sections(sector, chis)))  # fmt: skip
+                 tuple(_sections(sector, chis, stress)),
+                 "" if stress is None else stress.name)  # fmt: skip
 
 
 def _mass(sector: Sector) -> tuple[str, Properties, Properties, Properties]:
@@ -107,17 +112,40 @@ def _mass(sector: Sector) -> tuple[str, Properties, Properties, Properties]:
     return words, own, of_whole(own, sector.group.placements), body
 
 
-def _sections(sector: Sector, chis: dict[str, Factors]) -> list[tuple[str, str, Section]]:
-    """Force and moment across each section for each result, cases added up."""
+_USUAL = ("cell_stress", "element_stress", "stress", "stresses")  # cells are in equilibrium first
+
+
+def _section_stress(sector: Sector) -> Field | None:
+    """The stress that sections are taken from: the one named, else the one called stress."""
     if not sector.case.section:
-        return []
-    stresses = [f for f in having(sector.fields, "stress") if f.follows == "load"]
-    if not stresses:
+        return None
+    stresses = {f.name: f for f in having(sector.fields, "stress") if f.follows == "load"}
+    named = {s.field for s in sector.case.section if s.field is not None}
+    if not stresses or len(named) > 1 or not named <= set(stresses):
         raise InputError(
-            "A [[section]] needs a stress, and the model has no field that is one.",
-            'Declare it with kind = "symmetric tensor" and a name that says stress.',
+            "A [[section]] needs one stress"
+            + (f", found section.field = {', '.join(sorted(named))}" if named else "") + ".",
+            f"Stresses of the model: {', '.join(stresses) or 'none'}; one is declared with kind = "
+            '"symmetric tensor" and a name that says stress.',
+        )  # fmt: skip
+    if named:
+        return stresses[named.pop()]
+    usual = [stresses[n] for n in stresses if normalised(n) in _USUAL]
+    found = sorted(usual, key=lambda f: (f.on != "cells", _USUAL.index(normalised(f.name))))
+    if not found and len(stresses) > 1:
+        raise InputError(
+            f"[[section]]: several stresses may be meant: {', '.join(stresses)}.",
+            'Add field = ".." to the [[section]].',
         )
-    field = min(stresses, key=lambda f: f.on != "cells")  # cells in equilibrium, not their means
+    return found[0] if found else next(iter(stresses.values()))
+
+
+def _sections(
+    sector: Sector, chis: dict[str, Factors], field: Field | None
+) -> list[tuple[str, str, Section]]:
+    """Force and moment across each section for each result, cases added up."""
+    if field is None:
+        return []
     thickness = having(sector.fields, "thickness")
     t = thickness[0].values(sector.model)[:, 0].astype(float) if thickness else 1.0
     found = []

@@ -139,6 +139,7 @@ class SectionTable(Table):
     normal: Direction
     point: Vector = [0.0, 0.0, 0.0]
     about: Vector | None = None
+    field: str | None = None
 
 
 class ReReferenceTable(Table):

@@ -22,6 +22,8 @@ ROLES: dict[str, tuple[str, str, str, tuple[str, ...]]] = {
     "applied moment": (r"(applied|external)_.*", "axial vector", "points", ("sum",)),
     "reaction": (r"reactions?(_.+)?|rf", "polar vector", "points", ("sum",)),
     "reaction moment": (r"reactions?(_.+)?|rm", "axial vector", "points", ("sum",)),
+    "other force": (r"(residual|contact|unbalanced|out_of_balance)_.*", "polar vector", "points",
+                    ("sum",)),
     "nodal force": (r".*", "polar vector", "points", ("sum",)),
     "nodal moment": (r"(nodal_)?moments?", "axial vector", "points", ("sum",)),
     "density": (r"(mass_)?density", "scalar", "cells", ()),

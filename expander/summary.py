@@ -21,7 +21,8 @@ CAUTIONS = (
     "symmetry.",
     "Symmetric seam conditions hide antisymmetric buckling and vibration modes, and the reverse; "
     "a nonlinear response can break the symmetry.",
-    "Half the thickness of a web in a cut plane is right for membrane action only.",
+    "Half the thickness of a web in a cut plane is right for membrane action only; an "
+    "antisymmetric load needs half the bending stiffness.",
     "Local codes and a licensed engineer decide.",
 )
 

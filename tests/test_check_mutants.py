@@ -8,17 +8,35 @@ from typing import Any
 
 import numpy as np
 import pytest
-from meshes import Sector, box, case_of, ring
+from meshes import Sector, box, case_of
 
+from expander.audit.equilibrium import in_plane_share
+from expander.audit.overlap import Overlap, Overlaps
+from expander.audit.totals import Resultant
+from expander.auditing import Audit, audit
+from expander.behaviours import Behaviour, factors
 from expander.checking.continuity import Continuity, continuity
+from expander.checking.declared import UNTOLD, _Sides, face_ratio, primary
+from expander.checking.facets import normals, outer_facets, subset
+from expander.checking.feet import opposite
+from expander.checking.findings import DOUBTS, FAILS, NOTE, _of_seam, findings
 from expander.checking.jumps import Jump
 from expander.checking.leaveout import standing_out, without_cells, without_nodes
 from expander.checking.neighbours import surroundings
+from expander.checking.opposite import Against, Side, error_bound
+from expander.checking.roughness import roughness
 from expander.checking.seamlist import Seam, seams_of
 from expander.checking.smoothness import Near, judged
 from expander.checking.verdicts import CLOSED, DOUBTFUL, OPEN, Verdict
+from expander.checkup import check
+from expander.errors import InputError
 from expander.fields import Field
 from expander.frames import Global
+from expander.groups import CutPlane, CyclicAxis, make_group
+from expander.loadcases import LoadCase, Result, _wave, direction_words
+from expander.model import Mesh
+from expander.phases import _telling
+from expander.placements import Placement
 from expander.quantities import quantity
 from expander.sector import read_sector
 
@@ -134,7 +152,7 @@ def test_a_face_is_measured_without_its_own_cells() -> None:
 
 
 def test_a_node_is_measured_without_its_own_value() -> None:
-    """Of the seven other nodes of its cell three have 0 and four have 1: 4/7 off the mean, twice."""
+    """Of the seven other nodes of its cell three have 0, four have 1: 4/7 off the mean, twice."""
     near, nodes = near_plane(bricks(2, 1, 1))
     nodal = near.mesh.points[near.nodes][:, :1]
     nodal[np.searchsorted(near.nodes, nodes[0])] = 100.0
@@ -173,3 +191,361 @@ def test_one_odd_value_is_not_its_own_measure(tmp_path: Path, on: str) -> None:
     assert (v.result, v.jump) == (OPEN, pytest.approx(2.0))
     assert v.times is not None
     assert v.times > 100.0
+
+
+# --- declared against found -----------------------------------------------------------------------
+
+
+def test_rows_that_look_the_other_way_take_the_inverse() -> None:
+    """At the first face stands the second one of the copy before: its factor is the conjugate."""
+    rng = np.random.default_rng(3)
+    there = rng.normal(size=(4, 3)) + 1j * rng.normal(size=(4, 3))
+    chi = np.exp(0.4j * np.pi)
+    factor = np.array([chi, chi, chi.conjugate(), chi.conjugate()])[:, None]
+    jump = sides(factor * there, there)
+    jump = replace(jump, seam=replace(jump.seam, via=np.array([1, 1, 4, 4])))
+    both = _Sides(jump.field, jump, 1.0)
+    np.testing.assert_allclose(both.relative(chi), 0.0, atol=1e-15)
+    assert both.relative(chi.conjugate()).min() > 0.1
+
+
+def test_the_error_of_interpolation_is_taken_off() -> None:
+    """(3, 4, 0) against 0 of 10, 2 of it by interpolation: 0.3; not below 0."""
+    jump = sides(np.array([[3.0, 4.0, 0.0], [1.0, 0.0, 0.0]]), np.zeros((2, 3)))
+    jump = replace(jump, allowance=np.array([2.0, 2.0]))
+    np.testing.assert_allclose(_Sides(jump.field, jump, 10.0).relative(1.0), [0.3, 0.0])
+
+
+def test_nodes_of_the_axis_tell_no_ratio() -> None:
+    """A node on the axis is its own partner, whatever the wave."""
+    there = np.array([[1.0, 2.0, 0.0], [0.0, 1.0, 1.0], [50.0, 60.0, 70.0]]) + 0j
+    own = there * np.array([1j, 1j, 1.0])[:, None]
+    jump = sides(own, there)
+    seam = replace(jump.seam, partners=np.array([[5], [6], [2]]))
+    both = _Sides(jump.field, replace(jump, seam=seam), 1.0)
+    assert face_ratio([both]) == pytest.approx(1j)
+
+
+@pytest.mark.parametrize(
+    ("change", "told"),
+    [({}, True), ({"follows": "body"}, False), ({"on": "cells"}, False),
+     ({"seam": "recovered"}, False), ({"quantity": quantity("invariant", 1)}, False)],
+)  # fmt: skip
+def test_what_tells_a_load(change: dict[str, Any], told: bool) -> None:
+    q = quantity("polar vector", 3)
+    f = Field("u", q, "load", "agree", Global(), "points", ("u",), None, "", "")
+    assert primary(replace(f, **change)) is told
+
+
+def on_plane(*row: float) -> np.ndarray:
+    """A displacement of length 5 at one node and this one at all nodes of the plane x = 0."""
+    u = np.zeros((12, 3))
+    u[-1], u[:4] = [0.0, 3.0, 4.0], row
+    return u
+
+
+@pytest.mark.parametrize(("limit", "result"), [(0.39, OPEN), (0.41, CLOSED)])
+def test_a_load_word_is_judged_by_the_limit(tmp_path: Path, limit: float, result: str) -> None:
+    """(1, 2, 0): 2 of 5 across, 4 of 5 along."""
+    found = seen(tmp_path, bricks(2, 1, 1), HALF | {"seam": {"limit": limit}},
+                 points={"displacement": on_plane(1, 2, 0)})  # fmt: skip
+    assert [f.result for f in found.found] == [result]
+
+
+def test_one_layer_cannot_tell_what_is_clamped(tmp_path: Path) -> None:
+    sector = bricks(1, 2, 2)
+    y = sector.points[:, 1:2]
+    u = sector.points[:, :1] * (1.0 + 0.1 * y) * [1.0, 2.0, 3.0]
+    (told,) = seen(tmp_path, sector, HALF, points={"displacement": u}).found
+    assert (told.result, told.found) == (DOUBTFUL, UNTOLD)
+
+
+def test_properties_in_cells_are_no_field_of_the_load(tmp_path: Path) -> None:
+    words = {"density": {"kind": "scalar", "follows": "body"}}
+    found = seen(tmp_path, bricks(3, 1, 1), HALF | {"fields": words},
+                 cells={"density": np.array([1.0, 5.0, 2.0])})  # fmt: skip
+    assert found.verdicts == ()
+
+
+# --- findings -------------------------------------------------------------------------------------
+
+
+def test_a_doubtful_field_is_a_doubt(tmp_path: Path) -> None:
+    sector = bricks(1, 1, 1)
+    u = np.outer(sector.points[:, 0] ** 2, [0.0, 1.0, 0.0])
+    u[:, 2] = 1.0
+    found = seen(tmp_path, sector, HALF, points={"displacement": u})
+    assert DOUBTFUL in {v.result for v in found.verdicts}
+    assert {f.weight for f in findings(found, None)} == {DOUBTS}
+
+
+def test_a_near_miss_is_a_doubt(tmp_path: Path) -> None:
+    """A node of the plane a fiftieth of an edge beside it: a slit, or an inaccurate node."""
+    sector = bricks(2, 2, 2)
+    points = sector.points.copy()
+    points[4, 0] = 0.02
+    found = seen(tmp_path, replace(sector, points=points), HALF,
+                 points={"displacement": np.outer(points[:, 0], [1e-3, 0, 0])})  # fmt: skip
+    (finding,) = (f for f in findings(found, None) if f.about == "seam nodes")
+    assert finding.weight == DOUBTS
+    assert "node 4" in finding.words
+
+
+def audited(folder: Path, **tables: Any) -> tuple[Continuity, Audit]:
+    """Half of a bar of two cubes, under a force along y at its far end, which y = 3 carries."""
+    sector = bricks(2, 1, 1)
+    u = 1e-4 * np.outer(sector.points[:, 0] ** 2, [0.0, 1.0, 0.0])
+    force, reaction = np.zeros((12, 3)), np.zeros((12, 3))
+    force[-1], reaction[-2] = [0.0, 2.0, 0.0], [0.0, -2.0, 0.0]
+    points = {"displacement": u, "applied_force": force, "reaction": reaction}
+    cells = {"density": np.ones(2)}
+    read = read_sector(case_of(folder, sector, HALF | tables, points, cells))
+    return continuity(read), audit(read, {c.name: c.chi for c in read.cases})
+
+
+def weights(found: Continuity, body: Audit, about: str) -> list[str]:
+    return [f.weight for f in findings(found, body) if f.about == about]
+
+
+def test_a_wrong_volume_fails(tmp_path: Path) -> None:
+    found, body = audited(tmp_path)
+    assert weights(found, body, "volume") == []
+    for name in ("volume", "area", "length"):
+        value = 1.0 if name != "volume" else body.body_mass.volume * (1.0 + 1e-6)
+        wrong = replace(body, body_mass=replace(body.body_mass, **{name: value}))
+        assert weights(found, wrong, "volume") == [FAILS]
+
+
+def test_cells_inside_out_are_a_doubt(tmp_path: Path) -> None:
+    found, body = audited(tmp_path)
+    assert weights(found, body, "cells") == []
+    wrong = replace(body, sector_mass=replace(body.sector_mass, inverted=np.array([1])))
+    assert weights(found, wrong, "cells") == [DOUBTS]
+
+
+def test_an_overlap_fails(tmp_path: Path) -> None:
+    found, body = audited(tmp_path)
+    one = Overlap(1, 3, 4, np.zeros(3), 0.1, "it overlaps")
+    assert weights(found, body, "overlap") == []
+    assert weights(found, replace(body, overlaps=Overlaps((one,), 1, "")), "overlap") == [FAILS]
+
+
+@pytest.mark.parametrize(
+    ("expect", "about", "weight"),
+    [
+        ({"pieces": 1}, "pieces", []),
+        ({"pieces": 2}, "pieces", [FAILS]),
+        ({"mass": 4.0}, "mass", [NOTE]),
+        ({"mass": 4.1}, "mass", [FAILS]),
+        ({"mass": 4.1, "tolerance": 0.1}, "mass", [NOTE]),
+        ({"force": [0.0, 4.0, 0.0]}, "expected", [NOTE]),
+        ({"force": [0.0, 2.0, 0.0]}, "expected", [FAILS]),
+        ({"force": [0.0, -4.0, 0.0], "field": "reaction"}, "expected", [NOTE]),
+        ({"moment": [-4.0, 0.0, 0.0]}, "expected", [NOTE]),
+        ({"moment": [0.0, 0.0, -20.0], "about": [5.0, 0.0, 1.0]}, "expected", [NOTE]),
+    ],
+)
+def test_what_is_expected(
+    tmp_path: Path, expect: dict[str, Any], about: str, weight: list[str]
+) -> None:
+    """Twice a force of 2 along y at (2, 1, 1) and its image: a moment of -4 about x, none about
+    z but for the arm of another point. The cubes weigh 1."""
+    found, body = audited(tmp_path, expect=expect)
+    assert weights(found, body, about) == weight
+
+
+def test_each_expectation_has_its_own_point(tmp_path: Path) -> None:
+    """The moments of a case are kept about the first point named."""
+    points = [[0.0, 0.0, 1.0], [0.0, 0.0, 0.0], [0.0, 0.0, 3.0]]
+    expect = [{"moment": [4.0 * (z - 1.0), 0.0, 0.0], "about": [x, y, z]} for x, y, z in points]
+    found, body = audited(tmp_path, expect=expect)
+    assert weights(found, body, "expected") == [NOTE] * 3
+
+
+def test_reactions_alone_stand_for_the_loads(tmp_path: Path) -> None:
+    reaction = np.zeros((12, 3))
+    reaction[-1] = [0.0, -2.0, 0.0]
+    for force, weight in (([0.0, 4.0, 0.0], NOTE), ([0.0, -4.0, 0.0], FAILS)):
+        tables = HALF | {"expect": {"force": force}}
+        case = case_of(tmp_path, bricks(2, 1, 1), tables, {"reaction": reaction})
+        assert [f.weight for f in check(case).findings if f.about == "expected"] == [weight]
+
+
+def test_a_total_that_is_not_there_fails(tmp_path: Path) -> None:
+    u = {"displacement": np.outer(np.ones(12), [0.0, 1e-3, 0.0])}
+    case = case_of(tmp_path, bricks(2, 1, 1), HALF | {"expect": {"force": [0, 4.0, 0]}}, u)
+    assert [f.weight for f in check(case).findings if f.about == "expected"] == [FAILS]
+
+
+@pytest.mark.parametrize(
+    ("reaction", "balance", "weight"),
+    [(-2.0, True, []), (-1.0, True, [FAILS]), (-1.0, False, [NOTE])],
+)
+def test_balance(tmp_path: Path, reaction: float, balance: bool, weight: list[str]) -> None:
+    load, held = np.zeros((12, 3)), np.zeros((12, 3))
+    load[-1], held[-1] = [0.0, 2.0, 0.0], [0.0, reaction, 0.0]
+    case = case_of(tmp_path, bricks(2, 1, 1), HALF | {"expect": {"balance": balance}},
+                   {"applied_force": load, "reaction": held})  # fmt: skip
+    assert [f.weight for f in check(case).findings if f.about == "balance"] == weight
+
+
+@pytest.mark.parametrize(("held", "weight"), [(False, [NOTE, DOUBTS]), (True, [NOTE])])
+def test_a_body_that_moves_as_one(tmp_path: Path, held: bool, weight: list[str]) -> None:
+    """It is a doubt unless reactions work in the motion, as of a body that rests on springs."""
+    points = {"displacement": np.outer(np.ones(12), [0.0, 1e-3, 0.0])}
+    if held:
+        points["reaction"] = np.zeros((12, 3))
+        points["reaction"][-1] = [0.0, -2.0, 0.0]
+    found = check(case_of(tmp_path, bricks(2, 1, 1), HALF, points)).findings
+    assert sorted(f.weight for f in found if f.about == "rigid body") == sorted(weight)
+
+
+@pytest.mark.parametrize(("apart", "weight"), [(False, FAILS), (True, DOUBTS)])
+def test_seams_kept_apart(tmp_path: Path, apart: bool, weight: str) -> None:
+    """Nodes that open are a doubt where the case says so; a wrong word is none of that."""
+    sector = bricks(2, 4, 4)
+    u = np.outer(1.0 + sector.points[:, 1], [0.0, 1e-3, 0.0])
+    for load, open_, expected in (("symmetric", True, weight), ("antisymmetric", False, FAILS)):
+        v = u.copy()
+        v[12, 0] = 1e-3 * open_
+        tables = {"mirror": [{"name": "mid", "normal": "x", "load": load}],
+                  "seam": {"open": "keep apart" if apart else "refuse"}}  # fmt: skip
+        found = findings(seen(tmp_path, sector, tables, points={"displacement": v}), None)
+        assert found[0].weight == expected
+
+
+NONE = np.zeros(0, dtype=np.int64)
+
+
+@pytest.mark.parametrize("matching", [True, False])
+@pytest.mark.parametrize("where", ["against", "apart"])
+@pytest.mark.parametrize("gap", [0.01, 0.3])
+def test_faces_that_do_not_pair(tmp_path: Path, matching: bool, where: str, gap: float) -> None:
+    """Another mesh beside faces that match is a doubt, and so is a seam that altogether stands off
+    by less than a tenth of an edge; what is meant as a gap or as another mesh is a note."""
+    sector = read_sector(case_of(tmp_path, bricks(2, 1, 1), HALF, {"warmth": np.ones(12)}))
+    (seam,) = seams_of(sector)
+    one = np.array([0])
+    here = Side(NONE, NONE, NONE, np.array([gap]), np.array([0]))
+    here = replace(here, **{where: one})
+    rest = {} if matching else {"faces": ()}
+    seam = replace(seam, against=Against([], np.array([1.0]), here, here), **rest)
+    (found,) = _of_seam(sector, seam)
+    doubt = matching if where == "against" else not matching and gap < 0.1
+    assert found.weight == (DOUBTS if doubt else NOTE)
+    assert found.words.startswith("50 %" if matching else "100 %")
+
+
+def test_values_that_are_not_finite_are_a_note(tmp_path: Path) -> None:
+    u = np.outer(np.ones(12), [0.0, 1e-3, 0.0])
+    u[7] = np.nan
+    case = case_of(tmp_path, bricks(2, 1, 1), HALF, {"displacement": u})
+    found = findings(continuity(read_sector(case, allow_nan=True)), None)
+    assert [f.weight for f in found if "not finite" in f.words] == [NOTE]
+
+
+# --- faces ----------------------------------------------------------------------------------------
+
+
+def leaning() -> Mesh:
+    """A parallelogram with the sides (2, 0) and (1, 1)."""
+    points = np.array([[0.0, 0, 0], [2, 0, 0], [3, 1, 0], [1, 1, 0]])
+    return Mesh(points, np.arange(4), np.array([0, 4]), np.array([9], dtype=np.uint8))
+
+
+def test_the_normal_of_an_edge_stands_on_it() -> None:
+    (edges,) = outer_facets(leaning())
+    half = np.sqrt(0.5)
+    expected = [[0, -1, 0], [half, -half, 0], [0, 1, 0], [-half, half, 0]]
+    np.testing.assert_allclose(normals(leaning(), edges), expected, atol=1e-15)
+
+
+def test_beside_a_facet_the_field_goes_on() -> None:
+    """The foot is on the rim, 0.1 off along the edge, where 5 x has changed by 0.5."""
+    mesh = leaning()
+    (edges,) = outer_facets(mesh)
+    bottom = subset([edges], np.array([0]))
+    still = Placement(np.eye(3), np.zeros(3))
+    found = opposite(np.array([[2.1, 0.0, 0.0], [1.0, 0.0, 0.0]]), mesh, bottom, still, 0.5)
+    np.testing.assert_allclose(error_bound(mesh, bottom, found, 5.0 * mesh.points[:, :1]),
+                               [0.5, 0.0], atol=1e-12)  # fmt: skip
+
+
+def test_facets_across_an_edge_tell_nothing() -> None:
+    """Slopes along the six sides of a cube differ, and a linear field is linear all the same."""
+    mesh = bricks(1, 1, 1).mesh()
+    values = mesh.points @ np.array([[1.0], [2.0], [4.0]])
+    np.testing.assert_allclose(roughness(mesh, outer_facets(mesh), values), 0.0, atol=1e-12)
+
+
+# --- loads at seams -------------------------------------------------------------------------------
+
+
+def test_a_load_given_in_full_where_four_copies_meet() -> None:
+    """6 of the whole body at the edge of two planes, given to the quarter: a quarter of it is 1.5.
+    Halved it would still be twice too much."""
+    planes = [CutPlane(n, v, np.zeros(3)) for n, v in zip("xy", np.eye(3), strict=False)]
+    up = Resultant(np.array([0.0, 0.0, 6.0]), np.zeros(3), np.zeros(3))
+    found = in_plane_share(np.zeros((1, 3)), np.array([[0.0, 0.0, -6.0]]), np.array([4]),
+                           make_group(planes, None), np.ones(4), up)  # fmt: skip
+    assert found.balances
+    assert "divided by up to 4" in found.words
+
+
+@pytest.mark.parametrize(("reaction", "balanced"), [(-2.0, True), (-1.9999, True), (-1.99, False)])
+def test_a_thousandth_is_no_balance(tmp_path: Path, reaction: float, balanced: bool) -> None:
+    load, held = np.zeros((12, 3)), np.zeros((12, 3))
+    load[-1], held[-1] = [0.0, 2.0, 0.0], [0.0, reaction, 0.0]
+    case = case_of(tmp_path, bricks(2, 1, 1), HALF, {"applied_force": load, "reaction": held})
+    assert ([f for f in check(case).findings if f.about == "balance"] == []) is balanced
+
+
+def test_a_couple_alone_is_no_balance(tmp_path: Path) -> None:
+    """Load and reaction are opposite and stand at different nodes."""
+    load, held = np.zeros((12, 3)), np.zeros((12, 3))
+    load[-1], held[-2] = [0.0, 2.0, 0.0], [0.0, -2.0, 0.0]
+    case = case_of(tmp_path, bricks(2, 1, 1), HALF, {"applied_force": load, "reaction": held})
+    assert [f.weight for f in check(case).findings if f.about == "balance"] == [FAILS]
+
+
+# --- waves ----------------------------------------------------------------------------------------
+
+
+@pytest.mark.parametrize(
+    ("wave", "parts"),
+    [
+        ("as given", [("_real", 1.0), ("_imag", -1j)]),
+        ("reversed", [("_real", 1.0), ("_imag", 1j)]),
+        ("standing", [("_real", 1.0), ("_imag", 0.0)]),
+    ],
+)
+def test_parts_of_an_amplitude(wave: str, parts: list[tuple[str, complex]]) -> None:
+    """Re(-i f) = Im f; the wave that runs the other way round has the conjugate amplitude."""
+    assert Result("r", ((0, 1.0),), wave).parts(None) == parts
+
+
+@pytest.mark.parametrize(
+    ("phase", "sign", "given"),
+    [("+", 1, "backward"), ("-", 1, "forward"), ("+", -1, "forward"), ("-", -1, "backward")],
+)
+def test_which_way_a_given_wave_runs(phase: str, sign: int, given: str) -> None:
+    """cos(h k alpha + omega t) is the same at k + 1 as at k a little later: it comes from there."""
+    group = make_group([], CyclicAxis(5, np.array([0.0, 0.0, 1.0]), np.zeros(3)))
+    behaviour = Behaviour({}, 1, phase)
+    model: Any = None
+    case = LoadCase("c", model, behaviour, factors(group, behaviour), 1.0)
+    for word in ("forward", "backward"):
+        assert _wave(word, True, case, sign) == ("as given" if word == given else "reversed")
+        result = Result("r", ((0, 1.0),), _wave(word, True, case, sign), sign)
+        assert word in direction_words(result, (case,))
+    with pytest.raises(InputError, match="gyroscopic"):
+        _wave("forward", False, case, sign)
+
+
+def test_what_tells_the_direction_of_a_wave() -> None:
+    """Fields that must agree; where there are none, recovered ones."""
+    q = quantity("polar vector", 3)
+    f = Field("u", q, "load", "agree", Global(), "points", ("u",), None, "", "", second=("v",))
+    recovered = replace(f, seam="recovered")
+    sector: Any = type("Sector", (), {"fields": (f, recovered, replace(f, second=()))})()
+    assert _telling(sector) == ([f], [recovered])

@@ -66,9 +66,9 @@ def sector() -> tuple[Mesh, dict[str, Bools]]:
 
 
 def share(x: Floats) -> Floats:
-    """Part of the weight per area at points (..., 3): a cone of height 1 over the patch."""
-    distance = np.linalg.norm(x[..., :2] - AT, axis=-1)
-    return np.clip(1 - distance / REACH, 0.0, 1.0) * 3 / (np.pi * REACH**2)
+    """Part of the weight per area at points (..., 3), fading towards the patch's rim."""
+    square = np.sum((x[..., :2] - AT) ** 2, axis=-1) / REACH**2
+    return np.clip(1 - square, 0.0, 1.0) ** 2 * 3 / (np.pi * REACH**2)
 
 
 def sector_loads(mesh: Mesh, top: Bools) -> Floats:

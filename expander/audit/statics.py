@@ -2,14 +2,15 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass, replace
+from collections.abc import Sequence
+from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
 
 from expander.audit.equilibrium import BALANCED, Balance, InPlane, balance, in_plane_share
 from expander.audit.magnitudes import Magnitude, body_size, magnitudes
-from expander.audit.rigid import Motions, free_motions, holding, share
+from expander.audit.rigid import Motions, common_point, free_motions, holding, share
 from expander.audit.totals import (
     Resultant,
     SupportSet,
@@ -59,8 +60,9 @@ class CaseAudit:
 
     Attributes
     ----------
-    balanced : the fields whose sum was tried for equilibrium, and how well it balances; of
-        several that were tried, the best. None where there is nothing to balance.
+    balanced : the fields whose sum was tried for equilibrium, and how well it balances, with
+        moments about the middle of the body. None where that cannot be tried.
+    not_balanced : why it was not tried, in words.
     in_plane : what forces at seam nodes make of it, where it does not balance.
     motions, share, held : rigid-body motions left free, the part of the displacement that is one,
         and the work of the reactions in each; `held` is None without reactions.
@@ -71,6 +73,7 @@ class CaseAudit:
     totals: tuple[Total, ...]
     vanishing: Vanishing
     balanced: tuple[tuple[str, ...], Balance] | None
+    not_balanced: str
     in_plane: InPlane | None
     motions: Motions
     share: float
@@ -101,7 +104,7 @@ def global_vectors(sector: Sector, f: Field, case: LoadCase, known: bool = True)
     return product(values, q.spread)
 
 
-def _added(sector: Sector, fields: list[Field], case: LoadCase) -> Numbers | None:
+def _added(sector: Sector, fields: Sequence[Field], case: LoadCase) -> Numbers | None:
     parts = [global_vectors(sector, f, case) for f in fields]
     return np.asarray(np.sum(parts, axis=0)) if parts else None
 
@@ -110,26 +113,50 @@ def _added(sector: Sector, fields: list[Field], case: LoadCase) -> Numbers | Non
 # better than these are printed.
 _OF_REACTIONS = 0.01
 
-_PAIRS = (("applied force", "applied moment"), ("reaction", "reaction moment"),
-          ("nodal force", "nodal moment"))  # fmt: skip
+
+@dataclass(frozen=True)
+class Forces:
+    """Fields of nodal forces, with the nodal moments that go with them, that are one thing."""
+
+    role: str
+    forces: tuple[Field, ...]
+    moments: tuple[Field, ...] = ()
+
+    @property
+    def names(self) -> tuple[str, ...]:
+        return tuple(f.name for f in self.forces + self.moments)
+
+
+def forces_of(sector: Sector) -> list[Forces]:
+    """Applied loads together, reactions together, and every other field of nodal forces alone:
+    a contact force may be listed among the nodal forces already."""
+    found = []
+    for force, moment in (("applied force", "applied moment"), ("reaction", "reaction moment")):
+        both = Forces(force, tuple(having(sector.fields, force)),
+                      tuple(having(sector.fields, moment)))  # fmt: skip
+        found += [both] if both.names else []
+    nodal = having(sector.fields, "nodal force")
+    moments = tuple(having(sector.fields, "nodal moment"))
+    found += [Forces("nodal force", (f,), moments if len(nodal) == 1 else ()) for f in nodal]
+    return found + [Forces("other force", (f,)) for f in having(sector.fields, "other force")]
 
 
 def case_audit(
     sector: Sector, case: LoadCase, chi: Factors, about: Floats, shares: NDArray[np.int64]
 ) -> CaseAudit:
     mesh, group = sector.mesh, sector.group
-    totals = [_total(sector, case, chi, about, *pair) for pair in _PAIRS]
-    there = [t for t in totals if t is not None]
-    balanced = _balance(there)
+    forces = forces_of(sector)
+    there = [total_of(sector, case, chi, about, f) for f in forces]
+    # Far from the body every couple is small beside force times distance.
+    middle = common_point(group, mesh.bounds.mean(axis=0))
+    balanced, words = _balance(sector, case, chi, middle, forces)
+    loads, reaction = _loads(forces), next((f for f in forces if f.role == "reaction"), None)
     in_plane = None
-    applied, reaction = (next((t for t in there if t.role == r), None)
-                         for r in ("applied force", "reaction"))  # fmt: skip
-    loads = applied or next((t for t in there if t.role == "nodal force"), None)
     if balanced is not None and balanced[1].relative > BALANCED and loads and reaction:
-        forces = _added(sector, [f for f in sector.fields if f.name in loads.fields
-                                 and f.kind == "polar vector"], case)  # fmt: skip
-        assert forces is not None
-        in_plane = in_plane_share(mesh.points, forces, shares, group, chi, reaction.body)
+        listed = _added(sector, loads.forces, case)
+        back = total_of(sector, case, chi, middle, reaction).body
+        if listed is not None:
+            in_plane = in_plane_share(mesh.points, listed, shares, group, chi, back)
     motions = free_motions(group, chi, plane_normal(sector),
                            mesh.bounds.mean(axis=0))  # fmt: skip
     u = having(sector.fields, "displacement")
@@ -141,17 +168,18 @@ def case_audit(
             motions, mesh.points, global_vectors(sector, u[0], case, known=False), 1.0 / shares
         )
     held = None
-    if reaction is not None:
-        carried = _resolved_sum(sector, "reaction", case, chi)
-        held = holding(motions, mesh.points, carried / shares[:, None],
-                       0.0 if loads is None else loads.scale[0] / len(group))  # fmt: skip
+    if reaction is not None and reaction.forces:
+        carried = _resolved_sum(sector, reaction.forces, case, chi)
+        size = next((t.scale[0] for t in there if loads is not None and t.fields == loads.names),
+                    0.0)  # fmt: skip
+        held = holding(motions, mesh.points, carried / shares[:, None], size / len(group))
     sizes = magnitudes(
         body_size(group, mesh.points),
         global_vectors(sector, u[0], case) if u else None,
         global_vectors(sector, rotation[0], case) if rotation else None,
     )
-    return CaseAudit(case, chi, tuple(there), vanishing(group, chi, about), balanced, in_plane,
-                     motions, part, coefficients, held, sizes)  # fmt: skip
+    return CaseAudit(case, chi, tuple(there), vanishing(group, chi, about), balanced, words,
+                     in_plane, motions, part, coefficients, held, sizes)  # fmt: skip
 
 
 def plane_normal(sector: Sector) -> Floats | None:
@@ -171,29 +199,25 @@ def plane_normal(sector: Sector) -> Floats | None:
     return np.asarray(normal) if having(sector.fields, "displacement") else None
 
 
-def _total(
-    sector: Sector, case: LoadCase, chi: Factors, about: Floats, force: str, moment: str
-) -> Total | None:
-    """The resultant of all fields with a role; None if there are none."""
+def total_of(sector: Sector, case: LoadCase, chi: Factors, about: Floats, fields: Forces) -> Total:
+    """The resultant of fields of nodal forces."""
     mesh, group = sector.mesh, sector.group
-    forces, moments = having(sector.fields, force), having(sector.fields, moment)
-    f, m = _added(sector, forces, case), _added(sector, moments, case)
-    if f is None and m is None:
-        return None
+    f, m = _added(sector, fields.forces, case), _added(sector, fields.moments, case)
     f = np.zeros((mesh.point_count, 3)) if f is None else f
     own = of_sector(mesh.points, f, m, about)
     sizes = scale_of(mesh.points, f, m, about)
-    supports = _supports(sector, case, chi, f, m, about) if force == "reaction" else []
+    supports = []
+    if fields.role == "reaction" and fields.forces:
+        supports = _supports(sector, case, chi, f, m, about, fields.forces)
     return Total(
-        force, tuple(x.name for x in forces + moments), own, whole(own, group, chi),
-        tuple(per_copy(own, group, chi)), (len(group) * sizes[0], len(group) * sizes[1]),
-        tuple(supports),
+        fields.role, fields.names, own, whole(own, group, chi), tuple(per_copy(own, group, chi)),
+        (len(group) * sizes[0], len(group) * sizes[1]), tuple(supports),
     )  # fmt: skip
 
 
-def _resolved_sum(sector: Sector, role: str, case: LoadCase, chi: Factors) -> Numbers:
+def _resolved_sum(sector: Sector, fields: Sequence[Field], case: LoadCase, chi: Factors) -> Numbers:
     """(n, 3) forces with the shares of all copies added where copies share a node."""
-    total = _added(sector, having(sector.fields, role), case)
+    total = _added(sector, fields, case)
     assert total is not None
     classes, group = sector.seams.nodes, sector.group
     if not len(classes.items):
@@ -216,17 +240,17 @@ def _supports(
     forces: Numbers,
     moments: Numbers | None,
     about: Floats,
+    fields: Sequence[Field],
 ) -> list[tuple[SupportSet, Resultant, Resultant]]:
     """Each support with its resultant on the modelled part and in the whole body."""
     mesh, group = sector.mesh, sector.group
-    added = _resolved_sum(sector, "reaction", case, chi)
+    added = _resolved_sum(sector, fields, case, chi)
     sets = {
         f.name: f.values(sector.model)[:, 0] == 1
         for f in having(sector.fields, "set")
         if np.isin(f.values(sector.model), (0, 1)).all()
     }
-    single = any(f.values(case.model).dtype == np.float32
-                 for f in having(sector.fields, "reaction"))  # fmt: skip
+    single = any(f.stored_type(case.model) == np.float32 for f in fields)
     least = 1e-6 if single else 1e-9
     largest = float(np.linalg.norm(forces, axis=1).max(initial=0.0))
     added[np.linalg.norm(added, axis=1) <= least * largest] = 0.0
@@ -243,32 +267,50 @@ def _supports(
     return found
 
 
-def _balance(totals: list[Total]) -> tuple[tuple[str, ...], Balance] | None:
-    """Equilibrium of what must balance: loads and reactions, or all nodal forces by themselves.
+def _loads(forces: Sequence[Forces]) -> Forces | None:
+    """What is the load: applied forces, or the only other field of nodal forces."""
+    applied = [f for f in forces if f.role == "applied force"]
+    nodal = [f for f in forces if f.role == "nodal force"]
+    return applied[0] if applied else nodal[0] if len(nodal) == 1 else None
 
-    A field of nodal forces may hold the loads, or the forces of the elements, which include the
-    reactions: of what it may mean, the better balance counts.
+
+def _balance(
+    sector: Sector, case: LoadCase, chi: Factors, about: Floats, forces: Sequence[Forces]
+) -> tuple[tuple[tuple[str, ...], Balance] | None, str]:
+    """Equilibrium of loads and reactions, or of nodal forces that hold the reactions already.
+
+    Nodal forces without a word more may be the loads, or the forces of the elements, which at the
+    supports are the reactions.
     """
-    by_role = {t.role: t for t in totals}
-    reaction = by_role.get("reaction")
-    tried = []
-    if "applied force" in by_role and reaction is not None:
-        tried.append((by_role["applied force"], reaction))
-    elif "nodal force" in by_role:
-        forces = by_role["nodal force"]
-        none = Resultant(np.zeros(3), np.zeros(3), forces.body.about)
-        tried.append((forces, replace(forces, fields=(), body=none)))
-        if reaction is not None:
-            tried.append((forces, reaction))
-    found = [
-        (
-            (*a.fields, *b.fields),
-            balance(
-                a.body,
-                b.body,
-                *(max(x, _OF_REACTIONS * y) for x, y in zip(a.scale, b.scale, strict=True)),
-            ),
-        )
-        for a, b in tried
-    ]
-    return min(found, key=lambda pair: pair[1].relative, default=None)
+    loads = _loads(forces)
+    reaction = next((f for f in forces if f.role == "reaction"), None)
+    if loads is None:
+        several = any(f.role == "nodal force" for f in forces)
+        return None, (
+            "several fields of nodal forces, none called applied" if several
+            else "reactions, but no loads in the file" if reaction is not None
+            else "no nodal forces in the file"
+        )  # fmt: skip
+    a = total_of(sector, case, chi, about, loads)
+    none = Resultant(np.zeros(3), np.zeros(3), a.body.about)
+    if reaction is None:
+        alone = balance(a.body, none, *a.scale)
+        if loads.role == "nodal force" and alone.relative <= BALANCED:
+            return (a.fields, alone), ""
+        return None, "no reactions in the file"
+    b = total_of(sector, case, chi, about, reaction)
+    scales = [max(x, _OF_REACTIONS * y) for x, y in zip(a.scale, b.scale, strict=True)]
+    if loads.role == "nodal force" and _hold_reactions(sector, case, loads, reaction):
+        return (a.fields, balance(a.body, none, *scales)), ""
+    return ((*a.fields, *b.fields), balance(a.body, b.body, *scales)), ""
+
+
+def _hold_reactions(sector: Sector, case: LoadCase, loads: Forces, reaction: Forces) -> bool:
+    """Whether nodal forces are the reactions where there are any."""
+    f, r = _added(sector, loads.forces, case), _added(sector, reaction.forces, case)
+    if f is None or r is None:
+        return False
+    size = np.linalg.norm(r, axis=1)
+    held = size > 1e-6 * size.max(initial=0.0)
+    off = float(np.linalg.norm(f[held] - r[held]))
+    return bool(held.any()) and off <= 0.1 * float(np.linalg.norm(r[held]))

@@ -17,7 +17,10 @@ from expander.errors import CheckFailed
 from expander.fields import Field
 from expander.loadcases import LoadCase
 from expander.resolve import Numbers
+from expander.roles import having
 from expander.sector import Sector, Step
+
+OPPOSITE = "with the opposite sign it closes: its kind or the load word looks wrong"
 
 
 @dataclass(frozen=True, eq=False)
@@ -58,7 +61,9 @@ def continuity(sector: Sector, step: Step = lambda words: None) -> Continuity:
     """Compare both sides of every seam for every field of every case."""
     step("listing seams")
     seams = seams_of(sector)
-    nears = [Near(sector.mesh, sector.group, s) for s in seams]
+    named = having(sector.fields, "part")
+    parts = named[0].values(sector.model)[:, 0].astype(np.int64) if named else None
+    nears = [Near(sector.mesh, sector.group, s, parts) for s in seams]
     cases = []
     for case in sector.cases:
         step(f"comparing the sides, case {case.name}")
@@ -123,8 +128,13 @@ def value_verdict(jump: Jump, points: np.ndarray, scale: float, limit: float) ->
     sure = jump.lengths - jump.allowance > limit * scale
     words = ""
     result = OPEN if sure.any() else CLOSED
-    if scale == 0.0:
-        result, words = TOLD, "the field is zero"
+    known = np.isfinite(jump.own).any() and np.isfinite(jump.other).any()
+    if scale == 0.0 or not known:
+        result, words = TOLD, "the field is zero" if known else "there is nothing to compare"
+    elif sure.any() and jump.field.follows == "load" and jump.quantity.linear:
+        gap = np.linalg.norm(np.nan_to_num(jump.own + jump.other), axis=1)
+        if (gap[sure] <= limit * scale).all():
+            words = OPPOSITE
     elif beyond.any() and not sure.any():
         result, words = DOUBTFUL, "within the error of interpolating between nodes"
     over = sure if sure.any() else beyond

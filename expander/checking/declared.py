@@ -105,6 +105,18 @@ class _Sides:
         length = np.linalg.norm(gap, axis=1) - self.plain.allowance
         return np.asarray(np.maximum(length, 0.0) / self.scale)
 
+    def vanishes(self, limit: float) -> bool:
+        """Whether the values on both sides are no more than what a jump may be."""
+        sides = (np.nan_to_num(side) for side in (self.plain.own, self.plain.other))
+        most = max(float(np.linalg.norm(s, axis=1).max(initial=0.0)) for s in sides)
+        return most <= limit * self.scale
+
+
+def _held(sector: Sector, seam: Seam) -> bool:
+    """Whether a plane is declared as held."""
+    both = zip(sector.case.mirror, sector.group.planes, strict=True)
+    return any(m.held and p.name == seam.plane for m, p in both)
+
 
 def primary(f: Field) -> bool:
     """Whether a field must agree at seams and follows the load, so that it tells the load."""
@@ -156,7 +168,19 @@ def declared_against_found(
         fields=names,
     )  # fmt: skip
     closing = [w for w in (own, best) if worst[w.name] <= limit]
+    at_rest = [s for s in moving if s.vanishes(limit)]
+    if seam.kind == "sector faces" and len(at_rest) == len(moving):
+        return replace(told, result=TOLD, found=UNTOLD, alternative="",
+                       words="the values vanish on both faces, which go with any h")  # fmt: skip
     if own in closing and (same or best not in closing):
+        # A plane may be clamped though some other field, such as a temperature, is not.
+        slope = None
+        if at_rest and not same and seam.kind == "cut plane":
+            slope = _by_slope(sector, near, case, values, at_rest, told, own, best)
+        if slope is not None and slope.found == CLAMPED:
+            return slope
+        if _held(sector, seam) and not at_rest:
+            return replace(told, result=DOUBTFUL, words="declared as held, but it moves")
         return told
     if own in closing:
         return _by_slope(sector, near, case, values, moving, told, own, best)
@@ -280,9 +304,7 @@ def _by_slope(
 ) -> Found:
     """Both words close since the values vanish on the seam: the slope across it decides."""
     scatter = sector.case.seam.scatter
-    held = next((m.held for m, p in zip(sector.case.mirror, sector.group.planes, strict=True)
-                 if p.name == near.seam.plane), False)  # fmt: skip
-    if held:
+    if _held(sector, near.seam):
         return replace(told, found=CLAMPED, words="the values vanish there under both words, as "
                        "declared (held = true)")  # fmt: skip
     slopes = {}
@@ -328,20 +350,28 @@ def _by_recovered(
     if not stresses or not others:
         return None
     scatter = sector.case.seam.scatter
-    times = {}
+    times, results = {}, {}
     for word in (own, *others):
         chi = np.full(len(sector.group), word.chi.real)
         found = [recovered(near, f, case, values[f.name], chi, scatter) for f in stresses]
-        judged = [v.times for v in found if v is not None and v.times is not None]
-        times[word.name] = max(judged, default=0.0)
+        known = [v for v in found if v is not None and v.times is not None]
+        times[word.name] = max((v.times or 0.0 for v in known), default=0.0)
+        results[word.name] = worst_of([v.result for v in known])
     best = min(others, key=lambda w: times[w.name])
     told = Found(
         near.seam.name, case.name, own.name, own.name, CLOSED, float("nan"), best.name,
         kink=times[own.name], alternative_kink=times[best.name],
         fields=tuple(f.name for f in stresses), words="told by the traction alone",
     )  # fmt: skip
-    if times[own.name] <= scatter:
+    mine, other = results[own.name], results[best.name]
+    if mine not in (CLOSED, OPEN) or other not in (CLOSED, OPEN):
+        return replace(told, result=DOUBTFUL, found=UNTOLD, words="there is no displacement, and "
+                       "no layer of cells beside the seam whose traction could tell")  # fmt: skip
+    if mine == other == CLOSED:
+        return replace(told, result=DOUBTFUL, found=UNTOLD, words="the traction closes under both "
+                       "words, and there is no displacement that could tell")  # fmt: skip
+    if mine == CLOSED:
         return told
-    if times[best.name] <= scatter:
+    if other == CLOSED:
         return replace(told, result=OPEN, found=best.name, line=best.line)
     return replace(told, result=DOUBTFUL, found=UNTOLD)

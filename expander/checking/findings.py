@@ -16,11 +16,12 @@ from expander.audit.statics import CaseAudit, Total
 from expander.audit.totals import Resultant
 from expander.auditing import Audit
 from expander.casefile import ExpectTable
-from expander.checking.continuity import Continuity
+from expander.checking.continuity import OPPOSITE, Continuity
 from expander.checking.declared import CLAMPED, Found
 from expander.checking.seamlist import Seam
-from expander.checking.verdicts import DOUBTFUL, OPEN, Verdict
-from expander.loadcases import Result
+from expander.checking.verdicts import DOUBTFUL, OPEN, TOLD, Verdict
+from expander.errors import InputError
+from expander.loadcases import Result, results_of
 from expander.seams import MOST_OF_EDGE
 from expander.sector import Sector
 from expander.topology import local_edges
@@ -55,8 +56,14 @@ def findings(continuity: Continuity, audit: Audit | None) -> list[Finding]:
     found += [f for x in continuity.found for f in _of_declared(x, apart)]
     found += [f for v in continuity.verdicts for f in _of_verdict(v, told, apart)]
     found += _of_near_misses(continuity.sector)
+    found += _of_nothing(continuity)
     found += [
-        Finding(NOTE, name, f"{count} values are not finite numbers; they were not compared")
+        Finding(
+            NOTE,
+            name,
+            f"{count} values are not finite numbers; they were not compared, and "
+            "count as zero in totals",
+        )
         for name, count in continuity.sector.invalid_numbers.items()
     ]
     if audit is not None:
@@ -71,6 +78,23 @@ def overall(found: list[Finding]) -> str:
     return "failed" if FAILS in weights else "doubtful" if DOUBTS in weights else "passed"
 
 
+def _of_nothing(continuity: Continuity) -> Iterator[Finding]:
+    """A case of which nothing was compared anywhere has not passed anything."""
+    for c in continuity.cases:
+        if not any(v.result != TOLD and v.scale > 0.0 for v in c.verdicts):
+            yield Finding(DOUBTS, "seams", f"case {c.case.name!r}: nothing was compared at any "
+                          "seam: no field with values there, or no copies that touch")  # fmt: skip
+    for s in continuity.seams:
+        if not s.touches or s.paired.all():
+            continue
+        names = [x.name for x in continuity.sector.fields if x.follows == "load"
+                 and (x.on == "cells" or x.seam == "recovered") and x.kind != "label"]  # fmt: skip
+        if names:
+            yield Finding(DOUBTS, s.name, f"{', '.join(map(repr, names))} and the slope of the "
+                          "others were not compared where the meshes differ",
+                          "Look at both sides: --plot, --csv.")  # fmt: skip
+
+
 def _of_seam(sector: Sector, seam: Seam) -> Iterator[Finding]:
     against = seam.against
     if against is None:
@@ -80,8 +104,8 @@ def _of_seam(sector: Sector, seam: Seam) -> Iterator[Finding]:
         part = 100 * against.against_area / total
         yield Finding(
             DOUBTS if seam.measure else NOTE, seam.name,
-            f"{part:.3g} % of the area lies against the copy with another mesh: compared by "
-            "interpolation, not merged",
+            f"{part:.3g} % of the area lies against the copy with another mesh: fields that must "
+            "agree are compared by interpolation there, and not merged",
             "Mesh both faces alike if the body is to be joined there.",
         )  # fmt: skip
     if against.apart_area > _GAP_SHOWN * total:
@@ -129,8 +153,9 @@ def _of_declared(x: Found, apart: bool) -> Iterator[Finding]:
         weight = NOTE
     yield Finding(
         weight, x.seam,
-        f"case {x.case!r} is declared {x.declared}, found: {x.found}{measured}"
-        + (f"; {x.words}" if x.words else "") + nodes,
+        f"case {x.case!r} is declared {x.declared}, "
+        + (f"and so it is found{measured}" if x.found == x.declared else
+           f"found: {x.found}{measured}") + (f"; {x.words}" if x.words else "") + nodes,
         x.line,
     )  # fmt: skip
 
@@ -141,7 +166,7 @@ def _of_verdict(v: Verdict, told: set[tuple[str, str]], apart: bool) -> Iterator
     at = ", ".join(f"{c:.5g}" for c in v.position)
     size = (
         f"{v.times:.3g} times the scatter of the cells around"
-        if v.times is not None
+        if v.times
         else f"{100 * v.relative:.3g} % of its largest value, limit {100 * v.limit:.3g} %"
     )
     what = {"value": "jumps", "traction": "has a jump in its traction", "flux": "jumps in its "
@@ -152,9 +177,11 @@ def _of_verdict(v: Verdict, told: set[tuple[str, str]], apart: bool) -> Iterator
     if v.words:
         words += f"; {v.words}"
     weight = FAILS if v.result == OPEN else DOUBTS
-    if apart and v.result == OPEN:
-        weight = NOTE
-        words += '; kept apart (seam.open = "keep apart")'
+    if apart and v.result == OPEN and v.words != OPPOSITE:
+        weight = DOUBTS if v.measure == "value" else NOTE
+        words += (
+            '; kept apart (seam.open = "keep apart"): as it should be only at a crack or contact'
+        )
     elif (v.seam, v.case) in told:
         words += " (see the load of this seam)"
     yield Finding(weight, v.seam, words)
@@ -202,15 +229,23 @@ def _of_case(case: CaseAudit, balanced: bool, mode_shape: bool) -> Iterator[Find
     if case.balanced is not None and case.balanced[1].relative > BALANCED:
         fields, b = case.balanced
         ratio = "" if b.ratio is None else f": the loads are {b.ratio:.4g} times the reactions"
-        share = "" if case.in_plane is None else f". {case.in_plane.words}"
+        share = ""
+        if case.in_plane is not None and case.in_plane.fraction > 0.0:
+            share = f". {case.in_plane.words}"
+        reversed_ = b.ratio is not None and abs(b.ratio + 1.0) < 1e-3
+        if reversed_:
+            ratio = ": the reactions look like forces on the supports, with the sign turned round"
         yield Finding(
-            FAILS if balanced else NOTE, "balance",
+            (DOUBTS if reversed_ else FAILS) if balanced else NOTE, "balance",
             f"{name}: {' and '.join(fields)} do not balance in the whole body{ratio} (left over: "
             f"force {_vector(b.force)}, moment {_vector(b.moment)}, {100 * b.relative:.3g} % of "
             f"the loads){share}",
-            "If loads are missing from the file (gravity, pressure, temperature does no harm), "
-            "expect.balance = false.",
+            "Give reactions as forces on the body." if reversed_ else
+            "If loads such as gravity or pressure, or some reactions, are not in the file: "
+            "expect.balance = false. Thermal loads have no resultant.",
         )  # fmt: skip
+    elif case.balanced is None and case.totals:
+        yield Finding(NOTE, "balance", f"{name}: not tried, {case.not_balanced}")
     if case.motions.count:
         words = f"{name}: the load behaviour leaves free {'; '.join(case.motions.words)}"
         if case.held is not None:
@@ -246,11 +281,18 @@ def _vector(v: np.ndarray) -> str:
     return "(" + ", ".join(f"{c:.5g}" for c in np.asarray(v).tolist()) + ")"
 
 
-def total_of(audit: Audit, result: Result, role: str) -> tuple[Resultant, float, float] | None:
-    """A total of the whole body in a result, cases added up, and the scales of force and moment."""
+def summed(
+    audit: Audit, result: Result, fields: tuple[str, ...]
+) -> tuple[Resultant, float, float] | None:
+    """A total of the whole body in a result, cases added up, and the scales of force and moment.
+
+    Parameters
+    ----------
+    fields : names of the fields of nodal forces that make up the total.
+    """
     parts = []
     for k, a in result.terms:
-        total = next((t for t in audit.cases[k].totals if t.role == role), None)
+        total = next((t for t in audit.cases[k].totals if t.fields == fields), None)
         if total is None:
             return None
         parts.append((a, total))
@@ -261,6 +303,31 @@ def total_of(audit: Audit, result: Result, role: str) -> tuple[Resultant, float,
     )  # fmt: skip
     force, moment = (sum(abs(a) * t.scale[i] for a, t in parts) for i in (0, 1))
     return added, force, moment
+
+
+def _meant(sector: Sector, audit: Audit, expect: ExpectTable) -> Total | None:
+    """The total that is compared: of the field named, else of the loads, else of the reactions."""
+    totals = audit.cases[0].totals
+    if expect.field is not None:
+        found = next((t for t in totals if t.fields[0] == expect.field), None)
+        if found is None:
+            known = ", ".join(t.fields[0] for t in totals) or "none"
+            raise InputError(
+                f"expect.field = {expect.field!r} is no field of nodal forces, or is added to "
+                "another.",
+                f"Expected one of: {known}.",
+            )
+        return found
+    for role in _LOADS:
+        listed = [t for t in totals if t.role == role]
+        if len(listed) == 1:
+            return listed[0]
+        if listed:
+            names = ", ".join(t.fields[0] for t in listed)
+            raise InputError(
+                f"[expect]: several fields may be meant: {names}.", 'Add field = "..".'
+            )
+    return None
 
 
 _LOADS = ("applied force", "nodal force", "reaction")
@@ -278,13 +345,17 @@ def _of_expected(sector: Sector, audit: Audit, expect: ExpectTable) -> Iterator[
                           "Check density, thickness, and masses in a cut plane, which the "
                           "modelled part has by half.")  # fmt: skip
         else:
-            yield Finding(NOTE, "mass", f"mass {found:.6g}, as expected")
+            yield Finding(NOTE, "mass", f"mass {found:.6g} (from {audit.mass_from}), as expected")
     if expect.pieces is not None and expect.pieces != audit.pieces.after:
         yield Finding(FAILS, "pieces", f"the whole body has {audit.pieces.after} connected pieces, "
                       f"expected {expect.pieces}")  # fmt: skip
     if expect.force is None and expect.moment is None:
         return
-    for result in sector.results:
+    results = sector.results
+    if expect.result is not None:  # also one that is not written, as a case beside sums
+        every = {"output": sector.case.output.model_copy(update={"results": [expect.result]})}
+        results = results_of(sector.case.model_copy(update=every), sector.cases)
+    for result in results:
         if expect.result not in (None, result.name):
             continue
         yield from _of_expected_total(sector, audit, expect, result)
@@ -293,21 +364,19 @@ def _of_expected(sector: Sector, audit: Audit, expect: ExpectTable) -> Iterator[
 def _of_expected_total(
     sector: Sector, audit: Audit, expect: ExpectTable, result: Result
 ) -> Iterator[Finding]:
-    role = next((r for r in _LOADS if total_of(audit, result, r) is not None), None)
-    if expect.field is not None:
-        role = next((t.role for c in audit.cases for t in c.totals if expect.field in t.fields),
-                    None)  # fmt: skip
-    if role is None:
+    meant = _meant(sector, audit, expect)
+    if meant is None:
         yield Finding(FAILS, "expected", f"result {result.name!r}: there is no field of forces "
                       "to compare with what is expected",
                       'Declare one with seam = "sum".')  # fmt: skip
         return
-    found = total_of(audit, result, role)
+    found = summed(audit, result, meant.fields)
     assert found is not None
+    role = meant.role
     total, force_scale, moment_scale = found
     total = total.at(expect.about)
     sign = -1.0 if role == "reaction" and expect.field is None else 1.0
-    source = f"{'minus the reactions' if sign < 0 else role + 's'}, result {result.name!r}"
+    source = f"{'minus the reactions' if sign < 0 else meant.fields[0]}, result {result.name!r}"
     both = (("force", expect.force, total.force, force_scale),
             ("moment", expect.moment, total.moment, moment_scale))  # fmt: skip
     for name, want, have, scale in both:

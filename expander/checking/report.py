@@ -204,7 +204,8 @@ def _audit(sector: Sector, audit: Audit) -> dict[str, Any]:
             for o in audit.overlaps.found
         ],
         "sections": [
-            {"name": name, "result": result, "force": plain(s.force), "moment": plain(s.moment),
+            {"name": name, "result": result, "stress": audit.section_stress,
+             "force": plain(s.force), "moment": plain(s.moment),
              "about": plain(_about(sector, name, s)), "centroid": plain(s.centroid),
              "area": plain(s.area), "copies": list(s.copies)}
             for name, result, s in audit.sections
@@ -253,6 +254,7 @@ def _case(c: CaseAudit) -> dict[str, Any]:
         "vanish_about": plain(c.vanishing.about),
         "totals": [_total(t) for t in c.totals],
         "balance": balance,
+        "not_balanced": c.not_balanced or None,
         "rigid_motions": [
             {"words": w, "amount": plain(a), "reactions_work": plain(h)}
             for w, a, h in zip(

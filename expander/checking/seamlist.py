@@ -56,6 +56,7 @@ class FacePair:
     normals: Floats
     areas: Floats
     shares: Floats
+    normals_across: Floats
 
     @property
     def cells(self) -> Ints:
@@ -275,7 +276,13 @@ def _meeting(
     marked[i] = marked[j] = True
     near = cells_touching(mesh, marked)
     # A cell that lies in the seam altogether, as a web in a cut plane, has no face across it.
-    inside = np.logical_and.reduceat(marked[_connectivity(mesh, near)], _starts(mesh, near))
+    # A sector one cell thick has its nodes on both faces, but on neither of them all.
+    inside: NDArray[np.bool_] = np.zeros(len(near), dtype=bool)
+    for side in (i, j) if len(near) else ():
+        side_nodes = np.zeros(mesh.point_count, dtype=bool)
+        side_nodes[side] = True
+        whole = np.logical_and.reduceat(side_nodes[_connectivity(mesh, near)], _starts(mesh, near))
+        inside |= np.asarray(whole)
     if outer is None or inside.any():
         outer = outer_facets(mesh, near[~inside]) if len(near) else []
     token = tokens(mesh.point_count)
@@ -298,7 +305,14 @@ def _meeting(
         if len(here):
             mine = Facets(f.nodes[here], f.vtk_type, f.cells[here])
             found.append(
-                FacePair(mine, f.cells[there], out[here], areas(mesh, mine), shares(mesh, mine))
+                FacePair(
+                    mine,
+                    f.cells[there],
+                    out[here],
+                    areas(mesh, mine),
+                    shares(mesh, mine),
+                    out[there],
+                )
             )
     return found
 

@@ -25,7 +25,7 @@ from expander.checking.jumps import Jump, carried, quantity_of
 from expander.checking.leaveout import standing_out, without_cells, without_nodes
 from expander.checking.neighbours import Surroundings, surroundings
 from expander.checking.seamlist import Seam
-from expander.checking.verdicts import CLOSED, DOUBTFUL, OPEN, Verdict, verdict_of
+from expander.checking.verdicts import CLOSED, DOUBTFUL, OPEN, TOLD, Verdict, verdict_of
 from expander.closing import largest_value
 from expander.fields import Field
 from expander.frames import Global
@@ -42,6 +42,7 @@ from expander.topology import Ints
 SMALL = 1e-3
 # Two sides in one ratio that far from 1, and so nearly exactly, are not the mesh's scatter.
 RATIO, EXACT = 1e-3, 0.1
+_SMOOTH = np.cos(np.deg2rad(5.0))  # faces that meet at a larger angle are a fold
 
 
 def is_stress(field: Field) -> bool:
@@ -51,11 +52,17 @@ def is_stress(field: Field) -> bool:
 
 @dataclass(frozen=True, eq=False)
 class Near:
-    """A seam and the cells around it."""
+    """A seam and the cells around it.
+
+    Attributes
+    ----------
+    parts : (m,) part that each cell belongs to; None if that is not known.
+    """
 
     mesh: Mesh
     group: Group
     seam: Seam
+    parts: Ints | None = None
 
     @cached_property
     def around(self) -> Surroundings:
@@ -87,6 +94,30 @@ class Near:
             normal=_joined([f.normals for f in faces], np.float64).reshape(-1, 3),
             area=_joined([f.areas for f in faces], np.float64),
         )  # fmt: skip
+
+    @cached_property
+    def folded(self) -> NDArray[np.bool_]:
+        """(f,) faces over which shells or beams fold."""
+        seam = self.by_face
+        Q = np.stack([p.Q for p in self.group.placements])[seam.via]
+        across = _joined([f.normals_across for f in self.seam.faces], np.float64).reshape(-1, 3)
+        facing = -np.einsum("ki,kij,kj->k", seam.normal, Q, across)
+        return np.asarray(facing < _SMOOTH)
+
+    @cached_property
+    def interface(self) -> NDArray[np.bool_]:
+        """(f,) faces where different parts meet."""
+        if self.parts is None:
+            return np.zeros(len(self.here), dtype=bool)
+        part = self.parts[self.around.cells]
+        return np.asarray(part[self.here] != part[self.across])
+
+    def not_comparable(self, measure: str) -> NDArray[np.bool_]:
+        """(f,) faces where a measure may jump by right: over a fold the normals differ, and
+        between different parts all but the traction and the flux."""
+        if measure in ("traction", "flux"):
+            return self.folded
+        return np.asarray(self.folded | self.interface)
 
     @cached_property
     def here(self) -> Ints:
@@ -192,7 +223,11 @@ def recovered(
     if len(rows):
         own = np.concatenate([seam.nodes[rows, None], seam.partners[rows]], axis=1)
         yardstick[rows] = np.fmin(yardstick[rows], without_nodes(around, beside, own))
-    return judged(jump, mesh.points, yardstick, scale, measure, limit)
+    node_off = np.zeros(mesh.point_count, dtype=bool)
+    node_off[near.corners[near.not_comparable(measure)]] = True
+    return _where_comparable(
+        jump, node_off[seam.nodes], mesh.points, yardstick, scale, measure, limit, None
+    )
 
 
 def _measure(field: Field) -> tuple[str, Quantity | None]:
@@ -219,7 +254,32 @@ def _at_faces(
     jump = _contracted(near.group, seam, field, case, per_cell[near.here], per_cell[near.across],
                        q, chi)  # fmt: skip
     yardstick, sure = near.face_yardstick(per_cell, jump.lengths)
-    return judged(jump, near.mesh.points, yardstick, scale, measure, limit, sure)
+    return _where_comparable(
+        jump, near.not_comparable(measure), near.mesh.points, yardstick, scale, measure, limit, sure
+    )
+
+
+def _where_comparable(
+    jump: Jump,
+    off: NDArray[np.bool_],
+    points: NDArray[np.floating],
+    yardstick: Floats,
+    scale: float,
+    measure: str,
+    limit: float,
+    sure: NDArray[np.bool_] | None,
+) -> Verdict:
+    """The verdict without the rows that may differ by right, (k,): folds and different parts."""
+    if off.any():
+        at_rest = np.zeros((), dtype=jump.own.dtype)
+        jump = replace(jump, own=np.where(off[:, None], at_rest, jump.own),
+                       other=np.where(off[:, None], at_rest, jump.other))  # fmt: skip
+    found = judged(jump, points, yardstick, scale, measure, limit, sure)
+    if off.all() and len(off):
+        return replace(found, result=TOLD, words="shells fold here, or different parts meet")
+    if not np.isfinite(jump.own).any() or not np.isfinite(jump.other).any() or scale == 0.0:
+        return replace(found, result=TOLD, words="there is nothing to compare")
+    return found
 
 
 def _contracted(

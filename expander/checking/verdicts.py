@@ -8,7 +8,7 @@ Three measures, each against its own limit:
 - *traction* (stress), *flux* (heat flux and other recovered vectors' normal part) and *kink* (the
   jump of the normal derivative of a field that must agree): discrete fields jump from cell to cell
   everywhere, so the limit is `seam.scatter` times the jumps between neighbouring cells near the
-  seam; 4 by default, see DEVELOPERS.md for the solutions it was set by.
+  seam; 6 by default, see DEVELOPERS.md for the solutions it was set by.
 - *systematic*: recovered values on both sides that stand in one ratio other than 1.
 """
 

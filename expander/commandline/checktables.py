@@ -134,15 +134,20 @@ def _print_audit(console: Console, audit: dict[str, Any]) -> None:
     facts.add_column()
     for c in audit["cases"]:
         words = c["vanish_by_symmetry"]
-        if c["balance"] is not None:
+        if "vanish" in words and "no force" not in words:
+            words += f" (moments about {_triple(c['vanish_about'])})"
+        if c["balance"] is None:
+            words += f"; balance not tried: {c['not_balanced']}"
+        else:
             words += f"; {' + '.join(c['balance']['fields'])} left over: "
             words += _percent(c["balance"]["relative"])
         facts.add_row("balance", escape(f"{c['name']}: {words}"))
     m, direct = audit["mass"]["whole"], audit["mass"]["whole_by_cells"]
     sizes = [f"{k} {m[k]:.6g}" for k in ("volume", "area", "length") if m[k]]
+    by_cells = ", ".join(f"{direct[k]:.6g}" for k in ("volume", "area", "length") if m[k])
     facts.add_row("mass", escape(f"{m['mass']:.6g} (from {audit['mass']['from']}), centre "
                                  f"{_triple(m['centre'])}, {', '.join(sizes)}; by the copies' own "
-                                 f"cells {direct['volume'] or direct['area']:.6g}"))  # fmt: skip
+                                 f"cells {by_cells}"))  # fmt: skip
     if m["mass"]:
         size = max(abs(v) for row in m["inertia"] for v in row)
         rows = "; ".join(_triple(row, size).strip("()") for row in m["inertia"])
@@ -151,7 +156,9 @@ def _print_audit(console: Console, audit: dict[str, Any]) -> None:
     facts.add_row("pieces", escape(f"{p['before']} before joining, {p['after']} after: "
                                    + "; ".join(x["words"] for x in p["list"][:4])))  # fmt: skip
     for s in audit["sections"]:
-        words = f"{s['name']}, {s['result']}: force {_triple(s['force'])}, moment "
+        words = (
+            f"{s['name']}, {s['result']}, from {s['stress']}: force {_triple(s['force'])}, moment "
+        )
         words += f"{_triple(s['moment'])} about {_triple(s['about'])}, area {s['area']:.5g}"
         facts.add_row("section", escape(words))
     console.print(facts)

@@ -19,7 +19,7 @@ import pyvista as pv
 from numpy.typing import NDArray
 from scipy.linalg import eigh
 from scipy.sparse import coo_matrix, csc_matrix, csr_matrix, eye, kron
-from scipy.sparse.linalg import eigsh, splu
+from scipy.sparse.linalg import LinearOperator, eigsh, splu
 
 from demo_cases.solver import (
     CutPlane,
@@ -182,12 +182,11 @@ class Ring:
             if partner.get(n, n) != n:
                 parts.append((partner[n], turn @ basis, columns))
             columns += basis.shape[1]
-        at = [(3 * n + np.arange(3)[:, None] + 0 * b.real.astype(int),
-               c + np.arange(b.shape[1]) + 0 * b.real.astype(int)) for n, b, c in parts]  # fmt: skip
+        i = [np.repeat(3 * n + np.arange(3), b.shape[1]) for n, b, _ in parts]
+        j = [np.tile(c + np.arange(b.shape[1]), 3) for _, b, c in parts]
         values = np.concatenate([b.ravel() for _, b, _ in parts])
-        i = np.concatenate([a.ravel() for a, _ in at])
-        j = np.concatenate([a.ravel() for _, a in at])
-        return csc_matrix((values, (i, j)), shape=(3 * count, columns))
+        at = np.concatenate(i), np.concatenate(j)
+        return csc_matrix((values, at), shape=(3 * count, columns))
 
     def modes(self, h: int, count: int) -> tuple[Floats, list[Complex]]:
         """Lowest omega^2 and shapes (n, 3) with f^H M f = 1 on the sector."""
@@ -198,7 +197,9 @@ class Ring:
         else:  # shifted below zero, where rigid-body motions leave it regular
             start = np.random.default_rng(1).normal(size=K.shape[0]).astype(complex)
             shift = -1e-7 * K.diagonal().real.max() / M.diagonal().real.max()
-            square, shapes = eigsh(K, count, M, sigma=shift, v0=start)
+            factors = splu(csc_matrix(K - shift * M), permc_spec="MMD_AT_PLUS_A")
+            inverse = LinearOperator(K.shape, factors.solve, dtype=complex)
+            square, shapes = eigsh(K, count, M, sigma=shift, v0=start, OPinv=inverse)
         order = np.argsort(square)
         return square[order], [(T @ q).reshape(-1, 3) for q in shapes.T[order]]
 
