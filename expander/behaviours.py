@@ -41,7 +41,8 @@ class Behaviour:
     def words(self) -> str:
         parts = [f"{name} {word}" for name, word in self.load.items()]
         if self.nodal_diameters:
-            parts.append(f"{self.nodal_diameters} nodal diameters")
+            plural = "s" * (self.nodal_diameters != 1)
+            parts.append(f"{self.nodal_diameters} nodal diameter{plural}")
         return ", ".join(parts) or "the same in every sector"
 
 

@@ -226,8 +226,10 @@ def _wave_data(body: WholeBody, result: Result, moment: float | None) -> dict[st
     words = [f"field = Re(amplitude * exp({body.case.model.time_factor}))"]
     running = direction_words(result, body.cases)
     words += [running] if running else []
-    if result.mean is not None and moment is not None:
-        words.append(f"with the mean {body.cases[result.mean].name} added")
+    if result.mean is not None:
+        name = body.cases[result.mean].name
+        words.append(f"with the mean {name} added" if moment is not None
+                     else f"peaks are those of the sum with the mean {name}")  # fmt: skip
     found: dict[str, Any] = {"time": words}
     if moment is not None:
         found["phase_degrees"] = np.array([moment])

@@ -54,7 +54,7 @@ def run(source: Path, folder: Path, size: tuple[int, int], trial: Trial) -> list
 
 def _draw(expansion: Expansion, pictures: list[Path], size: tuple[int, int]) -> None:
     for target, file in zip(expansion.targets, pictures, strict=True):
-        draw(scene_of(expansion.body, target.result), file, size)
+        draw(scene_of(expansion.body, target.result, moment=target.moment), file, size)
         click.echo(f"picture {file}")
 
 

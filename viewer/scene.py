@@ -69,6 +69,7 @@ def scene_of(
     component: str | None = None,
     factor: float | None = None,
     towards: ArrayLike | None = None,
+    moment: float | None = None,
 ) -> Scene:
     """The scene of one result of a prepared case.
 
@@ -78,17 +79,19 @@ def scene_of(
     factor : of the deformation; the largest displacement is drawn as about 6 % of the body's
         size if None.
     towards : direction from the body to the eye; a pleasant one if None.
+    moment : of the cycle of a complex result, in degrees of omega t; its beginning if None.
 
     Raises
     ------
     InputError
         For an unknown field or component, with those that there are.
     """
-    fields = fields_in(body, result, _moment(body, result))
+    at = _moment(body, result) if moment is None else moment
+    fields = fields_in(body, result, at)
     shown = choose(fields, field, component, left_out_of(body, result))
     moving = moving_field(fields)
-    grid = _grid(body, result, shown, moving)
-    sector = _grid(replace(body, copies=(0,)), result, shown, moving)
+    grid = _grid(body, result, shown, moving, at)
+    sector = _grid(replace(body, copies=(0,)), result, shown, moving, at)
     values = [_values(g) for g in (grid, sector)] if shown else []
     largest = None
     if moving is not None:
@@ -105,7 +108,7 @@ def scene_of(
     else:
         view = View.looking_from(towards)
     return Scene(
-        title=_title(body, result),
+        title=_title(body, result, at),
         words=_words(body, result),
         source=_source(body),
         sector=sector,
@@ -122,14 +125,18 @@ def scene_of(
 
 
 def _grid(
-    body: WholeBody, result: Result, shown: Shown | None, moving: Field | None
+    body: WholeBody,
+    result: Result,
+    shown: Shown | None,
+    moving: Field | None,
+    moment: float | None,
 ) -> pyvista.UnstructuredGrid:
     """The copies of `body` with no more arrays than the picture needs."""
     from expander.writers.grid import build_grid
 
     wanted = {f.name for f in (shown.field if shown else None, moving) if f is not None}
     arrays = [
-        a for a in arrays_of(body, result, _moment(body, result))
+        a for a in arrays_of(body, result, moment)
         if a.section not in ("points", "cells") or a.name == "copy" or a.name in wanted
     ]  # fmt: skip
     grid = build_grid(arrays, {})
@@ -181,10 +188,14 @@ def _source(body: WholeBody) -> str:
     return f"{source.parent.name}/{source.name}".lstrip("/")
 
 
-def _title(body: WholeBody, result: Result) -> str:
+def _title(body: WholeBody, result: Result, moment: float | None) -> str:
     """The result's name; a single result has none of its own and is called after its model."""
     name = result.name if body.case.case else body.cases[0].model.source.stem
-    return name if _moment(body, result) is None else f"{name}, beginning of the cycle"
+    if moment is None:
+        return name
+    mean = f" + {body.cases[result.mean].name}" if result.mean is not None else ""
+    when = "beginning of the cycle" if moment == 0.0 else f"{moment:g} degrees into the cycle"
+    return f"{name}{mean}, {when}"
 
 
 def _words(body: WholeBody, result: Result) -> str:

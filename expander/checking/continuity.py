@@ -132,7 +132,8 @@ def value_verdict(jump: Jump, points: np.ndarray, scale: float, limit: float) ->
     if scale == 0.0 or not known:
         result, words = TOLD, "the field is zero" if known else "there is nothing to compare"
     elif sure.any() and jump.field.follows == "load" and jump.quantity.linear:
-        gap = np.linalg.norm(np.nan_to_num(jump.own + jump.other), axis=1)
+        both = np.nan_to_num(jump.own + jump.other, posinf=0.0, neginf=0.0)
+        gap = np.linalg.norm(both, axis=1)
         if (gap[sure] <= limit * scale).all():
             words = OPPOSITE
     elif beyond.any() and not sure.any():

@@ -107,7 +107,8 @@ class _Sides:
 
     def vanishes(self, limit: float) -> bool:
         """Whether the values on both sides are no more than what a jump may be."""
-        sides = (np.nan_to_num(side) for side in (self.plain.own, self.plain.other))
+        sides = (np.nan_to_num(side, posinf=0.0, neginf=0.0)
+                 for side in (self.plain.own, self.plain.other))  # fmt: skip
         most = max(float(np.linalg.norm(s, axis=1).max(initial=0.0)) for s in sides)
         return most <= limit * self.scale
 

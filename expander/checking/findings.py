@@ -301,6 +301,8 @@ def summed(
         np.sum([a * t.body.force for a, t in parts], axis=0),
         np.sum([a * t.body.moment for a, t in parts], axis=0), first.body.about,
     )  # fmt: skip
+    if result.real:
+        added = Resultant(added.force.real, added.moment.real, added.about)
     force, moment = (sum(abs(a) * t.scale[i] for a, t in parts) for i in (0, 1))
     return added, force, moment
 

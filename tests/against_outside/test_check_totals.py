@@ -229,7 +229,7 @@ def test_inertia_of_a_cuboid(tmp_path, make):
     planes = [(f"p{k}", SKEW[:, k], [0, 0, 0]) for k in range(3)]
     mass = 7.8 * a * b * c
     found = massive(tmp_path, mesh, 7.8, mirror=mirrors(*planes), expect={"mass": mass})
-    assert found.verdict == "passed", found.all_findings
+    assert found.verdict == "doubtful", "nothing was compared: the model has no results"
     whole = found.facts["audit"]["mass"]["whole"]
     table = mass / 12 * np.diag([b**2 + c**2, c**2 + a**2, a**2 + b**2])
     assert whole["mass"] == pytest.approx(mass, rel=1e-12)
@@ -254,7 +254,7 @@ def test_inertia_of_a_hollow_cylinder(tmp_path, halves):
     )
     planes = {"mirror": mirrors(("mid", "z", [0, 0, 0]))} if halves else {}
     found = massive(tmp_path, mesh, 2.7, cyclic={"sectors": N}, **planes)
-    assert found.verdict == "passed", found.all_findings
+    assert found.verdict == "doubtful", "nothing was compared: the model has no results"
     whole = found.facts["audit"]["mass"]["whole"]
     mass = 2.7 * np.pi * (R**2 - r**2) * H
     across = mass * (3 * (R**2 + r**2) + H**2) / 12
