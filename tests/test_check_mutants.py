@@ -8,10 +8,11 @@ from typing import Any
 
 import numpy as np
 import pytest
-from meshes import Sector, box, case_of
+from meshes import Sector, box, case_of, ring
 
 from expander.audit.equilibrium import in_plane_share
-from expander.audit.overlap import Overlap, Overlaps
+from expander.audit.overlap import Overlap, Overlaps, overlaps
+from expander.audit.statics import plane_normal
 from expander.audit.totals import Resultant
 from expander.auditing import Audit, audit
 from expander.behaviours import Behaviour, factors
@@ -33,6 +34,7 @@ from expander.errors import InputError
 from expander.fields import Field
 from expander.frames import Global
 from expander.groups import CutPlane, CyclicAxis, make_group
+from expander.images import fields_in
 from expander.loadcases import LoadCase, Result, _wave, direction_words
 from expander.model import Mesh
 from expander.phases import _telling
@@ -549,3 +551,89 @@ def test_what_tells_the_direction_of_a_wave() -> None:
     recovered = replace(f, seam="recovered")
     sector: Any = type("Sector", (), {"fields": (f, recovered, replace(f, second=()))})()
     assert _telling(sector) == ([f], [recovered])
+
+
+# --- the audit ------------------------------------------------------------------------------------
+
+
+def audit_of(folder: Path, sector: Sector, tables: dict[str, Any], **points: np.ndarray) -> Audit:
+    read = read_sector(case_of(folder, sector, tables, points))
+    return audit(read, {c.name: c.chi for c in read.cases})
+
+
+def test_supports_on_a_turned_seam_make_the_whole_reaction(tmp_path: Path) -> None:
+    """One node of the first face reacts; the node that it meets has the same reaction, turned.
+    The torque of both halves around the ring is that of the whole."""
+    sector = ring(5)
+    reaction = np.zeros((len(sector.points), 3))
+    reaction[np.argmax(sector.points[:, 0])] = [3.0, 4.0, 5.0]
+    body = audit_of(tmp_path, sector, {"cyclic": {"sectors": 5}}, reaction=reaction)
+    (total,) = (t for t in body.cases[0].totals if t.role == "reaction")
+    assert len(total.supports) == 2
+    torque = sum(s.moment[2] for _, _, s in total.supports)
+    assert torque == pytest.approx(total.body.moment[2])
+    assert torque == pytest.approx(5 * 2.0 * 4.0)
+
+
+def test_the_share_of_a_motion_is_that_of_the_whole_body(tmp_path: Path) -> None:
+    """u_y = 1 + x^2 at x = -2 .. 2 of the whole bar: 5, 2, 1, 2, 5, whose mean is 3."""
+    sector = bricks(2, 1, 1)
+    u = np.outer(1.0 + sector.points[:, 0] ** 2, [0.0, 1e-3, 0.0])
+    body = audit_of(tmp_path, sector, HALF, displacement=u)
+    assert body.cases[0].share == pytest.approx(3.0 * np.sqrt(5.0 / 59.0))
+
+
+def test_large_reactions_balance_as_they_are_printed(tmp_path: Path) -> None:
+    """Two reactions of 100 against each other, as under temperature, leave 1e-5 over beside a load
+    of 1e-3."""
+    load, held = np.zeros((12, 3)), np.zeros((12, 3))
+    load[11, 1], held[11, 1] = 1e-3, -1e-3 + 1e-5
+    held[8, 2], held[9, 2] = -100.0, 100.0
+    case = case_of(tmp_path, bricks(2, 1, 1), HALF, {"applied_force": load, "reaction": held})
+    assert [f for f in check(case).findings if f.about == "balance"] == []
+
+
+def test_a_curved_shell_is_no_plane_model(tmp_path: Path) -> None:
+    ticks = np.arange(3.0)
+    points = np.array([[x, y, 0.2 * (y - 1.0) ** 2] for x in ticks for y in ticks])
+    cells = [(9, [3 * i + j, 3 * i + 3 + j, 3 * i + 4 + j, 3 * i + 1 + j])
+             for i in range(2) for j in range(2)]  # fmt: skip
+    for height, plane in ((1.0, False), (0.0, True)):
+        sector = Sector(points * [1.0, 1.0, height], cells)
+        u = {"displacement": np.outer(points[:, 0], [1e-3, 0.0, 0.0])}
+        read = read_sector(case_of(tmp_path, sector, HALF, u))
+        assert (plane_normal(read) is not None) is plane
+
+
+def test_a_copy_without_nodes_inside_overlaps() -> None:
+    """A cube about the axis lies on its copy node by node: only its middle is inside."""
+    cube = bricks(1, 1, 1)
+    mesh = replace(cube, points=2.0 * cube.points - 1.0).mesh()
+    group = make_group([], CyclicAxis(2, np.array([0.0, 0.0, 1.0]), np.zeros(3)))
+    (found,) = overlaps(mesh, group).found
+    assert (found.copy, found.nodes, found.node) == (1, 0, -1)
+    assert found.depth == pytest.approx(1.0)
+
+
+def test_a_skin_without_thickness_weighs_nothing(tmp_path: Path) -> None:
+    """Beside solids; a plate alone is taken as one thick."""
+    block = bricks(1, 1, 1)
+    skin = (9, [4, 6, 7, 5])
+    for cells, mass in (([*block.cells, skin], 2.0), ([*block.cells], 2.0)):
+        body = audit_of(tmp_path, replace(block, cells=cells), HALF)
+        assert body.carried_mass.mass == pytest.approx(mass)
+    plate = Sector(np.array([[0.0, 0, 0], [1, 0, 0], [1, 1, 0], [0, 1, 0]]), [(9, [0, 1, 2, 3])])
+    assert audit_of(tmp_path, plate, HALF).carried_mass.mass == pytest.approx(2.0)
+
+
+def test_what_a_result_holds() -> None:
+    """An invariant of one case as it is; not of a case with a mean, or at a moment of the cycle."""
+    q = quantity("invariant", 1)
+    f = Field("von_mises", q, "load", "agree", Global(), "points", ("v",), None, "", "")
+    case = type("Case", (), {"complex_factors": False})()
+    body: Any = type("Body", (), {"fields": [f], "cases": (case, case)})()
+    plain = Result("r", ((0, 1.0),))
+    assert fields_in(body, plain) == [f]
+    assert fields_in(body, replace(plain, mean=1)) == []
+    assert fields_in(body, replace(plain, terms=((0, 2.0),))) == []
+    assert fields_in(body, plain, moment=30.0) == []

@@ -300,6 +300,8 @@ def _meeting(
         wanted = facet_keys(token, partner[corners[here]])
         there = order[np.minimum(np.searchsorted(keys[order], wanted), len(keys) - 1)]
         facing = np.einsum("fi,fi->f", out[here], out[there] @ group.placements[g].Q.T) < FACING
+        if f.dimension < 2:  # shells and beams may fold at a seam by any angle
+            facing[:] = True
         hit = (keys[there] == wanted) & facing
         here, there = here[hit], there[hit]
         if len(here):
