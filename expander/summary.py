@@ -47,6 +47,7 @@ def summary(
         "program": f"seamfold {program}",
         "source": str(body.case.source or body.cases[0].model.source),
         "unit": body.case.model.unit,
+        "time_factor": body.case.model.time_factor,
         "copies": [{"copy": g, "made": group.words(g)} for g in body.copies],
         "whole_body_copies": len(group),
         "planes": [

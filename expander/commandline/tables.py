@@ -109,6 +109,10 @@ def print_summary(found: dict[str, Any]) -> None:
         what = f"({result['name']} = {terms}{left})" if not alone else f"({result['name']})"
         line = escape(f"{mark} {result['file']}  " + (what if several else ""))
         console.print(line, soft_wrap=True)  # a path must stay in one piece
+    waves = {r["name"]: r["wave"] for r in found["results"] if r["wave"]}
+    for name, words in waves.items():
+        line = f"{name}: {words}; field = Re(amplitude * exp({found['time_factor']}))"
+        console.print(escape(line))
     if found["index"]:
         console.print(escape(f"index {found['index']}"), soft_wrap=True)
     for name, count in found["not_finite"].items():
