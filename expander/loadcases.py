@@ -101,6 +101,12 @@ def mode_factor(table: CaseTable, chi: Factors) -> float:
     """
     if table.mode_mass is None:
         return 1.0
+    if table.mode_mass.endswith("pair") and not np.iscomplexobj(chi):
+        raise InputError(
+            f"Case {table.name!r}: mode_mass = {table.mode_mass!r}, but no pair of shapes belongs "
+            "to real factors (h = 0 and N/2): each mode stands alone.",
+            'Expected mode_mass = "sector" there.',
+        )
     return float(np.sqrt((2.0 if table.mode_mass.endswith("pair") else 1.0) / len(chi)))
 
 

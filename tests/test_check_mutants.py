@@ -2,12 +2,14 @@
 
 from __future__ import annotations
 
+import json
 from dataclasses import replace
 from pathlib import Path
 from typing import Any
 
 import numpy as np
 import pytest
+from click.testing import CliRunner
 from meshes import Sector, box, case_of, ring
 
 from expander.audit.equilibrium import in_plane_share
@@ -16,6 +18,7 @@ from expander.audit.statics import plane_normal
 from expander.audit.totals import Resultant
 from expander.auditing import Audit, audit
 from expander.behaviours import Behaviour, factors
+from expander.casefile import validate_case
 from expander.checking.continuity import Continuity, continuity
 from expander.checking.declared import UNTOLD, _Sides, face_ratio, primary
 from expander.checking.facets import normals, outer_facets, subset
@@ -30,16 +33,18 @@ from expander.checking.seamlist import Seam, seams_of
 from expander.checking.smoothness import Near, judged
 from expander.checking.verdicts import CLOSED, DOUBTFUL, OPEN, Verdict
 from expander.checkup import check
+from expander.commandline.check import check as check_command
 from expander.errors import InputError
 from expander.fields import Field
 from expander.frames import Global
 from expander.groups import CutPlane, CyclicAxis, make_group
 from expander.images import fields_in
-from expander.loadcases import LoadCase, Result, _wave, direction_words
+from expander.loadcases import LoadCase, Result, _wave, direction_words, results_of
 from expander.model import Mesh
 from expander.phases import _telling
 from expander.placements import Placement
 from expander.quantities import quantity
+from expander.referencing import _with_values
 from expander.sector import read_sector
 
 HALF: dict[str, Any] = {"mirror": [{"name": "mid", "normal": "x"}]}
@@ -637,3 +642,67 @@ def test_what_a_result_holds() -> None:
     assert fields_in(body, replace(plain, mean=1)) == []
     assert fields_in(body, replace(plain, terms=((0, 2.0),))) == []
     assert fields_in(body, plain, moment=30.0) == []
+
+
+@pytest.mark.parametrize("words", [("real", "imaginary"), ("amplitude", "phase_degrees")])
+def test_complex_values_are_stored_as_they_came(tmp_path: Path, words: tuple[str, str]) -> None:
+    sector = ring(5)
+    n = len(sector.points)
+    names = dict(zip(words, ("first", "second"), strict=True))
+    tables = {"cyclic": {"sectors": 5, "nodal_diameters": 1},
+              "fields": {"displacement": {"kind": "polar vector", **names}}}  # fmt: skip
+    read = read_sector(case_of(tmp_path, sector, tables,
+                               {"first": np.ones((n, 3)), "second": np.ones((n, 3))}))  # fmt: skip
+    rng = np.random.default_rng(8)
+    values = rng.normal(size=(n, 3)) + 1j * rng.normal(size=(n, 3))
+    (f,) = read.fields
+    stored = _with_values(read, read.model, f, values)
+    np.testing.assert_allclose(f.values(stored), values, atol=1e-12)
+
+
+def test_waves_that_run_both_ways_are_not_added(tmp_path: Path) -> None:
+    """One is taken as it was solved, the other one turned round."""
+    group = make_group([], CyclicAxis(5, np.array([0.0, 0.0, 1.0]), np.zeros(3)))
+    model: Any = None
+    behaviour = Behaviour({}, 1, "+")
+    cases = tuple(LoadCase(n, model, behaviour, factors(group, behaviour), 1.0) for n in ("a", "b"))
+    tables = {
+        "cyclic": {"sectors": 5, "nodal_diameters": 1, "phase": "+"},
+        "case": [{"name": "a", "wave": "forward", "undamped": True}, {"name": "b"}],
+        "sum": [{"name": "s", "terms": {"a": 1.0, "b": 1.0}}],
+    }
+    with pytest.raises(InputError, match="adds waves taken differently"):
+        results_of(validate_case(tables, tmp_path), cases)
+
+
+def test_nodal_masses_are_the_mass_where_no_density_is_known(tmp_path: Path) -> None:
+    mass = np.arange(12.0)
+    tables = HALF | {"fields": {"nodal_mass": {"kind": "scalar", "seam": "sum"}}}
+    body = audit_of(tmp_path, bricks(2, 1, 1), tables, nodal_mass=mass)
+    assert body.carried_mass.mass == pytest.approx(2.0 * mass.sum())
+    assert "nodal_mass" in body.mass_from
+
+
+def test_vectors_are_stored_in_their_frame(tmp_path: Path) -> None:
+    sector = ring(5)
+    n = len(sector.points)
+    tables = {
+        "cyclic": {"sectors": 5},
+        "frames": {"hub": {"type": "cylindrical", "axis": "z"}},
+        "fields": {"displacement": {"kind": "polar vector", "frame": "hub"}},
+    }
+    read = read_sector(case_of(tmp_path, sector, tables, {"displacement": np.zeros((n, 3))}))
+    radius = np.hypot(*sector.points.T[:2])
+    outwards = sector.points * [1.0, 1.0, 0.0]
+    stored = _with_values(read, read.model, read.fields[0], outwards)
+    found = np.asarray(stored.point_data["displacement"])
+    np.testing.assert_allclose(found, np.outer(radius, [1.0, 0.0, 0.0]), atol=1e-12)
+
+
+@pytest.mark.parametrize("words", [[], ["--seams-only"]])
+def test_the_seams_alone_on_the_command_line(tmp_path: Path, words: list[str]) -> None:
+    u = np.outer(np.arange(12.0), [0.0, 1e-6, 0.0])
+    case_of(tmp_path, bricks(2, 1, 1), HALF, {"displacement": u})
+    path = str(tmp_path / "sector.vtu")
+    ran = CliRunner().invoke(check_command, [path, "--mirror", "x", "--json", *words])
+    assert (json.loads(ran.stdout)["audit"] is None) is bool(words)
