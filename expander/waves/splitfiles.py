@@ -96,7 +96,7 @@ _AS_IT_IS = """\
 _COMPLEX = """\
 # With 0 < h < N/2 sector k takes exp(+i h k alpha), right-handed about the axis. {opposite}
 # Such a case stands for +h and -h: its factor in the sum is twice that of its part, and the whole
-# body's result is the real part of the sum (X_real).
+# body's result is the real part of the sum: part = "real". Leave that out for a harmonic load.
 """
 _OPPOSITE = {
     True: "If your\n# solver's sector takes exp(-i h k alpha), change the sign of the _imag columns"
@@ -132,6 +132,8 @@ def tables(case: CaseFile, split: Split | PatternSplit) -> str:
     for name, terms in sums.items():
         listed = ", ".join(f"{n} = {_factor(f)}" for n, f in terms.items())
         lines.append(f"\n[[sum]]\nname = {_quoted(name)}\nterms = {{ {listed} }}\n")
+        if any(np.iscomplexobj(p.character.chi) for p in split.parts):
+            lines.append('part = "real"\n')
     return "".join(lines)
 
 
