@@ -1351,7 +1351,7 @@ def test_a_wave_needs_complex_fields(bench: Bench, h: int) -> None:
     grid = wedge(30.0)
     grid.point_data["displacement"] = np.ones((grid.n_points, 3))
     bench.model(grid, "sector.vtu")
-    says = ["'displacement'", f"{h} nodal diameters", "real = ", "amplitude"]
+    says = ["'displacement'", f"{h} nodal diameter", "real = ", "amplitude"]
     bench.refuses("sector.vtu", "--sectors", 12, "--nodal-diameters", h, says=says)
 
 

@@ -1060,7 +1060,8 @@ def test_a_clamped_plane_closes_under_both_words(tmp_path):
 def test_no_such_real_wave(tmp_path, sectors, h):
     """(12) N odd has no N/2, h > N/2 is another direction's name, h between is complex."""
     points, cells = wedge(360 / sectors)
-    model = Model(tmp_path, points, cells).values()
+    model = Model(tmp_path, points, cells).field("T", "scalar")
+    model.values(points={"T": np.ones(len(points))})
     model.table(cyclic={"sectors": sectors, "nodal_diameters": h})
     with pytest.raises(InputError):
         model.expand()
