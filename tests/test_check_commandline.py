@@ -501,7 +501,9 @@ def test_sections(seamfold: Seamfold) -> None:
     ran = seamfold("check", "model.vtu", *X, "--section", "z at 0,0,0.3 called [red]waist[/red]",
                    "--section", "0,0,-2 at 0,0,0.5")  # fmt: skip
     assert (ran.status, ran.err) == (0, "")
-    assert re.search(r"\[red\]waist\[/red\], result, from stress: force \(0, 0, 8\), moment .*area 2\b", ran.out)
+    assert re.search(
+        r"\[red\]waist\[/red\], result, from stress: force \(0, 0, 8\), moment .*area 2\b", ran.out
+    )
     assert re.search(r"section 2, result, from stress: force \(0, 0, -8\)", ran.out)
     told = json.loads(seamfold("check", "model.vtu", *X, "--section", "z at 0,0,0.3", "--json").out)
     (section,) = told["audit"]["sections"]

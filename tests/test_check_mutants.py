@@ -23,7 +23,7 @@ from expander.checking.continuity import Continuity, continuity
 from expander.checking.declared import UNTOLD, _Sides, face_ratio, primary
 from expander.checking.facets import normals, outer_facets, subset
 from expander.checking.feet import opposite
-from expander.checking.findings import DOUBTS, FAILS, NOTE, _of_seam, findings
+from expander.checking.findings import DOUBTS, FAILS, NOTE, _of_declared, _of_seam, findings
 from expander.checking.jumps import Jump
 from expander.checking.leaveout import standing_out, without_cells, without_nodes
 from expander.checking.neighbours import surroundings
@@ -706,3 +706,36 @@ def test_the_seams_alone_on_the_command_line(tmp_path: Path, words: list[str]) -
     path = str(tmp_path / "sector.vtu")
     ran = CliRunner().invoke(check_command, [path, "--mirror", "x", "--json", *words])
     assert (json.loads(ran.stdout)["audit"] is None) is bool(words)
+
+
+def test_a_wrong_word_is_none_of_what_is_kept_apart(tmp_path: Path) -> None:
+    sector = bricks(2, 4, 4)
+    u = np.outer(1.0 + sector.points[:, 1], [0.0, 1e-3, 0.0])
+    tables = {"mirror": [{"name": "mid", "normal": "x", "load": "antisymmetric"}]}
+    (told,) = seen(tmp_path, sector, tables, points={"displacement": u}).found
+    for apart in (False, True):
+        assert [f.weight for f in _of_declared(told, apart)] == [FAILS]
+
+
+def test_totals_are_about_the_point_of_what_is_expected(tmp_path: Path) -> None:
+    about = [1.0, 2.0, 3.0]
+    _, body = audited(tmp_path, expect={"force": [0.0, 4.0, 0.0], "about": about})
+    for total in body.cases[0].totals:
+        assert total.sector.about.tolist() == total.body.about.tolist() == about
+
+
+def test_sections_of_a_sum_of_cases(tmp_path: Path) -> None:
+    """A stress of 5 on an area of 1, once and twice, the second from a case of factor 2."""
+    stress = np.zeros((2, 6))
+    stress[:, 0] = 5.0
+    tables = HALF | {
+        "case": [{"name": "a"}, {"name": "b", "factor": 2.0}],
+        "sum": [{"name": "s", "terms": {"a": 1.0, "b": 2.0}}],
+        "section": [{"name": "cut", "normal": "x", "point": [0.5, 0.0, 0.0]}],
+    }
+    u = np.zeros((12, 3))
+    case = case_of(tmp_path, bricks(2, 1, 1), tables, {"displacement": u}, {"stress": stress})
+    read = read_sector(case)
+    ((name, result, section),) = audit(read, {c.name: c.chi for c in read.cases}).sections
+    assert (name, result) == ("cut", "s")
+    np.testing.assert_allclose(section.force, [25.0, 0.0, 0.0], atol=1e-12)
