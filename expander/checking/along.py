@@ -11,7 +11,7 @@ from dataclasses import dataclass
 from itertools import pairwise
 
 import numpy as np
-from scipy.sparse import coo_array
+from scipy.sparse import csr_array
 from scipy.sparse.csgraph import connected_components, dijkstra
 
 from expander.cells import CELL_TYPES
@@ -233,8 +233,8 @@ def _cut(ends: Ints, owner: Ints, marked: np.ndarray) -> tuple[Ints, Ints]:
     return ends, owner
 
 
-def _graph(ends: Ints, count: int) -> coo_array:
-    return coo_array((np.ones(len(ends)), (ends[:, 0], ends[:, 1])), shape=(count, count)).tocsr()
+def _graph(ends: Ints, count: int) -> csr_array:
+    return csr_array((np.ones(len(ends)), (ends[:, 0], ends[:, 1])), shape=(count, count))
 
 
 def _components(ends: Ints, count: int) -> Ints:

@@ -159,7 +159,8 @@ def _improve(
     begin, end = 0, min(_FIRST_CANDIDATES, len(group.rows))
     while len(todo) and begin < end:
         ranks = np.arange(begin + 1, end + 1)
-        distance, near = tree.query(points[todo], k=ranks, distance_upper_bound=bound)
+        found = tree.query(points[todo], k=ranks, distance_upper_bound=bound)
+        distance, near = np.asarray(found[0]), np.asarray(found[1])
         for d, c in zip(distance.T, near.T, strict=True):
             wanted = np.isfinite(d) & (d - group.radius < best.gap[todo])
             wanted &= best.gap[todo] > enough

@@ -212,7 +212,8 @@ def locate(load: WholeLoad, mesh: Mesh, group: Group, given: float | None) -> tu
             break
         back = placement.inverse().apply(load.points[open_])
         inside = ((back >= low) & (back <= high)).all(axis=1)
-        distance, found = tree.query(back[inside], distance_upper_bound=tolerance.reach)
+        nearby = tree.query(back[inside], distance_upper_bound=tolerance.reach)
+        distance, found = np.asarray(nearby[0]), np.asarray(nearby[1])
         rows = open_[inside]
         better = distance < nearest[rows]
         rows = rows[better]
@@ -222,7 +223,8 @@ def locate(load: WholeLoad, mesh: Mesh, group: Group, given: float | None) -> tu
     if not met.all():
         raise _unmatched(load, mesh, group, np.flatnonzero(~met), tree)
     used = np.unique(node)
-    distance, two = tree.query(nodes[used], k=min(2, len(nodes)))
+    closest = tree.query(nodes[used], k=min(2, len(nodes)))
+    distance, two = np.asarray(closest[0]), np.asarray(closest[1])
     if len(nodes) > 1 and (distance[:, 1] <= tolerance.at(used)).any():
         bad = int(np.argmax(distance[:, 1] <= tolerance.at(used)))
         raise InputError(
