@@ -274,3 +274,22 @@ def test_a_held_plane_that_moves(tmp_path: Path) -> None:
     (told,) = found_in(tmp_path, sector, held, {"displacement": pulled(sector)}).continuity.found
     assert told.result == "doubtful"
     assert "moves" in told.words
+
+
+def test_both_faces_of_an_unlike_seam_look_at_the_right_copy(tmp_path: Path) -> None:
+    """Each row's partners, brought by the row's own placement, lie where its node is."""
+    a = np.pi / 6
+    turned = np.array([[np.cos(a), -np.sin(a), 0], [np.sin(a), np.cos(a), 0], [0, 0, 1]])
+    first = ring(6, (2, 2, 2), part=0.5)
+    sector = first.beside(ring(6, (3, 2, 3), part=0.5).moved(turned))
+    temperature = {"temperature": np.ones(len(sector.points))}
+    found = found_in(tmp_path, sector, {"cyclic": {"sectors": 6}}, temperature)
+    (seam,) = [s for s in found.continuity.seams if s.kind == "sector faces"]
+    group = found.continuity.sector.group
+    assert set(seam.via.tolist()) == {1, 5}, "nodes of both faces are compared"
+    brought = np.einsum("km,kmi->ki", seam.weights, sector.points[seam.partners])
+    images = np.stack([group.placements[s].apply(x[None])[0]
+                       for s, x in zip(seam.via.tolist(), brought, strict=True)])  # fmt: skip
+    off = np.linalg.norm(images - sector.points[seam.nodes], axis=1)
+    np.testing.assert_allclose(off, seam.distance, atol=1e-9)
+    assert off.max() < 1e-9
