@@ -130,7 +130,7 @@ _FREE: WeakKeyDictionary[Mesh, list[FreeFaces]] = WeakKeyDictionary()
 
 
 def _free_faces(mesh: Mesh) -> list[FreeFaces]:
-    token = _tokens(mesh)
+    token = tokens(mesh.point_count)
     lots, keys = [], []
     for vtk_id, numbers, nodes in blocks(mesh):
         kind = CELL_TYPES.get(vtk_id)
@@ -147,15 +147,19 @@ def _free_faces(mesh: Mesh) -> list[FreeFaces]:
             lots.append((nodes, numbers, tuple(face), on_face, corners))
     if not keys:
         return []
-    ranked = np.sort(np.concatenate(keys))
-    new = np.concatenate([[True], ranked[1:] != ranked[:-1], [True]])
-    single = ranked[new[1:] & new[:-1]]
-    del ranked, new
+    single = singles(np.concatenate(keys))
     found = []
     for (nodes, numbers, face, on_face, corners), key in zip(lots, keys, strict=True):
         free = np.flatnonzero(among(key, single))
         found.append(FreeFaces(nodes[free], numbers[free], face, on_face, corners))
     return found
+
+
+def singles(keys: NDArray[np.uint64]) -> NDArray[np.uint64]:
+    """The keys that occur once, sorted."""
+    ranked = np.sort(keys)
+    new = np.concatenate([[True], ranked[1:] != ranked[:-1], [True]])
+    return np.asarray(ranked[new[1:] & new[:-1]])
 
 
 def among(keys: NDArray[np.uint64], some: NDArray[np.uint64]) -> NDArray[np.bool_]:
@@ -210,9 +214,12 @@ def boundary_faces(mesh: Mesh, free: list[FreeFaces] | None = None) -> list[Face
     ]
 
 
-def _tokens(mesh: Mesh) -> NDArray[np.uint64]:
-    """A random number for each node, the same on every run, to know sets of nodes by their sum."""
-    return np.random.default_rng(20).integers(0, 2**64, size=mesh.point_count, dtype=np.uint64)
+def tokens(count: int) -> NDArray[np.uint64]:
+    """A random number for each node, the same on every run, to know sets of nodes by their sum.
+
+    Two different sets have the same sum with a probability of about (number of sets)^2 / 2^64.
+    """
+    return np.random.default_rng(20).integers(0, 2**64, size=count, dtype=np.uint64)
 
 
 def faces_met(
@@ -227,7 +234,7 @@ def faces_met(
     sector; and at how many of these the material of both lies on the same side, as it does where
     copies overlap.
     """
-    token = _tokens(mesh)
+    token = tokens(mesh.point_count)
     partner = np.full(mesh.point_count, -1, dtype=np.int64)
     partner[j] = i
     whole = met = same = 0

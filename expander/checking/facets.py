@@ -37,7 +37,7 @@ from expander.checking.reference import (
 )
 from expander.model import Mesh
 from expander.placements import Floats
-from expander.topology import Ints, blocks, free_faces
+from expander.topology import Ints, among, blocks, free_faces, singles, tokens
 
 
 @dataclass(frozen=True, eq=False)
@@ -83,14 +83,6 @@ class Shared:
     second: Ints
     corners: Ints
     normals: Floats
-
-
-def tokens(count: int) -> NDArray[np.uint64]:
-    """A random number for each node, the same on every run, to know sets of nodes by their sum.
-
-    Two different sets have the same sum with a probability of about (number of sets)^2 / 2^64.
-    """
-    return np.random.default_rng(20).integers(0, 2**64, size=count, dtype=np.uint64)
 
 
 def facet_keys(token: NDArray[np.uint64], corners: Ints) -> NDArray[np.uint64]:
@@ -220,36 +212,16 @@ def outer_facets(mesh: Mesh, cells: Ints | None = None) -> list[Facets]:
         if not mine:
             continue
         keys = [lot.keys(token) for lot in mine]
-        single = _singles(np.concatenate([key.ravel() for key in keys]))
+        single = singles(np.concatenate([key.ravel() for key in keys]))
         for lot, key in zip(mine, keys, strict=True):
             for rule, values in zip(lot.rules, key, strict=True):
-                rows = np.flatnonzero(_among(values, single))
+                rows = np.flatnonzero(among(values, single))
                 nodes = lot.nodes[rows]
                 free = ~covered[nodes[:, rule.cycle]].all(axis=1)
                 parts.append((rule, nodes[free], lot.cells[rows[free]]))
         for lot in mine:
             covered[lot.nodes] = True
     return _joined(parts)
-
-
-def _singles(keys: NDArray[np.uint64]) -> NDArray[np.uint64]:
-    """The keys that occur once, sorted."""
-    ranked = np.sort(keys)
-    new = np.concatenate([[True], ranked[1:] != ranked[:-1], [True]])
-    return np.asarray(ranked[new[1:] & new[:-1]])
-
-
-def _among(keys: NDArray[np.uint64], some: NDArray[np.uint64]) -> NDArray[np.bool_]:
-    """Which of many `keys` are among `some` few, sorted ones."""
-    bits = min(26, max(8, 4 + len(some).bit_length()))
-    shift = np.uint64(64 - bits)
-    table = np.zeros(2**bits, dtype=bool)  # most keys are told from their first bits
-    table[some >> shift] = True
-    hit: NDArray[np.bool_] = table[keys >> shift]
-    rows = np.flatnonzero(hit)
-    place = np.minimum(np.searchsorted(some, keys[rows]), max(0, len(some) - 1))
-    hit[rows] = some[place] == keys[rows]
-    return hit
 
 
 def pairs(mesh: Mesh, facets: list[Facets]) -> list[Shared]:

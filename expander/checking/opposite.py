@@ -18,14 +18,13 @@ from expander.checking.facets import (
     facet_keys,
     normals,
     subset,
-    tokens,
     unit_rows,
 )
 from expander.checking.feet import FACING, Opposite, interpolate, opposite
 from expander.checking.roughness import roughness, surface_slopes
 from expander.model import Mesh
 from expander.placements import Floats, Placement
-from expander.topology import Ints
+from expander.topology import Ints, tokens
 
 __all__ = ["Against", "Opposite", "Side", "classify", "error_bound", "interpolate", "opposite"]
 

@@ -23,7 +23,6 @@ from expander.checking.facets import (
     outer_facets,
     shares,
     subset,
-    tokens,
 )
 from expander.checking.feet import FACING
 from expander.checking.opposite import Against, Opposite, classify, opposite
@@ -32,7 +31,7 @@ from expander.model import Mesh
 from expander.placements import Floats, Placement
 from expander.seams import OF_EDGE, Tolerance
 from expander.sector import Sector
-from expander.topology import Ints, cell_sizes, cells_touching, local_edges
+from expander.topology import Ints, cell_sizes, cells_touching, local_edges, tokens
 
 _SAMPLE = 2_000  # faces are enough to tell their usual size
 REACH = 1.0  # edges: faces that lie farther apart are not opposite each other
